@@ -1,0 +1,100 @@
+"""What the data of a run mean, in sentences for the person at the bench."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from benchkit.evaluation.hottest import Hottest
+from benchkit.evaluation.soak import Soak
+from benchkit.evaluation.sources import accuracy_of
+from benchkit.evaluation.sweep import Sweep
+from benchkit.fits.drop import diagnose
+from benchkit.metrology import Accuracy
+from benchkit.prediction.forward import forward
+from benchkit.records.record import Record
+from benchkit.stage import Stage
+
+HEAT_SHARE = 0.02
+"""Every sweep warms its part a little, and good meters see it: worth a sentence from here on."""
+
+
+def findings_of(
+    record: Record, stage: Stage, sweep: Sweep | None, soak: Soak | None, extreme: Hottest | None
+) -> list[str]:
+    """Plain sentences; empty when there is nothing to remark."""
+    kinds = ("found-on", "sweep-cut", "soak-skipped")
+    told = [text for kind in kinds for text in record.said(kind)]
+    if sweep is not None:
+        told += _of_sweep(record, stage, sweep)
+    if soak is not None and not soak.heating.usable:
+        told.append(f"the soak does not say where the rise ends: {soak.heating.why}")
+    if soak is not None and extreme is not None and record.stage.soak is not None:
+        reach = record.stage.soak.loss_reach
+        if extreme.reach > reach:
+            told.append(
+                f"the hottest case is extrapolated to {extreme.reach:.2g} times the measured loss, "
+                f"more than soak.loss_reach = {reach:g} allows; soak at a higher current"
+            )
+        if np.isnan(extreme.junction_C):
+            told.append("at the highest current and ambient this board would run away")
+    return told
+
+
+def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[str]:
+    told = []
+    for name, zero in (("drop", sweep.drop_zero), ("exposed_current", sweep.current_zero)):
+        if not zero.used:
+            told.append(
+                f"the zero of {name} reads {zero.value:.3g}, more than an offset of the meter can "
+                "be, or was not taken twice: it was not taken off, and the declared offset stays "
+                "in the uncertainty"
+            )
+    shunt = record.bench.points["exposed_current"].shunt_ohm or 1.0
+    current = accuracy_of(record.bench, "exposed_current", sweep.current_range_V)
+    tolerance = record.bench.points["exposed_current"].shunt_tolerance_percent
+    found = diagnose(
+        stage.topology.conducts,
+        sweep.current_A,
+        sweep.drop_V,
+        junction_of(stage, sweep),
+        u_noise_V=max(sweep.drop_zero.noise, 1e-7),
+        rising=sweep.rising,
+        alpha_per_K=temperature_coefficient(stage),
+        drop_accuracy=accuracy_of(record.bench, "drop", sweep.drop_range_V),
+        current_accuracy=Accuracy(
+            current.range / shunt, current.reading_percent + tolerance, current.range_percent
+        ),
+        compliance_V=record.stage.stage.supply_nominal_V,
+    )
+    warmed = _spread_share(sweep) > HEAT_SHARE
+    return told + [f.text for f in found if f.kind != "heat" or warmed]
+
+
+def _spread_share(sweep: Sweep) -> float:
+    """The largest difference between up and down at one current, as a share of the drop."""
+    return max(
+        float(np.ptp(sweep.drop_V[v]) / abs(sweep.drop_V[v].mean()))
+        for v in (sweep.visits(t) for t in sweep.targets)
+    )
+
+
+def junction_of(stage: Stage, sweep: Sweep) -> NDArray[np.float64]:
+    """Junction temperature at each visit: left at the case's, its rise with the current would bend
+    a channel's straight line into one with an intercept."""
+    return sweep.case_C + stage.main_part.junction_to_case_K_per_W * sweep.loss_W
+
+
+def temperature_coefficient(stage: Stage) -> float:
+    """Relative rise of the drop per kelvin near 25 C, from the datasheet's law."""
+    if stage.topology.conducts != "channel":
+        return 0.0
+    working = stage.file.stage
+    drops = forward(
+        stage,
+        stage.typical(),
+        working.current_nominal_A,
+        working.supply_nominal_V,
+        np.array([25.0, 45.0]),
+    ).drop_V[0]
+    return float((drops[1] / drops[0] - 1) / 20.0)

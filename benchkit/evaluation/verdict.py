@@ -1,0 +1,160 @@
+"""One measurand's row, and the verdict of the whole run in words."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from benchkit.metrology import Budget, Limit, Rule, judge, normalised_error, overall
+from benchkit.records.result import BudgetLine, Measurand, Verdict
+
+
+@dataclass(frozen=True)
+class Promise:
+    """What the datasheets promise: the typical value and the band that holds 95 % of parts."""
+
+    nominal: float
+    low: float
+    high: float
+
+
+def judged(
+    name: str,
+    unit: str,
+    condition: str,
+    measured: float,
+    budget: Budget,
+    promise: Promise | None,
+    low: float | None,
+    high: float | None,
+    rule: Rule,
+    remark: str = "",
+) -> Measurand:
+    """A measured figure with its uncertainty, compared with promise and limit."""
+    expanded = budget.expanded()
+    verdict: Verdict | None = None
+    conformity: float | None = None
+    if low is not None or high is not None:
+        decision = judge(measured, expanded, Limit(low, high), rule)
+        verdict, conformity = decision.verdict, _finite(decision.conformity_probability)
+    en = None
+    if promise is not None and math.isfinite(measured) and math.isfinite(expanded.U):
+        half = 0.5 * (promise.high - promise.low)
+        en = normalised_error(measured, expanded.U, promise.nominal, half)
+    return Measurand(
+        name,
+        unit,
+        condition,
+        vars(promise) if promise else None,
+        _finite(measured),
+        _finite(expanded.U),
+        _finite(expanded.k),
+        {"low": low, "high": high},
+        verdict,
+        en,
+        conformity,
+        [
+            BudgetLine(c.name, c.u, c.distribution, _finite(c.dof))
+            for c in sorted(budget.components, key=lambda c: -abs(c.u))
+            if math.isfinite(c.u)
+        ],
+        remark,
+    )
+
+
+def missing(
+    name: str, unit: str, condition: str, low: float | None, high: float | None, why: str
+) -> Measurand:
+    """A limit that nothing was measured for: undecided, never passed."""
+    return Measurand(
+        name,
+        unit,
+        condition,
+        None,
+        None,
+        None,
+        None,
+        {"low": low, "high": high},
+        "undecided",
+        None,
+        remark=f"not measured: {why}",
+    )
+
+
+def summary(
+    measurands: Sequence[Measurand], findings: Sequence[str], stopped: Sequence[str]
+) -> tuple[Verdict, list[str]]:
+    """The run's verdict and the sentences that give its reason, the gravest first."""
+    verdicts: list[Verdict] = [m.verdict for m in measurands if m.verdict is not None]
+    if stopped and "fail" not in verdicts:
+        verdicts.append("undecided")
+    verdict = overall(verdicts)
+    why = [f"the run was stopped: {text}" for text in stopped]
+    for m in sorted(measurands, key=lambda m: {"fail": 0, "undecided": 1}.get(m.verdict or "", 2)):
+        if m.verdict in ("fail", "undecided"):
+            why.append(_reason(m))
+    if not verdicts:
+        why.append("the stage file sets no limits, so there is nothing to pass")
+    if verdict == "pass":
+        tightest = min((m for m in measurands if m.verdict == "pass"), key=_headroom)
+        why.append(
+            f"every limit is met, each by more than its uncertainty; the tightest is "
+            f"{_spell(tightest)}"
+        )
+    elif findings:
+        why += findings
+    return verdict, why
+
+
+def _reason(m: Measurand) -> str:
+    if m.measured is None:
+        return f"{m.name} at {m.condition} is undecided: {m.remark or 'no figure could be given'}"
+    side = "misses" if m.verdict == "fail" else "is too close to"
+    return f"{_spell(m)}: it {side} its limit"
+
+
+def _spell(m: Measurand) -> str:
+    low, high = m.limit["low"], m.limit["high"]
+    bounds = " and ".join(
+        part
+        for part in (
+            f"at least {low:.4g}" if low is not None else "",
+            f"at most {high:.4g}" if high is not None else "",
+        )
+        if part
+    )
+    name = m.name.replace("_", " ")
+    value, spread = rounded(m.measured, m.U)
+    return f"{name} at {m.condition}, {value} ± {spread} {m.unit} (limit {bounds} {m.unit})"
+
+
+def rounded(value: float | None, U: float | None) -> tuple[str, str]:
+    """A figure and its U, both to the decimal place of two significant digits of U."""
+    if value is None or not math.isfinite(value):
+        return "none", "none"
+    if U is None or not math.isfinite(U) or U <= 0:
+        return f"{value:.5g}", "none"
+    places = 1 - math.floor(math.log10(U))
+    if places < 0:
+        return f"{round(value, places):.0f}", f"{math.ceil(U):d}"
+    return f"{value:.{places}f}", f"{math.ceil(U * 10**places - 1e-9) / 10**places:.{places}f}"
+
+
+def _headroom(m: Measurand) -> float:
+    """Distance to the nearest limit in units of U."""
+    if m.measured is None or not m.U:
+        return math.inf
+    gaps = [
+        gap
+        for gap in (
+            None if m.limit["high"] is None else m.limit["high"] - m.measured,
+            None if m.limit["low"] is None else m.measured - m.limit["low"],
+        )
+        if gap is not None
+    ]
+    return min(gaps) / m.U
+
+
+def _finite(value: float) -> float | None:
+    return value if math.isfinite(value) else None

@@ -1,0 +1,153 @@
+"""The stage file: the protection circuit under test, its parts as their datasheets print them,
+what is measured of it, and the limits it must meet."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal
+
+from pydantic import Field, ValidationInfo, field_validator, model_validator
+
+from benchkit.files.loading import FileModel
+from benchkit.files.parts import Part
+
+Positive = Annotated[float, Field(gt=0)]
+Celsius = Annotated[float, Field(ge=-80, le=250)]
+
+
+class Working(FileModel):
+    """[stage]: what it is and the conditions it works in."""
+
+    name: Annotated[str, Field(min_length=1, max_length=120)]
+    topology: Literal["series-diode", "pmos-pass"]
+    supply_min_V: Positive
+    supply_nominal_V: Positive
+    supply_max_V: Annotated[float, Field(gt=0, le=400)]
+    current_nominal_A: Positive
+    current_max_A: Annotated[float, Field(gt=0, le=500)]
+    ambient_nominal_C: Celsius = 25.0
+    ambient_max_C: Celsius
+
+    @model_validator(mode="after")
+    def _ordered(self) -> Working:
+        if not self.supply_min_V <= self.supply_nominal_V <= self.supply_max_V:
+            raise ValueError(
+                f"supply_min_V {self.supply_min_V:g}, supply_nominal_V {self.supply_nominal_V:g} "
+                f"and supply_max_V {self.supply_max_V:g} must rise in that order"
+            )
+        if self.current_nominal_A > self.current_max_A:
+            raise ValueError(
+                f"current_nominal_A {self.current_nominal_A:g} must not be above "
+                f"current_max_A {self.current_max_A:g}"
+            )
+        if self.ambient_nominal_C > self.ambient_max_C:
+            raise ValueError(
+                f"ambient_nominal_C {self.ambient_nominal_C:g} must not be above "
+                f"ambient_max_C {self.ambient_max_C:g}"
+            )
+        return self
+
+
+class Heat(FileModel):
+    """[heat]: how the part's case warms above ambient on this board."""
+
+    case_to_ambient_K_per_W: Positive
+    case_to_ambient_max_K_per_W: Positive
+    time_constant_s: Annotated[float, Field(gt=0, le=3600)]
+
+    @model_validator(mode="after")
+    def _ordered(self) -> Heat:
+        if self.case_to_ambient_max_K_per_W < self.case_to_ambient_K_per_W:
+            raise ValueError(
+                f"case_to_ambient_max_K_per_W {self.case_to_ambient_max_K_per_W:g} must not be "
+                f"below case_to_ambient_K_per_W {self.case_to_ambient_K_per_W:g}"
+            )
+        return self
+
+
+class Sweep(FileModel):
+    """[sweep]: the forward sweep, driven up and then down through these currents."""
+
+    currents_A: Annotated[list[Positive], Field(min_length=4, max_length=200)]
+    repeats: Annotated[int, Field(ge=1, le=100)] = 1
+
+    @field_validator("currents_A")
+    @classmethod
+    def _rising(cls, values: list[float]) -> list[float]:
+        for low, high in zip(values, values[1:], strict=False):
+            if high <= low:
+                raise ValueError(f"{high:g} follows {low:g}: the currents must rise")
+        return values
+
+
+class Soak(FileModel):
+    """[soak]: case temperature against time at a constant current."""
+
+    current_A: Positive
+    longest_s: Annotated[float, Field(ge=30, le=14400)] = 600.0
+    known_within_K: Positive = 1.0
+    loss_reach: Annotated[float, Field(ge=1, le=10)] = 2.0
+    """How many times the measured loss the measured thermal resistance may be carried to before
+    the report warns that natural convection changes with rise."""
+
+
+class DropLimit(FileModel):
+    """One line of limits.drop: the most the stage may drop at a current."""
+
+    current_A: Positive
+    max_V: Positive
+
+
+class Limits(FileModel):
+    """[limits]: what the built board must meet."""
+
+    drop: list[DropLimit] = []
+    case_max_C: Celsius | None = None
+    junction_margin_min_K: Annotated[float, Field(ge=0)] | None = None
+    rule: Literal["guarded", "simple"] = "guarded"
+
+
+class StageFile(FileModel):
+    """A whole stage file."""
+
+    stage: Working
+    parts: Annotated[dict[str, Part], Field(min_length=1)]
+    heat: Heat
+    sweep: Sweep
+    soak: Soak | None = None
+    limits: Limits = Limits()
+
+    @field_validator("parts")
+    @classmethod
+    def _references(cls, parts: dict[str, Part]) -> dict[str, Part]:
+        for name in parts:
+            if not (name.isascii() and name.isalnum() and name[0].isalpha() and len(name) <= 12):
+                raise ValueError(f"{name!r} must be a reference such as D1 or Q2")
+        return parts
+
+    @model_validator(mode="after")
+    def _consistent(self, info: ValidationInfo) -> StageFile:
+        del info
+        most = self.stage.current_max_A
+        if self.sweep.currents_A[-1] > most:
+            raise ValueError(
+                f"sweep.currents_A ends at {self.sweep.currents_A[-1]:g}: it must not go above "
+                f"stage.current_max_A {most:g}"
+            )
+        if self.soak is not None and self.soak.current_A > most:
+            raise ValueError(
+                f"soak.current_A is {self.soak.current_A:g}: it must not be above "
+                f"stage.current_max_A {most:g}"
+            )
+        for limit in self.limits.drop:
+            if not any(abs(limit.current_A / a - 1) < 1e-6 for a in self.sweep.currents_A):
+                raise ValueError(
+                    f"limits.drop has a limit at {limit.current_A:g} A, which is not one of "
+                    "sweep.currents_A: add it there, so that it is measured"
+                )
+        if self.limits.case_max_C is not None and self.soak is None:
+            raise ValueError("limits.case_max_C needs a [soak] table, or it is never measured")
+        if self.limits.junction_margin_min_K is not None and self.soak is None:
+            raise ValueError(
+                "limits.junction_margin_min_K needs a [soak] table, or it is never measured"
+            )
+        return self

@@ -1,0 +1,1 @@
+"""Starter files, shipped as package data."""

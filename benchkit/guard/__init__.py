@@ -1,0 +1,6 @@
+"""The only way to switch anything on, and the certainty that it is off again."""
+
+from benchkit.guard.envelope import Ceilings, Envelope
+from benchkit.guard.guard import Guard, Live
+
+__all__ = ["Ceilings", "Envelope", "Guard", "Live"]

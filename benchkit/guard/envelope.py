@@ -1,0 +1,107 @@
+"""How far one step may go: what is programmed into the supply, and what trips the run."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from benchkit.errors import InputError
+from benchkit.files.bench import BenchLimits
+
+
+@dataclass(frozen=True)
+class Ceilings:
+    """What no step may pass on this bench, and how often the guard looks."""
+
+    voltage_max_V: float
+    current_max_A: float
+    power_max_W: float
+    case_max_C: float
+    poll_s: float
+
+    @classmethod
+    def of(cls, limits: BenchLimits) -> Ceilings:
+        """From a bench file."""
+        return cls(
+            limits.voltage_max_V,
+            limits.current_max_A,
+            limits.power_max_W,
+            limits.case_max_C,
+            limits.poll_s,
+        )
+
+
+@dataclass(frozen=True)
+class Envelope:
+    """One energised step.
+
+    voltage_V and current_limit_A are programmed; over_voltage_V and over_current_A are the
+    supply's own protection, programmed and read back before the output goes on. case_max_C,
+    loss_max_W and longest_s trip the run.
+    """
+
+    name: str
+    voltage_V: float
+    current_limit_A: float
+    over_voltage_V: float
+    over_current_A: float
+    case_max_C: float
+    loss_max_W: float
+    longest_s: float
+
+    @classmethod
+    def around(
+        cls,
+        name: str,
+        voltage_V: float,
+        largest_A: float,
+        ceilings: Ceilings,
+        *,
+        case_max_C: float,
+        loss_max_W: float,
+        longest_s: float,
+    ) -> Envelope:
+        """The envelope of a step that works at ``voltage_V`` and up to ``largest_A``.
+
+        The current limit stands a tenth above the largest current, so that reaching it means
+        something is wrong; over-current stands at the limit, over-voltage a tenth above the
+        voltage. InputError when that would pass one of the bench's ceilings.
+        """
+        limit = 1.1 * largest_A + 0.05
+        over = 1.1 * voltage_V + 0.5
+        _within(
+            name,
+            "voltage with its over-voltage level",
+            over,
+            ceilings.voltage_max_V,
+            "V",
+            "bench.voltage_max_V",
+        )
+        _within(name, "current limit", limit, ceilings.current_max_A, "A", "bench.current_max_A")
+        _within(name, "power", voltage_V * limit, ceilings.power_max_W, "W", "bench.power_max_W")
+        return cls(
+            name,
+            voltage_V,
+            limit,
+            over,
+            limit,
+            min(case_max_C, ceilings.case_max_C),
+            loss_max_W,
+            longest_s,
+        )
+
+    def sentence(self) -> str:
+        """For plans and cautions."""
+        return (
+            f"{self.voltage_V:g} V, current limit {self.current_limit_A:.3g} A; the supply trips "
+            f"above {self.over_voltage_V:.3g} V or {self.over_current_A:.3g} A, the guard above "
+            f"{self.case_max_C:.4g} C at the case, {self.loss_max_W:.3g} W of loss or "
+            f"{self.longest_s:.0f} s"
+        )
+
+
+def _within(step: str, what: str, value: float, ceiling: float, unit: str, key: str) -> None:
+    if value > ceiling:
+        raise InputError(
+            f"{step}: its {what} would be {value:.4g} {unit}, above {key} = {ceiling:g} of the "
+            "bench file; lower the stage's values, or use a bench that allows it"
+        )

@@ -1,0 +1,414 @@
+"""The guard: permissives before, a watch during, and off confirmed after.
+
+Software is the second line of defence. The first is the supply's own over-voltage, over-current
+and current limit, which the guard programs, reads back, and refuses to go on without. A process
+that is killed outright leaves only those.
+
+Nothing else in this suite can switch a supply on: the guard owns supply and load, and hands out a
+``Live`` handle only inside ``energised``, which always ends in ``make_safe``.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+import math
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import AbstractContextManager, contextmanager, nullcontext
+
+from benchkit.errors import (
+    BenchkitError,
+    InputError,
+    LinkError,
+    NotConfirmedOff,
+    OperatorStopped,
+    Refused,
+    Tripped,
+)
+from benchkit.guard.envelope import Ceilings, Envelope
+from benchkit.protocols import Clock, Journal, Load, Operator, Points, Protection, Supply
+from benchkit.reading import Reading
+
+RESIDUAL_V = 0.5
+"""Below this a port counts as dead."""
+DISCHARGE_S = 5.0
+"""How long the output is given to fall below RESIDUAL_V."""
+PROOF_V, PROOF_A = 1.0, 0.05
+"""Polarity is proved at this voltage and current limit before anything larger."""
+REST_K = 10.0
+"""Case and ambient may differ by this much before a run (a board fresh from the hand)."""
+PLAUSIBLE_C = (-45.0, 90.0)
+LEVEL_SHARE, LEVEL_V = 0.02, 0.05
+"""How far a read-back of a protection level may be from what was asked."""
+MESH_V = 0.03
+"""Exposed less guarded voltage must equal the drop within this and a share of a percent."""
+
+
+class Guard:
+    """Owns what can hurt. One per bench."""
+
+    def __init__(
+        self,
+        supply: Supply,
+        load: Load,
+        points: Points,
+        clock: Clock,
+        operator: Operator,
+        journal: Journal,
+        ceilings: Ceilings,
+        calibration_due: Mapping[str, dt.date],
+        today: dt.date,
+        *,
+        shield: Callable[[], AbstractContextManager[None]] = nullcontext,
+        watcher: Callable[[Reading], None] | None = None,
+    ) -> None:
+        self.__supply, self.__load = supply, load
+        self._points, self.clock, self._operator = points, clock, operator
+        self._journal = journal
+        self.ceilings = ceilings
+        self._due, self._today = calibration_due, today
+        self._shield, self._watcher = shield, watcher
+        self._start_s = clock.now()
+        self._step = "start"
+        self._case_C = math.nan
+
+    # what anyone may do
+
+    def now(self) -> float:
+        """Seconds of bench time since the run began, to the microsecond."""
+        return round(self.clock.now() - self._start_s, 6)
+
+    def restart_time(self, journal: Journal) -> None:
+        """Begin a run: time 0, and a new journal."""
+        self._journal, self._start_s, self._step = journal, self.clock.now(), "start"
+
+    def step(self, name: str) -> None:
+        """Name what is being done; readings and events carry it."""
+        self._step = name
+        self._journal.event("step", name, time_s=self.now())
+
+    def expect(self, point: str, largest: float) -> None:
+        """Fix a point's range for what is to come."""
+        self._points.expect(point, largest)
+
+    def read(self, point: str, *, quick: bool = False) -> Reading:
+        """One reading, recorded before it is returned."""
+        reading = self._points.read(point, self.now(), quick=quick)
+        self._keep(reading)
+        return reading
+
+    def remark(self, kind: str, text: str) -> None:
+        """Something the report is to mention."""
+        self._journal.event(kind, text, time_s=self.now(), step=self._step)
+
+    def latest_case_C(self) -> float:
+        """The case temperature the guard saw last; nan before its first look."""
+        return self._case_C
+
+    def instruct(self, text: str) -> None:
+        """Ask for something to be done by hand; OperatorStopped when it is declined."""
+        self._journal.event("instruction", text, time_s=self.now())
+        if not self._operator.instruct(text):
+            raise OperatorStopped(f"the operator declined: {text}")
+
+    # before
+
+    def permit(self) -> None:
+        """Check every permissive that needs no voltage. Refused names the one that is missing."""
+        self._check_calibration()
+        state = self.__supply.state()
+        if state.output_on:
+            self._journal.event(
+                "found-on",
+                f"{self.__supply.role} was found switched on: switching it off",
+                time_s=self.now(),
+                voltage_V=state.voltage_V,
+                current_A=state.current_A,
+            )
+            self.make_safe("found switched on")
+        self.__load.release()
+        for point in ("exposed_voltage", "guarded_voltage"):
+            value = self._usable(point)
+            if abs(value) > RESIDUAL_V:
+                raise Refused(
+                    f"{point} is {value:.3g} V with everything off, above {RESIDUAL_V} V: "
+                    "something still feeds or charges it; disconnect and discharge it first"
+                )
+        self._check_sensors()
+        self._journal.event("permitted", "every permissive holds", time_s=self.now())
+
+    def _check_calibration(self) -> None:
+        late = [f"{role} ({due})" for role, due in self._due.items() if due < self._today]
+        if late:
+            raise Refused(
+                f"calibration is out of date: {', '.join(late)}; calibrate, or correct "
+                "calibration_due in the bench file"
+            )
+
+    def _check_sensors(self) -> None:
+        temps = {point: self._usable(point) for point in ("case", "ambient")}
+        low, high = PLAUSIBLE_C
+        for point, value in temps.items():
+            if not low <= value <= high:
+                raise Refused(
+                    f"{point} reads {value:.1f} C at rest, outside {low:g} to {high:g} C: check "
+                    "the sensor"
+                )
+        if abs(temps["case"] - temps["ambient"]) > REST_K:
+            raise Refused(
+                f"case reads {temps['case']:.1f} C and ambient {temps['ambient']:.1f} C at rest, "
+                f"more than {REST_K:g} K apart: let the board settle, or check the sensors"
+            )
+
+    def _usable(self, point: str) -> float:
+        reading = self.read(point)
+        if not reading.usable:
+            raise Refused(f"{point} gives no usable reading ({reading.status}): check its leads")
+        return reading.value
+
+    def prove_polarity(self) -> None:
+        """At a volt and milliamperes, see that plus is plus and that the meters agree.
+
+        Polarity is never taken from a relay or a person. Refused when it is wrong.
+        """
+        envelope = Envelope(
+            "polarity",
+            PROOF_V,
+            PROOF_A,
+            PROOF_V * 1.1 + 0.5,
+            PROOF_A,
+            self.ceilings.case_max_C,
+            1.0,
+            30.0,
+        )
+        self.step("polarity")
+        with self.energised(envelope) as live:
+            live.wait(0.05)
+            exposed = self._usable("exposed_voltage")
+            if abs(exposed - PROOF_V) > 0.2:
+                hint = (
+                    "the leads are crossed"
+                    if exposed < -RESIDUAL_V
+                    else "the exposed port is shorted, loaded, or not connected"
+                )
+                raise Refused(
+                    f"with {PROOF_V:g} V set, exposed_voltage reads {exposed:.3g} V: {hint}; "
+                    "nothing larger is applied"
+                )
+            self._check_mesh(exposed)
+
+    def _check_mesh(self, exposed: float) -> None:
+        guarded, drop = self._usable("guarded_voltage"), self._usable("drop")
+        left = exposed - guarded - drop
+        if abs(left) > MESH_V + 0.005 * abs(exposed):
+            raise Refused(
+                f"exposed {exposed:.4g} V less guarded {guarded:.4g} V less drop {drop:.4g} V "
+                f"leaves {left:.3g} V, which must be near zero: a measuring lead is off or crossed"
+            )
+
+    # during
+
+    @contextmanager
+    def energised(self, envelope: Envelope, caution: str | None = None) -> Iterator[Live]:
+        """Protect, program, switch on; hand out the means to load and wait; always end off.
+
+        Whatever ends the block (its end, a trip, an error, Ctrl-C), the output is switched off
+        first and then confirmed off; NotConfirmedOff replaces the error when it cannot be.
+        """
+        if envelope.voltage_V > self.ceilings.voltage_max_V:
+            raise InputError(
+                f"{envelope.name}: {envelope.voltage_V:g} V is above the bench's "
+                f"{self.ceilings.voltage_max_V:g} V"
+            )
+        if caution is not None:
+            self._journal.event("caution", caution, time_s=self.now())
+            if not self._operator.acknowledge(caution):
+                raise OperatorStopped("the operator did not accept the caution")
+        try:
+            # The limit first: on supplies whose over-current level is their current limit, the
+            # level read back is that of the limit then in force.
+            self.__supply.program(envelope.voltage_V, envelope.current_limit_A)
+            self._protect(envelope)
+            self._journal.event(
+                "on",
+                f"{envelope.name}: {envelope.sentence()}",
+                time_s=self.now(),
+                blind_s=self.blind_s,
+            )
+            live = Live(self, self.__supply, self.__load, envelope)
+            self.__supply.enable()
+            yield live
+        except BaseException as error:
+            kind = type(error).__name__
+            text = str(error) if isinstance(error, BenchkitError) else kind
+            self._journal.event("stopped", text, time_s=self.now(), error=kind)
+            self.make_safe(text)
+            raise
+        self.make_safe(f"end of {envelope.name}")
+
+    @property
+    def blind_s(self) -> float:
+        """The longest the guard can be without a look while something is energised: its polling
+        interval, and one reading of a second's aperture beside it."""
+        return self.ceilings.poll_s + 1.0
+
+    def _protect(self, envelope: Envelope) -> None:
+        asked = Protection(envelope.over_voltage_V, envelope.over_current_A)
+        read = self.__supply.protect(asked)
+        for what, want, got in (
+            ("over-voltage", asked.over_voltage_V, read.over_voltage_V),
+            ("over-current", asked.over_current_A, read.over_current_A),
+        ):
+            if not abs(got - want) <= LEVEL_SHARE * want + LEVEL_V:
+                raise Refused(
+                    f"{self.__supply.role}: its {what} level reads back as {got:.4g} after "
+                    f"{want:.4g} was set; nothing is switched on without it"
+                )
+
+    def _keep(self, reading: Reading) -> None:
+        self._journal.reading(self._step, reading)
+        if reading.point == "case":
+            self._case_C = reading.value
+        if self._watcher is not None:
+            self._watcher(reading)
+
+    def look(self, envelope: Envelope, began_s: float) -> None:
+        """One look at everything that trips; Tripped says threshold, reading and time."""
+        state = self.__supply.state()
+        now = self.now()
+        self._keep(Reading(now, "supply_voltage", state.voltage_V, "V", 0.0, 0.0))
+        self._keep(Reading(now, "supply_current", state.current_A, "A", 0.0, 0.0))
+        case = self.read("case", quick=True)
+        if state.tripped:
+            self._trip("the supply's own protection", "has tripped", now)
+        if not state.output_on:
+            self._trip("the supply's output", "went off by itself", now)
+        if state.constant_current:
+            self._trip(
+                "the supply",
+                f"limits its current at {state.current_A:.3g} A, which the step does not expect",
+                now,
+            )
+        self._compare("supply_voltage", state.voltage_V, envelope.over_voltage_V, "V", now)
+        self._compare("supply_current", state.current_A, envelope.over_current_A, "A", now)
+        if not case.usable:
+            self._trip("case", f"gives no usable reading ({case.status})", now)
+        self._compare("case", case.value, envelope.case_max_C, "C", now)
+        self._compare("time", now - began_s, envelope.longest_s, "s", now)
+
+    def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
+        """Trip on the stage's own loss."""
+        self._compare("loss", drop_V * current_A, envelope.loss_max_W, "W", self.now())
+
+    def _compare(self, what: str, value: float, threshold: float, unit: str, now: float) -> None:
+        if not value <= threshold:
+            self._trip(what, f"is {value:.4g} {unit}, above {threshold:.4g} {unit}", now)
+
+    def _trip(self, what: str, text: str, now: float) -> None:
+        self._journal.event("trip", f"{what} {text}", time_s=now, step=self._step)
+        raise Tripped(f"{what} {text} at {now:.3f} s, in step {self._step}")
+
+    # after
+
+    def make_safe(self, why: str) -> None:
+        """Output off first, then confirmed by read-back and by a meter; NotConfirmedOff if not.
+
+        Called on every way out; harmless when everything is off already.
+        """
+        with self._shield():
+            doubts = []
+            try:
+                self.__supply.disable()
+            except LinkError as error:
+                doubts.append(f"{self.__supply.role}'s read-back: {error}")
+            try:
+                left = self._discharged()
+                if left is not None:
+                    doubts.append(left)
+            except LinkError as error:
+                doubts.append(f"the meter: {error}")
+            try:
+                self.__load.release()
+            except LinkError as error:
+                self._journal.event("load", f"could not be released: {error}", time_s=self._then())
+            if doubts:
+                self._journal.event("not-confirmed-off", "; ".join(doubts), time_s=self._then())
+                raise NotConfirmedOff(
+                    "OUTPUTS NOT CONFIRMED OFF. Make the bench safe by hand: switch the supply "
+                    "off at its own switch, then disconnect the exposed port, then measure it "
+                    f"with a separate meter. Not confirmed by {' and by '.join(doubts)} "
+                    f"(after: {why})"
+                )
+            self._journal.event("off", f"confirmed off: {why}", time_s=self._then())
+
+    def _then(self) -> float | None:
+        """The time, where the clock can still be asked."""
+        try:
+            return self.now()
+        except LinkError:
+            return None
+
+    def _discharged(self) -> str | None:
+        """Wait for the exposed port to fall below RESIDUAL_V; a sentence when it does not."""
+        began = self.clock.now()
+        while True:
+            reading = self.read("exposed_voltage", quick=True)
+            if reading.usable and abs(reading.value) < RESIDUAL_V:
+                return None
+            if self.clock.now() - began > DISCHARGE_S:
+                value = f"{reading.value:.3g} V" if reading.usable else reading.status
+                return (
+                    f"the meter: exposed_voltage is still {value} {DISCHARGE_S:g} s after "
+                    "switching off"
+                )
+            self.clock.sleep(0.02)
+
+
+class Live:
+    """What a procedure can do while something is energised. Made by ``Guard.energised`` only."""
+
+    def __init__(self, guard: Guard, supply: Supply, load: Load, envelope: Envelope) -> None:
+        self._guard, self.__supply, self.__load = guard, supply, load
+        self.envelope = envelope
+        self._began_s = self._looked_s = guard.now()
+
+    def draw(self, current_A: float) -> None:
+        """Set the load, never above the envelope's current limit (InputError)."""
+        if not 0 <= current_A < self.envelope.current_limit_A:
+            raise InputError(
+                f"{self.envelope.name}: a load of {current_A:g} A is not inside its limit of "
+                f"{self.envelope.current_limit_A:.3g} A"
+            )
+        self.__load.draw(current_A)
+
+    def rest(self) -> None:
+        """Release the load, keep the supply on."""
+        self.__load.release()
+
+    def look(self) -> None:
+        """Look now, whatever the polling interval."""
+        self._guard.look(self.envelope, self._began_s)
+        self._looked_s = self._guard.now()
+
+    def wait(self, seconds: float) -> None:
+        """Let time pass, looking at least every polling interval and once at the start."""
+        until = self._guard.now() + seconds
+        self.look()
+        while (left := until - self._guard.now()) > 1e-6:
+            due = self._looked_s + self._guard.ceilings.poll_s - self._guard.now()
+            if due <= 0:
+                self.look()
+                continue
+            self._guard.clock.sleep(min(left, due))
+
+    def read(self, point: str) -> Reading:
+        """A recorded reading; overload or a lost sensor trips."""
+        if self._guard.now() - self._looked_s > self._guard.ceilings.poll_s:
+            self.look()
+        reading = self._guard.read(point)
+        if not reading.usable:
+            self._guard._trip(point, f"gives no usable reading ({reading.status})", reading.time_s)
+        return reading
+
+    def check_loss(self, drop_V: float, current_A: float) -> None:
+        """Trip when the stage burns more than the envelope allows."""
+        self._guard.check_loss(self.envelope, drop_V, current_A)

@@ -1,0 +1,218 @@
+"""The channel law: the charge-based EKV model of a long channel, with series resistance.
+
+    I = 2 n b Vt^2 [ L((Vp - Vs)/2Vt)^2 - L((Vp - Vd)/2Vt)^2 ],   L(x) = ln(1 + exp(x)),
+    Vp = (Vg - VT)/n, voltages from the body, which a discrete part ties to its source
+
+(Enz, Krummenacher and Vittoz, "An analytical MOS transistor model valid in all regions of
+operation", 1995). It is symmetric in drain and source, so the third quadrant, where a pass switch
+works, needs no case of its own, and it passes smoothly through threshold. The gain factor b falls
+with (T/T0)^-1.5 (lattice scattering; Sze), the threshold by 2 mV/K (common practice, no source),
+and the series resistance, mostly that of the drift region, rises with a power of T that the
+sheet's hot on-resistance fixes.
+
+Voltages here are magnitudes, as for an N-channel part; the circuit mirrors them for a P-channel.
+Validity: on-resistance within its sheet's gate voltages; no avalanche, no velocity saturation.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from benchkit.errors import InputError
+from benchkit.files.parts import PMosfet
+from benchkit.parts.diode import REFERENCE_C, ZERO_C, DiodeLaw, DiodeModel, junction_model
+from benchkit.parts.diode import thermal_voltage as _vt
+from benchkit.parts.tolerance import between
+
+Floats = NDArray[np.float64]
+
+SLOPE_FACTOR = 1.2
+"""n of the model: a usual value for a thick gate oxide; it matters below threshold only."""
+GAIN_EXPONENT = 1.5
+THRESHOLD_FALL_V_PER_K = 0.002
+SERIES_EXPONENT = 2.3
+"""Where no hot on-resistance is printed (lattice mobility of n-type silicon; Sze)."""
+LEAST_SERIES_OHM = 1e-7
+
+
+@dataclass(frozen=True)
+class ChannelLaw:
+    """Parameters at 25 C; gain_A_per_V2, threshold_V and series_ohm may be arrays of samples."""
+
+    gain_A_per_V2: Floats | float
+    threshold_V: Floats | float
+    series_ohm: Floats | float
+    series_exponent: float = SERIES_EXPONENT
+
+    def series(self, junction_C: Floats | float) -> Floats:
+        """Series resistance in ohms at a junction temperature."""
+        ratio = (np.asarray(junction_C, dtype=float) + ZERO_C) / (REFERENCE_C + ZERO_C)
+        return np.asarray(self.series_ohm) * ratio**self.series_exponent
+
+    def current(
+        self, gate_V: Floats, drain_V: Floats, junction_C: Floats | float
+    ) -> tuple[Floats, Floats, Floats]:
+        """Drain current of the bare channel (without series resistance) and its slopes.
+
+        gate_V and drain_V are measured from the source. Returns (amperes, dI/dVg, dI/dVd).
+        """
+        vt, n = _vt(junction_C), SLOPE_FACTOR
+        ratio = (np.asarray(junction_C, dtype=float) + ZERO_C) / (REFERENCE_C + ZERO_C)
+        unit = 2 * n * np.asarray(self.gain_A_per_V2) * ratio**-GAIN_EXPONENT * vt**2
+        threshold = self.threshold_V - THRESHOLD_FALL_V_PER_K * (
+            np.asarray(junction_C, dtype=float) - REFERENCE_C
+        )
+        forward = (gate_V - threshold) / n / (2 * vt)
+        backward = forward - drain_V / (2 * vt)
+        f, r = np.logaddexp(0.0, forward), np.logaddexp(0.0, backward)
+        f_slope = 2 * f * _logistic(forward) / (2 * vt)
+        r_slope = 2 * r * _logistic(backward) / (2 * vt)
+        return unit * (f * f - r * r), unit * (f_slope - r_slope) / n, unit * r_slope
+
+    def on_resistance(
+        self, gate_V: float, current_A: float, junction_C: float = REFERENCE_C
+    ) -> Floats:
+        """Drop over current, in ohms, of channel and series resistance at ``current_A``."""
+        drain = np.full(np.shape(self.gain_A_per_V2), 1e-3)
+        gate = np.full_like(drain, gate_V)
+        for _ in range(60):
+            amps, _, slope = self.current(gate, drain, junction_C)
+            step = np.clip((current_A - amps) / np.maximum(slope, 1e-12), -0.5, 0.5)
+            drain = np.clip(drain + step, 0.0, 100.0)
+            if np.all(np.abs(step) < 1e-12):
+                break
+        return drain / current_A + self.series(junction_C)
+
+
+@dataclass(frozen=True)
+class MosfetModel:
+    """Typical channel and its spread, body diode, and notes on what had to be assumed."""
+
+    typical: ChannelLaw
+    resistance_ratio: float
+    """Printed maximum over typical on-resistance."""
+    threshold_min_V: float
+    threshold_max_V: float
+    body: DiodeModel
+    notes: tuple[str, ...]
+
+    def sample(self, resistance_score: Floats, threshold_score: Floats) -> ChannelLaw:
+        """Sampled channels: the whole on-resistance scales by one score, threshold by another."""
+        log_ratio = float(np.log(self.resistance_ratio))
+        scale = np.exp(between(resistance_score, -log_ratio, 0.0, log_ratio))
+        middle = float(self.typical.threshold_V)
+        threshold = between(threshold_score, self.threshold_min_V, middle, self.threshold_max_V)
+        return ChannelLaw(
+            self.typical.gain_A_per_V2 / scale, threshold,
+            self.typical.series_ohm * scale, self.typical.series_exponent,
+        )  # fmt: skip
+
+    def body_law(self, score: Floats) -> DiodeLaw:
+        """Sampled body diodes."""
+        return self.body.sample(score, np.zeros_like(score))
+
+
+def mosfet_model(reference: str, part: PMosfet) -> MosfetModel:
+    """Fit channel, spread and body diode to a sheet's points.
+
+    Raises InputError naming ``parts.<reference>`` when the points contradict each other.
+    """
+    name = f"parts.{reference}.on_resistance"
+    cold = sorted((p for p in part.on_resistance if p.junction_C == REFERENCE_C),
+                  key=lambda p: p.gate_V)  # fmt: skip
+    if len({p.gate_V for p in cold}) < 2:
+        raise InputError(f"{name} needs points at two gate voltages or more at junction_C = 25")
+    for low, high in zip(cold, cold[1:], strict=False):
+        if high.typ_ohm >= low.typ_ohm and high.gate_V > low.gate_V:
+            raise InputError(
+                f"{name} contradicts itself: {high.typ_ohm:g} ohm at {high.gate_V:g} V is not below "
+                f"{low.typ_ohm:g} ohm at {low.gate_V:g} V; a channel's resistance falls with gate "
+                "voltage"
+            )
+    if cold[0].gate_V <= part.threshold.middle_V:
+        raise InputError(
+            f"{name} has a point at gate_V {cold[0].gate_V:g}, not above the threshold of "
+            f"{part.threshold.middle_V:g} V: on-resistance is printed for a gate that is driven"
+        )
+    gain, extrapolated, series = _fit_cold(cold, part)
+    if series < 0 or gain <= 0:
+        raise InputError(
+            f"{name} contradicts parts.{reference}.threshold: between {cold[0].gate_V:g} V and "
+            f"{cold[-1].gate_V:g} V the resistance falls further than a channel with a threshold "
+            f"of {part.threshold.middle_V:g} V can; check the points, or give the typical threshold"
+        )
+    notes = []
+    law = ChannelLaw(gain, extrapolated, max(series, LEAST_SERIES_OHM))
+    hot = [p for p in part.on_resistance if p.junction_C > REFERENCE_C]
+    if hot:
+        law = _fit_hot(name, law, hot[0].gate_V, hot[0].current_A, hot[0].junction_C, hot[0].typ_ohm)
+    else:
+        notes.append(
+            f"{reference}: no hot on-resistance is given; its drift region is taken to rise with "
+            f"temperature to the power {SERIES_EXPONENT:g}"
+        )
+    ratios = [p.max_ohm / p.typ_ohm for p in part.on_resistance if p.max_ohm]
+    if not ratios:
+        notes.append(f"{reference}: no maximum on-resistance is printed; its spread is not known")
+    shift = extrapolated - part.threshold.middle_V
+    body = junction_model(reference, part.body_diode, "silicon", "body_diode")
+    return MosfetModel(
+        law, max(ratios, default=1.0), part.threshold.min_V + shift,
+        part.threshold.max_V + shift, body, (*notes, *body.notes),
+    )  # fmt: skip
+
+
+def _fit_cold(cold: list, part: PMosfet) -> tuple[float, float, float]:  # type: ignore[type-arg]
+    """Gain, extrapolated threshold and series resistance, by fixed-point iteration.
+
+    The printed threshold is where a few hundred microamperes flow, below the extrapolated
+    threshold of the law; and at its test current the channel's drop takes some overdrive.
+    """
+    vt = float(_vt(REFERENCE_C))
+    threshold, series = part.threshold.middle_V, 0.0
+    gain = 1.0
+    volts = np.array([p.gate_V for p in cold])
+    amps = np.array([p.current_A for p in cold])
+    ohms = np.array([p.typ_ohm for p in cold])
+    for _ in range(200):
+        drop = np.maximum(ohms - series, 0.0) * amps
+        overdrive = np.maximum(volts - threshold - 0.5 * SLOPE_FACTOR * drop, 0.05)
+        design = np.column_stack([1 / overdrive, np.ones_like(overdrive)]) / ohms[:, None]
+        (inverse, series_new), *_ = np.linalg.lstsq(design, np.ones_like(ohms))
+        if inverse <= 0:
+            return -1.0, threshold, series
+        gain = 1 / float(inverse)
+        q = np.sqrt(part.threshold.current_A / (2 * SLOPE_FACTOR * gain * vt**2))
+        threshold_new = part.threshold.middle_V - SLOPE_FACTOR * 2 * vt * float(
+            np.log(np.expm1(min(q, 500.0)))
+        )
+        moved = abs(threshold_new - threshold) + abs(float(series_new) - series)
+        threshold, series = threshold_new, float(series_new)
+        if moved < 1e-12:
+            break
+    return gain, threshold, series
+
+
+def _fit_hot(
+    name: str, law: ChannelLaw, gate_V: float, current_A: float, junction_C: float, ohms: float
+) -> ChannelLaw:
+    bare = ChannelLaw(law.gain_A_per_V2, law.threshold_V, 0.0)
+    left = ohms - float(bare.on_resistance(gate_V, current_A, junction_C))
+    cold = float(law.on_resistance(gate_V, current_A))
+    if left <= 0 or ohms <= cold:
+        raise InputError(
+            f"{name} contradicts itself: {ohms:g} ohm at {junction_C:g} C does not fit "
+            f"{cold:.4g} ohm at 25 C; a channel's resistance rises with temperature, mostly by a "
+            "factor of 1.3 to 1.9 at 125 C"
+        )
+    ratio = (junction_C + ZERO_C) / (REFERENCE_C + ZERO_C)
+    exponent = float(np.log(left / float(law.series_ohm)) / np.log(ratio))
+    return ChannelLaw(law.gain_A_per_V2, law.threshold_V, law.series_ohm, exponent)
+
+
+def _logistic(x: Floats) -> Floats:
+    """1 / (1 + exp(-x)), to full relative precision in both tails, where slopes live."""
+    return np.exp(-np.logaddexp(0.0, -x))

@@ -1,0 +1,1 @@
+"""What the datasheets promise of a stage, before anything is measured."""

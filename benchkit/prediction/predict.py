@@ -1,0 +1,141 @@
+"""The whole prediction of a stage, as `benchkit predict` prints it and the reports show it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from benchkit.prediction.forward import forward
+from benchkit.prediction.heat import derating, working_point
+from benchkit.prediction.scenarios import SCENARIOS, Scenario, scenario
+from benchkit.stage import Stage
+
+Floats = NDArray[np.float64]
+
+SAMPLES = 400
+SEED = 20260101
+BAND_PERCENT = (2.5, 97.5)
+USEFUL_RATIO = 1.5
+"""The lowest useful supply voltage is where the drop has grown to this many times its value at
+the nominal supply voltage (common practice, no source)."""
+
+
+@dataclass(frozen=True)
+class DropRow:
+    """Steady-state drop at one current; low and high bound 95 % of the tolerance samples."""
+
+    current_A: float
+    supply_V: float
+    ambient_C: float
+    nominal_V: float
+    low_V: float
+    high_V: float
+    corner_low_V: float
+    corner_high_V: float
+    loss_W: float
+    junction_C: float
+
+
+@dataclass(frozen=True)
+class Prediction:
+    """See the design of `predict --json`; ``document`` spells it."""
+
+    stage: str
+    topology: str
+    conditions: dict[str, float]
+    drop: list[DropRow]
+    scenarios: list[Scenario]
+    case_C: float
+    junction_C: float
+    runs_away: bool
+    derating: list[tuple[float, float]]
+    lowest_useful_supply_V: float | None
+    notes: list[str]
+    worst_residual: float
+
+    def document(self) -> dict[str, object]:
+        """As JSON-ready values, with the contract's key names."""
+        return {
+            "stage": self.stage,
+            "topology": self.topology,
+            "conditions": self.conditions,
+            "drop": [vars(row) for row in self.drop],
+            "scenarios": {s.name: s.document() for s in self.scenarios},
+            "heat": {
+                "case_C": self.case_C,
+                "junction_C": self.junction_C,
+                "runs_away": self.runs_away,
+                "derating": [{"ambient_C": t, "current_A": a} for t, a in self.derating],
+            },
+            "lowest_useful_supply_V": self.lowest_useful_supply_V,
+            "notes": self.notes,
+            "worst_residual": self.worst_residual,
+        }
+
+
+def predict(stage: Stage, samples: int = SAMPLES, seed: int = SEED) -> Prediction:
+    """Say what the datasheets promise. Bands come from ``samples`` seeded tolerance samples."""
+    file, working = stage.file, stage.file.stage
+    drawn = stage.draw(samples, seed)
+    amps = np.array(file.sweep.currents_A)
+    supply, ambient = working.supply_nominal_V, working.ambient_nominal_C
+    band = working_point(stage, drawn, amps, supply, ambient)
+    typical = working_point(stage, stage.typical(), amps, supply, ambient)
+    low, high = np.nanpercentile(band.drop_V, BAND_PERCENT, axis=0)
+    corners = [
+        working_point(stage, stage.corner(way), amps, supply, ambient).drop_V[0] for way in (-1, 1)
+    ]
+    rows = [
+        DropRow(
+            float(amps[k]), supply, ambient, float(typical.drop_V[0, k]), float(low[k]),
+            float(high[k]), float(corners[0][k]), float(corners[1][k]),
+            float(typical.loss_W[0, k]), float(typical.junction_C[0, k]),
+        )
+        for k in range(amps.size)
+    ]  # fmt: skip
+    hottest = working_point(
+        stage, drawn, working.current_max_A, supply, working.ambient_max_C
+    )
+    ambients = np.linspace(min(ambient, 25.0), stage.main_part.junction_max_C, 26)
+    limit = stage.main_part.junction_max_C
+    curve = derating(stage, stage.typical(), supply, ambients, limit)[0]
+    away = bool(hottest.runs_away.any())
+    notes = list(stage.notes)
+    if away:
+        notes.append(
+            f"at {working.current_max_A:g} A and {working.ambient_max_C:g} C some parts within "
+            "tolerance have no steady state: they run away"
+        )
+    residual = forward(stage, drawn, amps, supply, ambient).residual.max()
+    return Prediction(
+        working.name, working.topology,
+        {
+            "supply_nominal_V": supply, "current_nominal_A": working.current_nominal_A,
+            "ambient_nominal_C": ambient, "samples": samples, "seed": seed,
+            "band_percent": BAND_PERCENT[1] - BAND_PERCENT[0],
+        },
+        rows, [scenario(stage, drawn, name) for name in SCENARIOS],
+        _worst(hottest.case_C, away), _worst(hottest.junction_C, away), away,
+        [(float(t), float(a)) for t, a in zip(ambients, curve, strict=True)],
+        _lowest_useful(stage), notes, float(residual),
+    )  # fmt: skip
+
+
+def _worst(values: Floats, away: bool) -> float:
+    """The hottest 2.5 % are left out; where some run away there is no figure to give."""
+    return float("inf") if away else float(np.percentile(values, BAND_PERCENT[1]))
+
+
+def _lowest_useful(stage: Stage) -> float | None:
+    """Only a channel has one: a junction drops the same from any supply voltage."""
+    if stage.topology.control is None:
+        return None
+    working = stage.file.stage
+    volts = np.linspace(0.5, working.supply_nominal_V, 120)
+    drops = forward(
+        stage, stage.typical(), working.current_nominal_A, volts, working.ambient_nominal_C
+    ).drop_V[0]
+    good = drops <= USEFUL_RATIO * drops[-1]
+    return float(volts[int(np.argmax(good))])

@@ -1,0 +1,109 @@
+"""What benchkit needs of a bench, as small Protocols.
+
+Anything that fits these can be guarded, measured with and tested: SCPI instruments over VISA in
+``instruments/``, or a scripted stand-in in a test. All quantities are in volts, amperes, degrees
+Celsius and seconds. Every method may raise ``benchkit.errors.LinkError``.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Protocol
+
+from benchkit.reading import Reading
+
+
+@dataclass(frozen=True, slots=True)
+class SupplyState:
+    """What a supply says of its own output."""
+
+    output_on: bool
+    voltage_V: float
+    current_A: float
+    constant_current: bool
+    tripped: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Protection:
+    """Protection levels, as asked for or as read back from a supply."""
+
+    over_voltage_V: float
+    over_current_A: float
+
+
+class Supply(Protocol):
+    """A programmable DC supply output."""
+
+    role: str
+
+    def program(self, voltage_V: float, current_A: float) -> None:
+        """Set voltage and current limit, read both back and raise LinkError if they differ."""
+
+    def protect(self, protection: Protection) -> Protection:
+        """Program over-voltage and over-current protection, clear old trips, return read-back."""
+
+    def enable(self) -> None:
+        """Switch the output on, confirmed by read-back."""
+
+    def disable(self) -> None:
+        """Switch the output off: sent blind first, even to a session that is out of step, then
+        confirmed by read-back; raises LinkError when it cannot be confirmed."""
+
+    def state(self) -> SupplyState:
+        """Read the output state, one round trip."""
+
+
+class Load(Protocol):
+    """An electronic load in constant-current mode."""
+
+    role: str
+
+    def draw(self, current_A: float) -> None:
+        """Set the current and switch the input on, confirmed."""
+
+    def release(self) -> None:
+        """Switch the input off: sent blind first, then confirmed."""
+
+
+class Points(Protocol):
+    """The quantities the bench can read, by name (see ``benchkit.reading.POINT_UNITS``)."""
+
+    def names(self) -> tuple[str, ...]:
+        """Which points this bench can read."""
+
+    def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
+        """Take one reading; ``quick`` uses the short aperture of a watch reading."""
+
+    def expect(self, point: str, largest: float) -> None:
+        """Choose the fixed range for the coming readings from the largest value expected."""
+
+
+class Clock(Protocol):
+    """Bench time. On a simulated bench it may run faster than the wall's."""
+
+    def now(self) -> float:
+        """Seconds since an arbitrary start, monotonic."""
+
+    def sleep(self, seconds: float) -> None:
+        """Let bench time pass."""
+
+
+class Operator(Protocol):
+    """The person at the bench."""
+
+    def acknowledge(self, caution: str) -> bool:
+        """Show a caution; True when it was read and accepted."""
+
+    def instruct(self, text: str) -> bool:
+        """Ask for something to be done by hand; True when the operator says it is done."""
+
+
+class Journal(Protocol):
+    """Where readings and events go before anything else happens with them."""
+
+    def reading(self, step: str, reading: Reading) -> None:
+        """Append a reading and hand it to the operating system."""
+
+    def event(self, kind: str, text: str, **facts: object) -> None:
+        """Append an event."""

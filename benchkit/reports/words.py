@@ -1,0 +1,170 @@
+"""How figures, places and verdicts are spelled for the person at the bench."""
+
+from __future__ import annotations
+
+import math
+import re
+from dataclasses import dataclass
+
+from benchkit.evaluation.verdict import rounded
+from benchkit.records.result import Measurand
+
+NAMES = {
+    "drop": "Forward drop",
+    "case_rise": "Case rise over ambient, at the end of the soak's curve",
+    "thermal_resistance": "Thermal resistance",
+    "case_hottest": "Case at the highest current and ambient",
+    "junction_margin": "Junction margin at the highest current and ambient",
+}
+UNITS = {"C": "°C"}
+VERDICTS = {"pass": "PASS", "fail": "FAIL", "undecided": "UNDECIDED"}
+NONE = "–"
+
+_DEGREES = re.compile(r"(?<=\d) C(?![\w/])")
+
+
+def named(name: str) -> str:
+    """A measurand's name in words."""
+    return NAMES.get(name) or name.replace("_", " ").capitalize()
+
+
+def unit_of(unit: str) -> str:
+    """A unit as it is printed."""
+    return UNITS.get(unit, unit)
+
+
+def degrees(text: str) -> str:
+    """``25 C`` as ``25 °C``: the record keeps to plain letters."""
+    return _DEGREES.sub(" °C", text)
+
+
+def sentence(text: str) -> str:
+    """Text with a capital at its start and a full stop at its end."""
+    text = degrees(text.strip())
+    if not text:
+        return text
+    return text[0].upper() + text[1:] + ("" if text[-1] in ".!?" else ".")
+
+
+def moment(stamp: object) -> str:
+    """An ISO time as ``2026-03-02 09:15 UTC``; anything else as it is."""
+    text = str(stamp) if stamp else ""
+    found = re.fullmatch(r"(\d{4}-\d\d-\d\d)T(\d\d:\d\d)(:[\d.]+)?(Z|\+00:00)", text)
+    return f"{found[1]} {found[2]} UTC" if found else text or "not recorded"
+
+
+@dataclass(frozen=True)
+class Figures:
+    """One row's numbers, rounded to the decimal place that U allows."""
+
+    measured: str
+    U: str
+    k: str
+    nominal: str
+    band: str
+    limit: str
+    en: str
+
+
+def figures_of(row: Measurand) -> Figures:
+    """Spell a row's numbers."""
+    measured, spread = rounded(row.measured, row.U)
+    places = _places(spread)
+    low, high = row.limit["low"], row.limit["high"]
+    promised = row.predicted
+    bounds = [f"≥ {low:.6g}"] if low is not None else []
+    bounds += [f"≤ {high:.6g}"] if high is not None else []
+    return Figures(
+        NONE if row.measured is None else measured,
+        NONE if row.U is None else spread,
+        NONE if row.k is None else f"{row.k:.2f}",
+        NONE if promised is None else _to(promised["nominal"], places),
+        NONE if promised is None
+        else f"{_to(promised['low'], places)} to {_to(promised['high'], places)}",
+        " and ".join(bounds) or NONE,
+        NONE if row.en is None else f"{row.en:.2f}",
+    )  # fmt: skip
+
+
+def _places(spread: str) -> int | None:
+    if not re.fullmatch(r"[\d.]+", spread):
+        return None
+    return len(spread.partition(".")[2])
+
+
+def _to(value: float, places: int | None) -> str:
+    # A promise is not worth more digits than four, however well it is measured.
+    if places is None or value == 0 or not math.isfinite(value):
+        return f"{value:.4g}"
+    most = 3 - math.floor(math.log10(abs(value)))
+    return f"{value:.{max(0, min(places, most))}f}"
+
+
+def place_in_band(row: Measurand) -> str:
+    """Where in the datasheet band a board sits, in words."""
+    if row.predicted is None or row.measured is None:
+        return ""
+    low, high = row.predicted["low"], row.predicted["high"]
+    if row.measured < low:
+        return "below the band"
+    if row.measured > high:
+        return "above the band"
+    if high <= low:
+        return "within the band"
+    return f"{100 * (row.measured - low) / (high - low):.0f} % of the band"
+
+
+@dataclass(frozen=True)
+class Strip:
+    """A measurand on one line; positions in 0..100, None where there is nothing to mark."""
+
+    band: tuple[float, float] | None
+    nominal: float | None
+    value: float
+    span: tuple[float, float]
+    limits: list[float]
+    outside: str
+    """"low" or "high" when the value lies off the drawn line."""
+
+
+def strip_of(row: Measurand) -> Strip | None:
+    """The small drawing beside a row: band, typical value, measured with U, limits.
+
+    The line is stretched to hold all of it, but to no more than five bands: a limit further off
+    is left out, a value further off is marked at the end.
+    """
+    if row.measured is None or (row.predicted is None and not any(_limits(row))):
+        return None
+    spread = row.U or 0.0
+    marks = [row.measured - spread, row.measured + spread, *_limits(row)]
+    if row.predicted is not None:
+        low, high = row.predicted["low"], row.predicted["high"]
+        width = max(high - low, 1e-12)
+        least, most = low - 2 * width, high + 2 * width
+        marks = [min(max(mark, least), most) for mark in (*marks, low, high)]
+    start, end = min(marks), max(marks)
+    pad = 0.06 * (end - start) or 1.0
+    start, end = start - pad, end + pad
+
+    def at(value: float) -> float:
+        return round(100 * min(max((value - start) / (end - start), 0.0), 1.0), 2)
+
+    promised = row.predicted
+    outside = "low" if row.measured < start else "high" if row.measured > end else ""
+    return Strip(
+        (at(promised["low"]), at(promised["high"])) if promised else None,
+        at(promised["nominal"]) if promised else None,
+        at(row.measured), (at(row.measured - spread), at(row.measured + spread)),
+        [at(limit) for limit in _limits(row) if start < limit < end], outside,
+    )  # fmt: skip
+
+
+def _limits(row: Measurand) -> list[float]:
+    return [bound for bound in row.limit.values() if bound is not None]
+
+
+def scaled(unit: str, size: float) -> tuple[float, str]:
+    """Factor and unit in which a small uncertainty reads well."""
+    if unit in ("V", "K", "A") and 0 < size < 0.1:
+        return (1e3, "m" + unit) if size >= 1e-4 else (1e6, "µ" + unit)
+    return 1.0, "K" if unit == "C" else unit

@@ -1,0 +1,100 @@
+"""The bench's points: which instrument and route reads each, and what its reading is worth."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+
+from benchkit.errors import InputError
+from benchkit.files.bench import BenchFile
+from benchkit.metrology.accuracy import Accuracy
+from benchkit.reading import POINT_UNITS, Reading, Status
+from instruments.errors import NotANumber, Overload
+from instruments.meter import ScpiMeter
+from instruments.thermometer import ScpiThermometer
+
+QUICK_NPLC = 0.2
+
+
+class BenchPoints:
+    """Fulfils ``benchkit.protocols.Points`` with the instruments of a bench file."""
+
+    def __init__(
+        self,
+        bench: BenchFile,
+        meters: Mapping[str, ScpiMeter],
+        thermometers: Mapping[str, ScpiThermometer],
+    ) -> None:
+        """InputError when the bench file declares a range its meter's dialect does not have."""
+        self._bench, self._meters, self._thermometers = bench, meters, thermometers
+        self._ranges: dict[str, Accuracy] = {}
+        for name, meter in meters.items():
+            strange = [a.range_V for a in self._declared(name) if a.range_V not in meter.ranges_V]
+            if strange:
+                raise InputError(
+                    f"instruments.{name}.voltage declares range_V {strange[0]:g}, but its dialect "
+                    f"knows the ranges {', '.join(f'{r:g}' for r in meter.ranges_V)}"
+                )
+        for point, table in bench.points.items():
+            if table.instrument in meters:
+                self.expect(point, math.inf)
+                apertures = meters[table.instrument].apertures_nplc
+                if table.aperture_nplc not in apertures:
+                    raise InputError(
+                        f"points.{point}.aperture_nplc is {table.aperture_nplc:g}; the dialect of "
+                        f"{table.instrument} knows {', '.join(f'{a:g}' for a in apertures)}"
+                    )
+
+    def names(self) -> tuple[str, ...]:
+        """Which points this bench can read."""
+        return tuple(self._bench.points)
+
+    def expect(self, point: str, largest: float) -> None:
+        """Fix the smallest declared range that holds ``largest`` (the largest there is, else)."""
+        table = self._bench.points[point]  # type: ignore[index]  # names come from the bench file
+        volts = largest * (table.shunt_ohm or 1.0)
+        declared = sorted(self._declared(table.instrument), key=lambda a: a.range_V)
+        chosen = next((a for a in declared if a.range_V >= volts), declared[-1])
+        self._ranges[point] = Accuracy(chosen.range_V, chosen.reading_percent, chosen.range_percent)
+
+    def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
+        """One reading; overload and not-a-number become its status, never a value."""
+        table = self._bench.points[point]  # type: ignore[index]
+        if table.instrument in self._thermometers:
+            return self._temperature(point, time_s)
+        meter = self._meters[table.instrument]
+        accuracy = self._ranges[point]
+        nplc = table.aperture_nplc
+        if quick:
+            nplc = next((a for a in meter.apertures_nplc if a >= QUICK_NPLC), nplc)
+        meter.configure(table.route, accuracy.range, nplc)
+        status: Status = "ok"
+        volts = math.nan
+        try:
+            volts = meter.read(table.route)
+        except Overload:
+            status = "overload"
+        except NotANumber:
+            status = "invalid"
+        u = accuracy.standard_uncertainty(volts)
+        value = volts
+        if table.shunt_ohm is not None:
+            value, u = volts / table.shunt_ohm, u / table.shunt_ohm
+            u = math.hypot(u, value * table.shunt_tolerance_percent / 100 / math.sqrt(3))
+        return Reading(time_s, point, value, POINT_UNITS[point], u, accuracy.range, status)
+
+    def _temperature(self, point: str, time_s: float) -> Reading:
+        table = self._bench.points[point]  # type: ignore[index]
+        declared = self._bench.instruments[table.instrument].temperature
+        assert declared is not None
+        status: Status = "ok"
+        value = math.nan
+        try:
+            value = self._thermometers[table.instrument].read(table.route)
+        except NotANumber:
+            status = "invalid"
+        limits = Accuracy(100.0, declared.reading_percent, 0.0, declared.offset_K)
+        return Reading(time_s, point, value, "C", limits.standard_uncertainty(value), 0.0, status)
+
+    def _declared(self, instrument: str) -> list:  # type: ignore[type-arg]
+        return self._bench.instruments[instrument].voltage

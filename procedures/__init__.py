@@ -1,0 +1,1 @@
+"""What is done on the bench: one scripted procedure a file, and the command line."""

@@ -1,0 +1,133 @@
+"""A lot: every board in turn, resumable, and the lot's report."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+from benchkit.errors import BenchkitError, InputError, Tripped
+from benchkit.evaluation.evaluate import Evaluation, evaluate
+from benchkit.metrology import overall
+from benchkit.records.record import Record, read_json, read_record
+from benchkit.records.result import Verdict
+from benchkit.records.run_folder import write_json, write_text
+from instruments.bench import Bench
+from procedures.screen import Screen
+from procedures.verify import Done, Job, run_board
+
+COUNTED = ("finished", "tripped")
+"""Runs of these statuses stand; others are measured again on --resume."""
+
+
+@dataclass(frozen=True)
+class Lot:
+    """Where a lot is measured into."""
+
+    name: str
+    serials: Sequence[str]
+    folder: Path
+
+    def board(self, serial: str) -> Path:
+        """The run folder of a board."""
+        return self.folder / "boards" / serial
+
+
+def prepare(lot: Lot, *, resume: bool) -> list[str]:
+    """Return the serials still to do. InputError when the folder holds a lot and resume is off.
+
+    A run that was not finished is set aside under another name: its record stays, and does not
+    count.
+    """
+    boards = lot.folder / "boards"
+    if boards.exists() and not resume:
+        raise InputError(
+            f"{lot.folder}: holds a lot already; give --resume to go on with it, or another --out"
+        )
+    todo = []
+    for serial in lot.serials:
+        folder = lot.board(serial)
+        if folder.exists() and not _stands(folder):
+            number = 1
+            while (aside := folder.with_name(f"{serial}.unfinished-{number}")).exists():
+                number += 1
+            folder.rename(aside)
+        if not folder.exists():
+            todo.append(serial)
+    return todo
+
+
+def _stands(folder: Path) -> bool:
+    try:
+        return read_json(folder / "manifest.json").get("status") in COUNTED
+    except InputError:
+        return False
+
+
+def run_lot(
+    bench: Bench,
+    job: Job,
+    lot: Lot,
+    todo: Sequence[str],
+    screen: Screen,
+    told: Callable[[Done], None],
+) -> BenchkitError | None:
+    """Measure the boards of ``todo``; returns the error that ended the lot early, if any.
+
+    A board that trips a limit is a finding about that board: the lot goes on with the next. A
+    lost instrument, an operator's stop or an output that is not confirmed off ends the lot.
+    """
+    done = len(lot.serials) - len(todo)
+    with screen.progress(lot.name, len(lot.serials)):
+        for serial in todo:
+            screen.advance(done, f"{lot.name}: {serial}")
+            board = run_board(bench, job, serial, lot.board(serial), screen)
+            done += 1
+            told(board)
+            if board.error is not None and not isinstance(board.error, Tripped):
+                return board.error
+    return None
+
+
+def measured(lot: Lot) -> list[tuple[str, Record, Evaluation]]:
+    """Every board that stands, judged from its record, in the lot's order."""
+    found = []
+    for serial in lot.serials:
+        folder = lot.board(serial)
+        if folder.exists() and _stands(folder):
+            record = read_record(folder)
+            found.append((serial, record, evaluate(record, serial)))
+    return found
+
+
+def conclude(lot: Lot) -> tuple[dict[str, object], Verdict]:
+    """Write ``lot.json`` and ``lot.html`` from the records alone."""
+    from benchkit.reports.lot import lot_report
+
+    boards = measured(lot)
+    verdicts: dict[str, Verdict] = {serial: e.result.verdict for serial, _, e in boards}
+    missing = [serial for serial in lot.serials if serial not in verdicts]
+    verdict = overall([*verdicts.values(), *("undecided" for _ in missing)])
+    document: dict[str, object] = {
+        "schema": 1,
+        "lot": lot.name,
+        "verdict": verdict,
+        "planned": list(lot.serials),
+        "missing": missing,
+        "boards": [
+            {
+                "serial": serial,
+                "verdict": e.result.verdict,
+                "why": e.result.why,
+                "run": str(record.path.relative_to(lot.folder)),
+            }
+            for serial, record, e in boards
+        ],
+    }
+    write_json(lot.folder / "lot.json", document)
+    rows = [
+        (record, e, f"{record.path.relative_to(lot.folder).as_posix()}/report.html")
+        for _, record, e in boards
+    ]
+    write_text(lot.folder / "lot.html", lot_report(lot.name, rows, list(lot.serials)))
+    return document, verdict

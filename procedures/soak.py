@@ -1,0 +1,76 @@
+"""Soak: temperature against time at constant current, ended once the final rise is known."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from benchkit.evaluation.soak import heating_of, read_rest
+from benchkit.evaluation.sweep import drop_at, read_sweep
+from benchkit.files import BenchFile
+from benchkit.guard import Guard
+from benchkit.records.record import read_record
+from benchkit.records.run_folder import RunFolder
+from benchkit.stage import Stage
+from procedures.plan import Plan
+from procedures.screen import Screen
+
+LOOK_AT_FIT_S = 10.0
+
+
+def run_soak(
+    guard: Guard, stage: Stage, bench: BenchFile, plan: Plan, run: RunFolder, screen: Screen
+) -> None:
+    """Soak, unless the measured loss says that the part would get too hot."""
+    settings, heat = stage.file.soak, stage.file.heat
+    if settings is None or plan.soak is None:
+        return
+    record = read_record(run.path)
+    sweep = read_sweep(record)
+    if sweep is None:
+        return
+    nearest = min(sweep.targets, key=lambda a: abs(a - settings.current_A))
+    loss = drop_at(sweep, bench, nearest).drop_V / nearest * settings.current_A**2
+    forecast = sweep.ambient_C + heat.case_to_ambient_max_K_per_W * loss
+    if forecast > plan.soak_stop_C:
+        guard.remark(
+            "soak-skipped",
+            f"heat: the loss of {loss:.2g} W that the sweep measured could take the case to "
+            f"{forecast:.0f} C at {settings.current_A:g} A, beyond {plan.soak_stop_C:.0f} C, so "
+            "the soak was left out",
+        )
+        return
+    rest = read_rest(record)
+    times: list[float] = []
+    case: list[float] = []
+    ambient: list[float] = []
+    guard.step("soak")
+    with (
+        screen.progress("soak", settings.longest_s),
+        guard.energised(plan.soak, plan.cautions[0]) as live,
+    ):
+        live.read("ambient")
+        live.draw(settings.current_A)
+        began = guard.now()
+        guard.remark("soak-begins", f"{settings.current_A:g} A")
+        next_fit = 3 * LOOK_AT_FIT_S
+        while (age := guard.now() - began) < settings.longest_s:
+            live.wait(guard.ceilings.poll_s)
+            times.append(guard.now() - began)
+            case.append(guard.latest_case_C())
+            drop = live.read("drop").value
+            live.check_loss(drop, live.read("exposed_current").value)
+            ambient.append(live.read("ambient").value)
+            screen.advance(age)
+            if age >= next_fit:
+                next_fit = age + LOOK_AT_FIT_S
+                heating = heating_of(
+                    bench,
+                    np.array(times),
+                    np.array(case),
+                    np.array(ambient),
+                    rest,
+                    heat.time_constant_s,
+                )
+                if heating.known_within(settings.known_within_K):
+                    break
+        live.rest()

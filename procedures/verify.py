@@ -1,0 +1,155 @@
+"""One board: measure, judge from the record, report."""
+
+from __future__ import annotations
+
+import getpass
+import platform
+from collections.abc import Mapping
+from dataclasses import dataclass
+from importlib.metadata import PackageNotFoundError, version
+from pathlib import Path
+
+from benchkit.errors import BenchkitError, LinkError, NotConfirmedOff, Stopped, Tripped
+from benchkit.evaluation.evaluate import Evaluation, evaluate
+from benchkit.records.record import read_json, read_record
+from benchkit.records.run_folder import RunFolder, write_text
+from benchkit.stage import Stage
+from instruments.bench import Bench
+from procedures.plan import Plan
+from procedures.screen import Screen
+from procedures.soak import run_soak
+from procedures.sweep import read_rest, run_sweep
+
+PACKAGES = ("protection-benchkit", "numpy", "scipy", "pyvisa", "PyVISA-py", "matplotlib")
+
+
+@dataclass(frozen=True)
+class Done:
+    """A board that was measured, or as much of it as could be."""
+
+    folder: Path
+    evaluation: Evaluation
+    status: str
+    """finished, tripped, stopped or not-confirmed-off."""
+    error: BenchkitError | None
+
+
+@dataclass(frozen=True)
+class Job:
+    """What a run needs to know beside the bench."""
+
+    stage: Stage
+    plan: Plan
+    stage_path: Path
+    inputs: Mapping[str, Path]
+    """File name in ``inputs/`` and where it is copied from."""
+
+
+def run_board(bench: Bench, job: Job, serial: str, folder: Path, screen: Screen) -> Done:
+    """Measure one board into ``folder``, which must not exist yet.
+
+    Never raises for what stops a run: ``Done.error`` carries it, with the record closed.
+    """
+    error: BenchkitError | None = None
+    status = "finished"
+    with RunFolder(folder, job.inputs) as run:
+        bench.traffic.log = run.traffic
+        try:
+            try:
+                _measure(bench, job, serial, run, screen)
+            except LinkError as lost:
+                run.event("stopped", str(lost), error=type(lost).__name__)
+                bench.guard.make_safe(str(lost))
+                raise
+        except (Stopped, LinkError) as stopped:
+            error, status = stopped, _status(stopped)
+            if status != "not-confirmed-off" and not _told(folder, str(stopped)):
+                run.event("stopped", str(stopped), error=type(stopped).__name__)
+        finally:
+            bench.traffic.log = None
+        evaluation = evaluate(read_record(folder), serial)
+        run.close({"result.json": evaluation.result.document()}, _manifest(bench, serial, status))
+    write_report(folder, evaluation)
+    return Done(folder, evaluation, status, error)
+
+
+def _measure(bench: Bench, job: Job, serial: str, run: RunFolder, screen: Screen) -> None:
+    guard, file = bench.guard, bench.file
+    bench.fixture.place(serial, job.stage_path)
+    guard.restart_time(run)
+    guard.step("permissives")
+    guard.permit()
+    read_rest(guard)
+    guard.prove_polarity()
+    run_sweep(guard, job.stage.file, file, job.plan, screen)
+    run_soak(guard, job.stage, file, job.plan, run, screen)
+    guard.step("end")
+    guard.make_safe("end of run")
+
+
+def _status(error: BenchkitError) -> str:
+    if isinstance(error, NotConfirmedOff):
+        return "not-confirmed-off"
+    return "tripped" if isinstance(error, Tripped) else "stopped"
+
+
+def _told(folder: Path, text: str) -> bool:
+    return text in read_record(folder).said("stopped")
+
+
+def _manifest(bench: Bench, serial: str, status: str) -> dict[str, object]:
+    return {
+        "schema": 1,
+        "serial": serial,
+        "status": status,
+        "bench": bench.file.bench.name,
+        "operator": _operator(),
+        "clock": "simulated" if bench.file.is_simulated else "wall",
+        "versions": {"python": platform.python_version(), **_versions()},
+        "instruments": {
+            name: {
+                "identity": bench.identities[name],
+                "dialect": table.dialect,
+                "resource": table.resource,
+                "calibration_due": table.calibration_due.isoformat(),
+            }
+            for name, table in bench.file.instruments.items()
+        },
+    }
+
+
+def _versions() -> dict[str, str]:
+    found = {}
+    for package in PACKAGES:
+        try:
+            found[package] = version(package)
+        except PackageNotFoundError:
+            found[package] = "not installed as a package"
+    return found
+
+
+def _operator() -> str:
+    try:
+        return getpass.getuser()
+    except (OSError, KeyError):
+        return "unknown"
+
+
+def write_report(folder: Path, evaluation: Evaluation | None = None) -> Path:
+    """Build ``report.html`` from the record alone."""
+    from benchkit.reports.board import board_report
+
+    record, manifest = read_record(folder), read_json(folder / "manifest.json")
+    if evaluation is None:
+        evaluation = evaluate(record, str(manifest["serial"]))
+    path = folder / "report.html"
+    write_text(path, board_report(record, evaluation, manifest))
+    return path
+
+
+def free_folder(parent: Path, serial: str) -> Path:
+    """A folder for one more run of a serial: the first, or with the number of the retest."""
+    folder, number = parent / serial, 2
+    while folder.exists():
+        folder, number = parent / f"{serial}.retest-{number - 1}", number + 1
+    return folder
