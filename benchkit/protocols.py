@@ -78,6 +78,9 @@ class Points(Protocol):
     def expect(self, point: str, largest: float) -> None:
         """Choose the fixed range for the coming readings from the largest value expected."""
 
+    def recover(self, point: str) -> None:
+        """After a LinkError: make the instrument that reads a point usable again, if it can be."""
+
 
 class Clock(Protocol):
     """Bench time. On a simulated bench it may run faster than the wall's."""

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import dataclasses
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,13 +14,15 @@ from benchkit.circuit.network import Element
 from benchkit.errors import InputError
 from benchkit.files.parts import Diode, Part, PMosfet, Resistor
 from benchkit.files.stage import StageFile
-from benchkit.parts.diode import DiodeModel, diode_model
-from benchkit.parts.mosfet import MosfetModel, mosfet_model
+from benchkit.parts.diode import DiodeLaw, DiodeModel
+from benchkit.parts.diode_points import diode_model
+from benchkit.parts.mosfet import ChannelLaw, MosfetModel, mosfet_model
 from benchkit.parts.tolerance import between, scores
 from benchkit.topologies import TOPOLOGIES, Topology
 from benchkit.topologies.base import Law, MosfetLaws
 
 Floats = NDArray[np.float64]
+AnyLaw = TypeVar("AnyLaw", DiodeLaw, ChannelLaw)
 
 
 @dataclass(frozen=True)
@@ -146,15 +150,18 @@ def _model(reference: str, part: Part) -> DiodeModel | MosfetModel | Resistor:
 
 
 def _repeat(law: Law, times: int) -> Law:
-    """Repeat every array of a law (a dataclass, possibly of dataclasses) ``times`` times."""
-    import dataclasses
-
-    if dataclasses.is_dataclass(law):
-        changes = {
-            field.name: _repeat(value, times)
-            for field in dataclasses.fields(law)
-            if isinstance(value := getattr(law, field.name), np.ndarray)
-            or dataclasses.is_dataclass(value)
-        }
-        return dataclasses.replace(law, **changes)
+    """Each board of a law ``times`` times in a row."""
+    if isinstance(law, MosfetLaws):
+        return MosfetLaws(_each(law.channel, times), _each(law.body, times))
+    if isinstance(law, DiodeLaw):
+        return _each(law, times)
     return np.repeat(law, times) if isinstance(law, np.ndarray) else law
+
+
+def _each(law: AnyLaw, times: int) -> AnyLaw:
+    arrays: dict[str, Any] = {
+        key: np.repeat(value, times)
+        for key, value in vars(law).items()
+        if isinstance(value, np.ndarray)
+    }
+    return dataclasses.replace(law, **arrays)

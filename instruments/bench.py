@@ -12,6 +12,7 @@ from contextlib import AbstractContextManager, ExitStack, contextmanager, nullco
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from benchkit.errors import LinkError, NotConfirmedOff
 from benchkit.files.bench import BenchFile, Instrument
 from benchkit.guard import Ceilings, Guard
 from benchkit.protocols import Clock, Journal, Operator
@@ -106,10 +107,7 @@ def open_bench(
         ports: dict[str, int] = {}
         if file.is_simulated:
             ports = stack.enter_context(start_child(path)).ports
-        sessions = {
-            name: _open(stack, name, item, dialects[name].link, ports, traffic)
-            for name, item in file.instruments.items()
-        }
+        sessions = _open_all(stack, file, dialects, ports, traffic)
         control: Session | None = None
         clock: Clock = WallClock()
         fixture: Fixture = HandFixture(operator)
@@ -127,6 +125,44 @@ def open_bench(
         )
         identities = {name: session.identity for name, session in sessions.items()}
         yield Bench(file, guard, fixture, traffic, identities, control)
+
+
+def _open_all(
+    stack: ExitStack,
+    file: BenchFile,
+    dialects: dict[str, Dialect],
+    ports: dict[str, int],
+    traffic: Traffic,
+) -> dict[str, Session]:
+    """Open the supply first: if another instrument then fails, the output can still be put off.
+
+    When the supply itself cannot be reached nothing is known of its output, and the error says so
+    (NotConfirmedOff), even though this suite has switched nothing on.
+    """
+    supply, table = file.only("supply")
+    try:
+        sessions = {supply: _open(stack, supply, table, dialects[supply].link, ports, traffic)}
+    except LinkError as error:
+        raise NotConfirmedOff(
+            f"{error}\nNothing was switched on by this run, but the supply could not be asked: "
+            "see for yourself that its output is off"
+        ) from error
+    try:
+        for name, item in file.instruments.items():
+            if name not in sessions:
+                link = dialects[name].link
+                sessions[name] = _open(stack, name, item, link, ports, traffic)
+    except LinkError:
+        dialect = dialects[supply]
+        assert isinstance(dialect, SupplyDialect)
+        try:
+            ScpiSupply(sessions[supply], dialect, table.channel).disable()
+        except LinkError as error:
+            raise NotConfirmedOff(
+                f"the supply did not confirm that its output is off: {error}"
+            ) from error
+        raise
+    return sessions
 
 
 def _guard(

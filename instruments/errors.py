@@ -20,7 +20,7 @@ benchkit.errors.LinkError
 Errors of the layers below are translated into this tree once, in ``instruments/link.py``.
 """
 
-# ruff: noqa: N818  the names say what happened, as those of benchkit.errors do
+
 
 from __future__ import annotations
 

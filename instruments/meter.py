@@ -38,6 +38,11 @@ class ScpiMeter:
         """Close the session."""
         self._session.close()
 
+    def recover(self) -> None:
+        """Bring a session that is out of step back into it; nothing when it is in step."""
+        if self._session.out_of_step:
+            self._session.resynchronise()
+
     def configure(self, route: str | None, range_V: float, nplc: float) -> None:
         """DC volts on a fixed range with an aperture in power line cycles, both confirmed.
 

@@ -83,6 +83,11 @@ class BenchPoints:
             u = math.hypot(u, value * table.shunt_tolerance_percent / 100 / math.sqrt(3))
         return Reading(time_s, point, value, POINT_UNITS[point], u, accuracy.range, status)
 
+    def recover(self, point: str) -> None:
+        """Bring the instrument that reads a point back into step, if it is out of it."""
+        name = self._bench.points[point].instrument  # type: ignore[index]
+        (self._meters.get(name) or self._thermometers[name]).recover()
+
     def _temperature(self, point: str, time_s: float) -> Reading:
         table = self._bench.points[point]  # type: ignore[index]
         declared = self._bench.instruments[table.instrument].temperature

@@ -23,6 +23,11 @@ class ScpiThermometer:
         """Close the session."""
         self._session.close()
 
+    def recover(self) -> None:
+        """Bring a session that is out of step back into it; nothing when it is in step."""
+        if self._session.out_of_step:
+            self._session.resynchronise()
+
     def read(self, route: str | None) -> float:
         """One reading in degrees Celsius; raises NotANumber for an open sensor."""
         message = self._messages.get(route)

@@ -107,7 +107,8 @@ def conclude(lot: Lot) -> tuple[dict[str, object], Verdict]:
     boards = measured(lot)
     verdicts: dict[str, Verdict] = {serial: e.result.verdict for serial, _, e in boards}
     missing = [serial for serial in lot.serials if serial not in verdicts]
-    verdict = overall([*verdicts.values(), *("undecided" for _ in missing)])
+    owed: list[Verdict] = ["undecided" for _ in missing]
+    verdict = overall([*verdicts.values(), *owed])
     document: dict[str, object] = {
         "schema": 1,
         "lot": lot.name,

@@ -39,18 +39,14 @@ def runs_below(path: Path) -> list[Path]:
 
 def audit_runs(paths: list[Path], *, as_json: bool) -> int:
     """0 when every record is whole and says what its readings say; 1 otherwise."""
-    documents = []
-    for path in paths:
-        for run in runs_below(path):
-            differences = audit(run)
-            documents.append({"run": str(run), "differences": differences})
+    found = [(str(run), audit(run)) for path in paths for run in runs_below(path)]
     if as_json:
+        documents = [{"run": run, "differences": differences} for run, differences in found]
         json.dump(documents, sys.stdout, indent=1, ensure_ascii=False)
         sys.stdout.write("\n")
     else:
-        for document in documents:
-            differences = document["differences"]
-            sys.stdout.write(f"{document['run']}: {'whole' if not differences else 'DIFFERS'}\n")
+        for run, differences in found:
+            sys.stdout.write(f"{run}: {'DIFFERS' if differences else 'whole'}\n")
             for line in differences:
                 sys.stdout.write(f"  - {line}\n")
-    return int(any(document["differences"] for document in documents))
+    return int(any(differences for _, differences in found))

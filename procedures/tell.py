@@ -34,7 +34,7 @@ def tell_board(done: Done) -> None:
 
 
 def figures(result: Result) -> Table:
-    """The measurands as a table."""
+    """The measurands as a table, their conditions shortened: the report has them whole."""
     table = Table(box=None, padding=(0, 1), header_style="bold")
     table.add_column("figure")
     for head in ("measured", "± U", "promised", "limit"):
@@ -44,7 +44,7 @@ def figures(result: Result) -> Table:
     for m in result.measurands:
         value, spread = rounded(m.measured, m.U)
         table.add_row(
-            f"{m.name.replace('_', ' ')}, {m.condition}",
+            f"{m.name.replace('_', ' ')}, {m.condition.split(',')[0]}",
             value,
             spread,
             _promised(m),

@@ -19,11 +19,13 @@ Floats = NDArray[np.float64]
 CORNER_SHARE, CORNER_A = 0.02, 0.005
 
 
+ENDS = np.array([1.0, -1.0])
+BETWEEN = np.outer(ENDS, ENDS)
+
+
 def _branch(current: Floats, slope: Floats) -> tuple[Floats, Floats]:
     """Terminal currents and Jacobian of a two-terminal element of V(first) - V(second)."""
-    currents = np.stack([current, -current], axis=1)
-    row = np.stack([slope, -slope], axis=1)
-    return currents, np.stack([row, -row], axis=1)
+    return current[:, None] * ENDS, slope[:, None, None] * BETWEEN
 
 
 @dataclass(frozen=True)

@@ -16,6 +16,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -34,14 +35,14 @@ AIM = 1e-3 * TOLERANCE
 FLOOR_A = 1e-9
 """Where every branch carries less than this, residuals are compared with it instead."""
 STEP_V = 5.0
-"""Longest Newton step of a node, and about the first step of a transient."""
-PLAIN, TRANSIENT = 12, 300
-FORESEEN, CLOSELY = 0.5, 0.1
-"""A transient step stands where no more than this share of the residual was not foreseen; after
-one that was foreseen closely, the next may be GROWTH times as long."""
-GROWTH = 10.0
-SHRINK = 20.0
-AIMED = 0.25
+"""Longest Newton step of a node, and about the longest first step of a transient."""
+PLAIN, TRANSIENT = 16, 300
+"""Most iterations of each kind."""
+FORESEEN, AIMED = 0.5, 0.25
+"""A transient step stands where the correction that it calls for is at most this share of it, and
+the next one is made as long as should leave AIMED."""
+GROWTH, SHRINKAGE = 10.0, 20.0
+"""Bounds of the change from one step to the next."""
 ROUNDING = 8 * float(np.finfo(float).eps)
 
 
@@ -69,13 +70,12 @@ class Solution:
 class _State:
     """Voltages of the free nodes, and Kirchhoff's law there.
 
-    floor is what double precision leaves of the residual; share is ``Solution.residual``.
+    share is ``Solution.residual``.
     """
 
     x: Floats
     kirchhoff: Floats
     jacobian: Floats
-    floor: Floats
     share: Floats
 
     def but(self, which: Flags, other: _State) -> _State:
@@ -84,7 +84,6 @@ class _State:
         return _State(
             np.where(one, other.x, self.x), np.where(one, other.kirchhoff, self.kirchhoff),
             np.where(one[:, :, None], other.jacobian, self.jacobian),
-            np.where(one, other.floor, self.floor),
             np.where(which, other.share, self.share),
         )  # fmt: skip
 
@@ -128,9 +127,8 @@ class _Equations:
                 for b, column in enumerate(rows):
                     if column < count:
                         jacobian[:, row, column] += slopes[:, a, b]
-        floor *= ROUNDING
-        share = _beyond(kirchhoff, floor).max(axis=1, initial=0.0) / largest
-        return _State(x, kirchhoff, jacobian, floor, share)
+        beyond = np.maximum(np.abs(kirchhoff) - ROUNDING * floor, 0.0)
+        return _State(x, kirchhoff, jacobian, beyond.max(axis=1, initial=0.0) / largest)
 
 
 def solve(
@@ -149,10 +147,10 @@ def solve(
             x[:, column] = start[name]
     begun = equations.at(x)
     state, iterations = _newton(equations, begun)
-    lost = state.share > TOLERANCE
-    if lost.any():
-        more = _transient(equations, state.but(lost, begun), lost)
-        state, iterations = more[0], iterations + more[1]
+    settled = state.share <= TOLERANCE
+    if not settled.all():
+        state, more = _transient(equations, state.but(~settled, begun))
+        iterations += more
     volts = equations.padded(state.x)
     names = [*equations.free, *equations.held, GROUND]
     first = {e.name: e.currents(volts[:, rows])[0][:, 0] for e, rows in equations.elements}
@@ -171,59 +169,68 @@ def _newton(equations: _Equations, state: _State) -> tuple[_State, int]:
         moving = state.share > AIM
         if not moving.any():
             return state, iteration
-        step = np.clip(_step(state, np.zeros(moving.shape)), -STEP_V, STEP_V)
-        new = equations.at(state.x + step * moving[:, None])
-        # What is settled and no longer improves is at the end of double precision.
-        if ((new.share >= state.share) & (state.share <= TOLERANCE) | ~moving).all():
+        step = np.linalg.solve(_held(state.jacobian, 0.0), -state.kirchhoff[:, :, None])[:, :, 0]
+        new = equations.at(state.x + np.clip(step, -STEP_V, STEP_V) * moving[:, None])
+        # What is settled and improves no more is at the end of double precision.
+        if (~moving | ((new.share >= state.share) & (state.share <= TOLERANCE))).all():
             return state, iteration + 1
         state = new
     return state, PLAIN
 
 
-def _transient(equations: _Equations, state: _State, moving: Flags) -> tuple[_State, int]:
-    """Follow the ``moving`` entries until each is settled or time is up.
+def _transient(equations: _Equations, state: _State) -> tuple[_State, int]:
+    """Follow every entry that is not settled until it is, or until time is up.
 
-    An implicit Euler step of length h with capacitance C solves f(x + d) + (C/h) d = 0; here one
-    Newton step of it is taken, and what that leaves over tells whether it was too long.
+    An implicit Euler step of length h with a capacitance C solves f(x + d) + (C/h) d = 0; here one
+    Newton step of it is taken. The next Newton step of it, with the same Jacobian, is compared with
+    the first: a measure that does not mix microamperes with amperes, as the residual would
+    (Deuflhard, "Newton Methods for Nonlinear Problems", 2004: natural monotonicity test). It tells
+    whether the step was too long, and how long the next one may be.
     """
-    size = np.abs(state.kirchhoff).max(axis=1, initial=0.0)
-    damping = size / STEP_V
+    damping = _largest(state.kirchhoff) / STEP_V
+    moving = state.share > AIM
     for iteration in range(TRANSIENT):
-        moving = moving & (state.share > AIM)
         if not moving.any():
             return state, iteration
-        step = _step(state, damping) * moving[:, None]
-        new = equations.at(state.x + step)
-        known = _norm(_beyond(state.kirchhoff, state.floor))
-        missed = _norm(_beyond(new.kirchhoff + damping[:, None] * step, new.floor))
-        share = missed / np.maximum(known, 1e-300)
-        stands = share <= FORESEEN
-        longest = np.abs(step).max(axis=1, initial=0.0)
-        moving = moving & (stands | (state.share > TOLERANCE))
-        factor = np.clip(np.sqrt(AIMED / np.maximum(share, 1e-12)), 1/SHRINK, GROWTH)
-        damping = np.where(stands, damping, np.maximum(damping, known / np.maximum(longest, 1e-30))) / factor
-        state = state.but(moving & stands, new)
+        inverse = np.linalg.inv(_held(state.jacobian, damping))
+        step = _times(inverse, -state.kirchhoff)
+        new = equations.at(state.x + step * moving[:, None])
+        again = _times(inverse, -new.kirchhoff - damping[:, None] * step)
+        length = np.maximum(_largest(step), 1e-30)
+        missed = _largest(again) / length
+        stands = missed <= FORESEEN
+        wanted = np.sqrt(AIMED / np.maximum(missed, 1e-12))
+        # Where the circuit's own conductances are larger than the damping, it takes more than
+        # SHRINKAGE times the damping to shorten the step.
+        least = np.where(stands, 0.0, _largest(state.kirchhoff) / length)
+        damping = np.maximum(damping, least) / np.clip(
+            wanted, np.where(stands, 1.0, 1 / SHRINKAGE), GROWTH
+        )
+        improved = moving & stands
+        moving &= stands | ~(state.share <= TOLERANCE)
+        state = state.but(improved, new)
+        moving &= state.share > AIM
     return state, TRANSIENT
 
 
-def _step(state: _State, damping: Floats) -> Floats:
-    """The Newton step with a conductance more at every node, shape (batch, nodes).
+def _held(jacobian: Floats, damping: Floats | float) -> Floats:
+    """The Jacobian with a conductance more at every node.
 
     A few last bits are added to the diagonal, which is singular in double precision where a large
     conductance ties two nodes together and nothing else holds them.
     """
-    count = state.x.shape[1]
-    jacobian = state.jacobian.copy()
-    diagonal = jacobian[:, range(count), range(count)]
-    jacobian[:, range(count), range(count)] += ROUNDING * np.abs(diagonal) + damping[:, None]
-    step: Floats = np.linalg.solve(jacobian, -state.kirchhoff[:, :, None])[:, :, 0]
-    return step
+    nodes = range(jacobian.shape[1])
+    diagonal = jacobian[:, nodes, nodes]
+    held = jacobian.copy()
+    held[:, nodes, nodes] += ROUNDING * np.abs(diagonal) + np.reshape(damping, (-1, 1))
+    return held
 
 
-def _beyond(values: Floats, floor: Floats) -> Floats:
-    return np.maximum(np.abs(values) - floor, 0.0)
+def _times(matrix: NDArray[np.floating[Any]], vector: Floats) -> Floats:
+    product: Floats = (matrix @ vector[:, :, None])[:, :, 0]
+    return product
 
 
-def _norm(values: Floats) -> Floats:
-    norm: Floats = np.sqrt((values**2).sum(axis=1))
-    return norm
+def _largest(values: Floats) -> Floats:
+    largest: Floats = np.abs(values).max(axis=1, initial=0.0)
+    return largest

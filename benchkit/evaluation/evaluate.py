@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.evaluation.findings import findings_of
+from benchkit.evaluation.findings import remarks_of
 from benchkit.evaluation.hottest import Hottest, hottest
 from benchkit.evaluation.soak import Soak, read_soak
 from benchkit.evaluation.sweep import DropAt, Sweep, drop_at, read_sweep
@@ -49,8 +49,9 @@ def evaluate(record: Record, serial: str) -> Evaluation:
         *_drops(stage, drawn, drops),
         *_thermal(stage, drawn, soak if usable else None, extreme),
     ]
-    told = findings_of(record, stage, sweep, soak, extreme)
-    verdict, why = summary(measurands, told, stopped)
+    remarks = remarks_of(record, stage, sweep, drops, soak, extreme)
+    verdict, why = summary(measurands, remarks, stopped)
+    told = [remark.text for remark in remarks]
     result = Result(
         serial,
         record.stage.stage.name,

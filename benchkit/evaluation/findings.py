@@ -2,13 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal
+
 import numpy as np
 from numpy.typing import NDArray
 
 from benchkit.evaluation.hottest import Hottest
 from benchkit.evaluation.soak import Soak
 from benchkit.evaluation.sources import accuracy_of
-from benchkit.evaluation.sweep import Sweep
+from benchkit.evaluation.sweep import DropAt, Sweep
 from benchkit.fits.drop import diagnose
 from benchkit.metrology import Accuracy
 from benchkit.prediction.forward import forward
@@ -19,36 +23,99 @@ HEAT_SHARE = 0.02
 """Every sweep warms its part a little, and good meters see it: worth a sentence from here on."""
 
 
-def findings_of(
-    record: Record, stage: Stage, sweep: Sweep | None, soak: Soak | None, extreme: Hottest | None
-) -> list[str]:
-    """Plain sentences; empty when there is nothing to remark."""
+FAULTS = {"gate-not-driven", "shorted", "open"}
+DOUBTS = {"too-few"}
+
+Weight = Literal["fault", "doubt", "note"]
+
+
+@dataclass(frozen=True)
+class Remark:
+    """A sentence, and what it does to the verdict: a fault fails the run, a doubt keeps it from
+    passing whatever the limits say, a note is only told."""
+
+    weight: Weight
+    text: str
+
+
+def remarks_of(
+    record: Record,
+    stage: Stage,
+    sweep: Sweep | None,
+    drops: Sequence[DropAt],
+    soak: Soak | None,
+    extreme: Hottest | None,
+) -> list[Remark]:
+    """What a run's data mean, the gravest first; empty when there is nothing to remark."""
     kinds = ("found-on", "sweep-cut", "soak-skipped")
-    told = [text for kind in kinds for text in record.said(kind)]
+    told = [Remark("note", text) for kind in kinds for text in record.said(kind)]
     if sweep is not None:
         told += _of_sweep(record, stage, sweep)
+        told += _of_band(stage, drops)
     if soak is not None and not soak.heating.usable:
-        told.append(f"the soak does not say where the rise ends: {soak.heating.why}")
+        why = soak.heating.why
+        told.append(Remark("note", f"the soak does not say where the rise ends: {why}"))
     if soak is not None and extreme is not None and record.stage.soak is not None:
         reach = record.stage.soak.loss_reach
         if extreme.reach > reach:
             told.append(
-                f"the hottest case is extrapolated to {extreme.reach:.2g} times the measured loss, "
-                f"more than soak.loss_reach = {reach:g} allows; soak at a higher current"
+                Remark(
+                    "note",
+                    f"the hottest case is extrapolated to {extreme.reach:.2g} times the measured "
+                    f"loss, more than soak.loss_reach = {reach:g} allows; soak at a higher current",
+                )
             )
         if np.isnan(extreme.junction_C):
-            told.append("at the highest current and ambient this board would run away")
+            told.append(
+                Remark("fault", "at the highest current and ambient this board would run away")
+            )
+    order: list[Weight] = ["fault", "doubt", "note"]
+    return sorted(told, key=lambda remark: order.index(remark.weight))
+
+
+def _of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:
+    """Is this the part that the stage file says? Limits alone cannot tell: a short across a diode
+    meets every upper limit of its drop."""
+    lag = stage.main_part.junction_to_case_K_per_W
+    amps = np.array([d.current_A for d in drops])
+    junction = np.array([d.case_C + lag * d.drop_V * d.current_A for d in drops])
+    supply = stage.file.stage.supply_nominal_V
+    least, most = (
+        forward(stage, stage.corner(way), amps, supply, junction).drop_V[0] for way in (-1, 1)
+    )
+    told = []
+    for way, words, cause in (
+        (-1, "less than the least", "another part, or something conducting across it"),
+        (1, "more than the most", "another part, a dry joint, or a gate that is not fully driven"),
+    ):
+        outside = [
+            (d, float(edge))
+            for d, edge in zip(drops, least if way < 0 else most, strict=True)
+            if way * (d.drop_V - edge) > d.budget.expanded().U
+        ]
+        if outside:
+            drop, edge = max(outside, key=lambda pair: way * (pair[0].drop_V / pair[1]))
+            told.append(
+                Remark(
+                    "doubt",
+                    f"at {drop.current_A:g} A it drops {drop.drop_V:.4g} V, {words} that the "
+                    f"datasheets' tolerances allow ({edge:.4g} V): suspect {cause}",
+                )
+            )
     return told
 
 
-def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[str]:
+def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[Remark]:
     told = []
     for name, zero in (("drop", sweep.drop_zero), ("exposed_current", sweep.current_zero)):
         if not zero.used:
             told.append(
-                f"the zero of {name} reads {zero.value:.3g}, more than an offset of the meter can "
-                "be, or was not taken twice: it was not taken off, and the declared offset stays "
-                "in the uncertainty"
+                Remark(
+                    "note",
+                    f"the zero of {name} reads {zero.value:.3g}, more than an offset of the meter "
+                    "can be, or was not taken twice on the sweep's range: it was not taken off, "
+                    "and the declared offset stays in the uncertainty",
+                )
             )
     shunt = record.bench.points["exposed_current"].shunt_ohm or 1.0
     current = accuracy_of(record.bench, "exposed_current", sweep.current_range_V)
@@ -67,8 +134,17 @@ def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[str]:
         ),
         compliance_V=record.stage.stage.supply_nominal_V,
     )
-    warmed = _spread_share(sweep) > HEAT_SHARE
-    return told + [f.text for f in found if f.kind != "heat" or warmed]
+    # A part that is not what it should be is not asked whether it also warmed.
+    broken = {f.kind for f in found} & FAULTS
+    warmed = not broken and _spread_share(sweep) > HEAT_SHARE
+    for finding in found:
+        if finding.kind in ("heat", "drift") and not warmed:
+            continue
+        weight: Weight = "note"
+        if finding.kind in FAULTS | DOUBTS:
+            weight = "fault" if finding.kind in FAULTS else "doubt"
+        told.append(Remark(weight, finding.text))
+    return told
 
 
 def _spread_share(sweep: Sweep) -> float:

@@ -6,6 +6,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
+from benchkit.evaluation.findings import Remark
 from benchkit.metrology import Budget, Limit, Rule, judge, normalised_error, overall
 from benchkit.records.result import BudgetLine, Measurand, Verdict
 
@@ -83,33 +84,39 @@ def missing(
 
 
 def summary(
-    measurands: Sequence[Measurand], findings: Sequence[str], stopped: Sequence[str]
+    measurands: Sequence[Measurand], remarks: Sequence[Remark], stopped: Sequence[str]
 ) -> tuple[Verdict, list[str]]:
     """The run's verdict and the sentences that give its reason, the gravest first."""
     verdicts: list[Verdict] = [m.verdict for m in measurands if m.verdict is not None]
-    if stopped and "fail" not in verdicts:
-        verdicts.append("undecided")
-    verdict = overall(verdicts)
     why = [f"the run was stopped: {text}" for text in stopped]
+    if stopped:
+        verdicts.append("undecided")
+    for remark in remarks:
+        if remark.weight != "note":
+            verdicts.append("fail" if remark.weight == "fault" else "undecided")
+            why.append(remark.text)
     for m in sorted(measurands, key=lambda m: {"fail": 0, "undecided": 1}.get(m.verdict or "", 2)):
         if m.verdict in ("fail", "undecided"):
             why.append(_reason(m))
-    if not verdicts:
+    if not any(m.verdict for m in measurands):
+        verdicts.append("undecided")
         why.append("the stage file sets no limits, so there is nothing to pass")
+    verdict = overall(verdicts)
     if verdict == "pass":
         tightest = min((m for m in measurands if m.verdict == "pass"), key=_headroom)
         why.append(
             f"every limit is met, each by more than its uncertainty; the tightest is "
             f"{_spell(tightest)}"
         )
-    elif findings:
-        why += findings
+    else:
+        why += [remark.text for remark in remarks if remark.weight == "note"]
     return verdict, why
 
 
 def _reason(m: Measurand) -> str:
     if m.measured is None:
-        return f"{m.name} at {m.condition} is undecided: {m.remark or 'no figure could be given'}"
+        why = m.remark or "no figure could be given"
+        return f"{m.name.replace('_', ' ')} at {m.condition} is undecided: {why}"
     side = "misses" if m.verdict == "fail" else "is too close to"
     return f"{_spell(m)}: it {side} its limit"
 

@@ -46,7 +46,7 @@ class Instrument(FileModel):
     """How its answer to *IDN? must begin: maker and model."""
     channel: str | None = None
     calibration_due: dt.date
-    voltage: list[VoltageAccuracy] = []
+    voltage: list[VoltageAccuracy] = Field(default_factory=list)
     temperature: TemperatureAccuracy | None = None
 
     @model_validator(mode="after")
@@ -99,9 +99,9 @@ class Simulated(FileModel):
     """The stage in the fixture when `benchkit simulate` serves this bench."""
     serial: str = "SIM-1"
     ambient_C: Annotated[float, Field(ge=-40, le=80)] = 24.0
-    boards: dict[str, list[str]] = {}
+    boards: dict[str, list[str]] = Field(default_factory=dict)
     """Faults by serial, spelled name or name=value, e.g. "gate-open", "rds-on-scale=1.3"."""
-    faults: list[str] = []
+    faults: list[str] = Field(default_factory=list)
     """Faults of bench and link, spelled name@seconds or name=value@seconds."""
 
 
@@ -151,7 +151,7 @@ class BenchFile(FileModel):
             mistakes.append('a resource is "simulated", so a [simulated] table is needed')
         if invented and len(invented) < len(self.instruments):
             mistakes.append(
-                f"only {', '.join(invented)} has the resource \"simulated\": a bench is simulated "
+                f'only {", ".join(invented)} has the resource "simulated": a bench is simulated '
                 "as a whole or not at all"
             )
         if mistakes:

@@ -17,9 +17,7 @@ from benchkit.errors import InputError
 class FileModel(BaseModel):
     """Base of every table in a user's file: unknown keys are mistakes, values keep their type."""
 
-    model_config = ConfigDict(
-        extra="forbid", frozen=True, strict=True, allow_inf_nan=False
-    )
+    model_config = ConfigDict(extra="forbid", frozen=True, strict=True, allow_inf_nan=False)
 
 
 Model = TypeVar("Model", bound=FileModel)
@@ -56,68 +54,92 @@ def parse(model: type[Model], text: str, name: str) -> Model:
     raise InputError("\n".join(lines)) from None
 
 
+WANTED = {
+    "float_type": "it must be a number",
+    "int_type": "it must be a whole number",
+    "string_type": "it must be text in quotes",
+    "bool_type": "it must be true or false",
+    "list_type": "it must be a list: [ ... ]",
+    "model_type": "it must be a table of keys and values",
+    "model_attributes_type": "it must be a table of keys and values",
+    "dict_type": "it must be a table of keys and values",
+    "date_type": "it must be a date such as 2027-06-30, without quotes",
+}
+"""What is right, for a value of the wrong type."""
+
+
 def _mistakes(error: ValidationError, model: type[BaseModel], data: object) -> Iterator[str]:
     for item in error.errors(include_url=False):
-        where = [part for part in item["loc"] if _stands_in(part, item["loc"], data)]
-        key = _spell(where) or "the file"
         kind, context = item["type"], item.get("ctx", {})
+        path = _path(item["loc"], data, missing=kind == "missing")
+        key = _spell(path)
         if kind == "extra_forbidden":
-            yield f"{key} is not a key here" + _nearest(where, model, data)
+            yield f"{key} is not a key here" + _nearest(path, model, data)
         elif kind == "missing":
-            yield f"{_spell(list(item['loc']), data)} is missing"
-        elif kind in ("union_tag_invalid", "literal_error", "enum"):
-            expected = context.get("expected_tags") or context.get("expected")
-            tag = context.get("tag", item["input"])
-            name = key + ".kind" if kind == "union_tag_invalid" else key
-            yield f"{name} is {tag!r}, it must be one of {expected}"
+            yield f"{key} is missing"
         elif kind == "union_tag_not_found":
             yield f"{key}.kind is missing: it says what kind of part this is"
+        elif kind == "union_tag_invalid":
+            right = context["expected_tags"]
+            yield f"{key}.kind is {context['tag']!r}, it must be one of {right}"
+        elif kind == "literal_error":
+            yield f"{key} is {item['input']!r}, it must be {context['expected']}"
         elif kind == "value_error":
-            yield f"{key}: {context['error']}"
+            yield f"{key}: {context['error']}" if key else str(context["error"])
         else:
-            yield f"{key} is {item['input']!r}: {_plain(item['msg'])}"
+            plain = item["msg"].replace("Input should", "it must")
+            plain = plain[:1].lower() + plain[1:]
+            yield f"{key} is {_short(item['input'])}, {WANTED.get(kind, plain)}"
 
 
-def _plain(message: str) -> str:
-    return message[0].lower() + message[1:] if message else message
+def _short(value: object) -> str:
+    """A value as it may stand in a message: a whole table does not."""
+    if isinstance(value, Mapping):
+        return "a table"
+    text = str(value).lower() if isinstance(value, bool) else repr(value)
+    return text if len(text) <= 60 else "a list" if isinstance(value, list) else text[:60] + "..."
 
 
-def _stands_in(part: object, loc: tuple[int | str, ...], data: object) -> bool:
-    """Pydantic puts the tag of a union into the path; keep only what the file itself has."""
+def _path(loc: tuple[int | str, ...], data: object, *, missing: bool) -> list[int | str]:
+    """Pydantic's path of a mistake without the tags of unions, which the file does not have.
+
+    ``missing``: the last step is a key that the file should have had.
+    """
+    path: list[int | str] = []
     here: Any = data
-    for step in loc:
-        try:
-            nxt = here[step]
-        except (KeyError, IndexError, TypeError):
-            if step == part:
-                return step == loc[-1]
+    for number, step in enumerate(loc):
+        below = _below(here, step)
+        if below is not None:
+            here = below
+        elif not (missing and number == len(loc) - 1):
             continue
-        if step is part:
-            return True
-        here = nxt
-    return False
+        path.append(step)
+    return path
 
 
-def _spell(where: list[int | str], data: object = None) -> str:
+def _below(here: Any, step: int | str) -> Any:
+    """What stands under a key or index of a table or list; None when nothing does."""
+    if isinstance(here, Mapping):
+        return here.get(step)
+    if isinstance(here, list) and isinstance(step, int) and step < len(here):
+        return here[step]
+    return None
+
+
+def _spell(path: list[int | str]) -> str:
+    """A path as a person would name it: entries of a list are counted from one."""
     text = ""
-    here: Any = data
-    for number, part in enumerate(where):
-        if data is not None:
-            try:
-                here = here[part]
-            except (KeyError, IndexError, TypeError):
-                if number != len(where) - 1:
-                    continue
-        if isinstance(part, int):
-            text += f"[{part + 1}]"
+    for step in path:
+        if isinstance(step, int):
+            text += f"[{step + 1}]"
         else:
-            text += f".{part}" if text else part
+            text += f".{step}" if text else step
     return text
 
 
-def _nearest(where: list[int | str], model: type[BaseModel], data: object) -> str:
-    names = _fields_at(where[:-1], model, data)
-    near = difflib.get_close_matches(str(where[-1]), names, n=1, cutoff=0.5)
+def _nearest(path: list[int | str], model: type[BaseModel], data: object) -> str:
+    names = _fields_at(path[:-1], model, data)
+    near = difflib.get_close_matches(str(path[-1]), names, n=1, cutoff=0.5)
     if near:
         return f"; the nearest right one is {near[0]}"
     return f"; the keys here are {', '.join(sorted(names))}" if names else ""
@@ -131,10 +153,7 @@ def _fields_at(where: list[int | str], annotation: Any, data: Any) -> list[str]:
         tagged = [m for m in models if _tag(m) == tag] or models
         return [name for m in tagged for name in m.model_fields]
     step, rest = where[0], where[1:]
-    try:
-        below = data[step]
-    except (KeyError, IndexError, TypeError):
-        below = None
+    below = _below(data, step)
     for model in models:
         if isinstance(step, str) and step in model.model_fields:
             return _fields_at(rest, model.model_fields[step].annotation, below)

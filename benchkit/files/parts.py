@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from benchkit.files.loading import FileModel
 
@@ -51,13 +51,21 @@ class Diode(FileModel):
     kind: Literal["diode"]
     technology: Literal["schottky", "silicon"]
     forward: Annotated[list[ForwardPoint], Field(min_length=2)]
-    leakage: list[LeakagePoint] = []
+    leakage: list[LeakagePoint] = Field(default_factory=list)
     reverse_voltage_max_V: Positive
     average_current_max_A: Positive
     surge_current_max_A: Positive | None = None
-    surge_width_ms: Literal[8.3, 10.0] = 8.3
+    surge_width_ms: float = 8.3
+    """Width of the half-sine that the surge current is printed for: of 60 or of 50 Hz."""
     junction_max_C: Celsius
     junction_to_case_K_per_W: Positive
+
+    @field_validator("surge_width_ms")
+    @classmethod
+    def _half_sine(cls, width: float) -> float:
+        if width not in (8.3, 10.0):
+            raise ValueError(f"{width:g} must be 8.3 or 10, the half-sine of 60 or of 50 Hz")
+        return width
 
 
 class OnResistancePoint(FileModel):

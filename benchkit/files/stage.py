@@ -3,9 +3,10 @@ what is measured of it, and the limits it must meet."""
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Annotated, Literal
 
-from pydantic import Field, ValidationInfo, field_validator, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from benchkit.files.loading import FileModel
 from benchkit.files.parts import Part
@@ -73,7 +74,7 @@ class Sweep(FileModel):
     @field_validator("currents_A")
     @classmethod
     def _rising(cls, values: list[float]) -> list[float]:
-        for low, high in zip(values, values[1:], strict=False):
+        for low, high in pairwise(values):
             if high <= low:
                 raise ValueError(f"{high:g} follows {low:g}: the currents must rise")
         return values
@@ -100,7 +101,7 @@ class DropLimit(FileModel):
 class Limits(FileModel):
     """[limits]: what the built board must meet."""
 
-    drop: list[DropLimit] = []
+    drop: list[DropLimit] = Field(default_factory=list)
     case_max_C: Celsius | None = None
     junction_margin_min_K: Annotated[float, Field(ge=0)] | None = None
     rule: Literal["guarded", "simple"] = "guarded"
@@ -125,8 +126,7 @@ class StageFile(FileModel):
         return parts
 
     @model_validator(mode="after")
-    def _consistent(self, info: ValidationInfo) -> StageFile:
-        del info
+    def _consistent(self) -> StageFile:
         most = self.stage.current_max_A
         if self.sweep.currents_A[-1] > most:
             raise ValueError(

@@ -349,6 +349,7 @@ class Guard:
 
     def _discharged(self) -> str | None:
         """Wait for the exposed port to fall below RESIDUAL_V; a sentence when it does not."""
+        self._points.recover("exposed_voltage")
         began = self.clock.now()
         while True:
             reading = self.read("exposed_voltage", quick=True)

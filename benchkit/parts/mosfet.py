@@ -5,10 +5,11 @@
 
 (Enz, Krummenacher and Vittoz, "An analytical MOS transistor model valid in all regions of
 operation", 1995). It is symmetric in drain and source, so the third quadrant, where a pass switch
-works, needs no case of its own, and it passes smoothly through threshold. The gain factor b falls
-with (T/T0)^-1.5 (lattice scattering; Sze), the threshold by 2 mV/K (common practice, no source),
-and the series resistance, mostly that of the drift region, rises with a power of T that the
-sheet's hot on-resistance fixes.
+works, needs no case of its own, and it passes smoothly through threshold. Both the channel and the
+drift region behind it conduct by carriers whose mobility falls with a power of T (lattice
+scattering; Sze, Physics of Semiconductor Devices), so one exponent serves the gain factor b and the
+series resistance; the sheet's hot on-resistance fixes it. The threshold falls by 2 mV/K (common
+practice, no source).
 
 Voltages here are magnitudes, as for an N-channel part; the circuit mirrors them for a P-channel.
 Validity: on-resistance within its sheet's gate voltages; no avalanche, no velocity saturation.
@@ -16,25 +17,30 @@ Validity: on-resistance within its sheet's gate voltages; no avalanche, no veloc
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
 
 from benchkit.errors import InputError
-from benchkit.files.parts import PMosfet
-from benchkit.parts.diode import REFERENCE_C, ZERO_C, DiodeLaw, DiodeModel, junction_model
+from benchkit.files.parts import OnResistancePoint, PMosfet
+from benchkit.parts.diode import REFERENCE_C, ZERO_C, DiodeLaw, DiodeModel
 from benchkit.parts.diode import thermal_voltage as _vt
+from benchkit.parts.diode_points import junction_model
 from benchkit.parts.tolerance import between
 
 Floats = NDArray[np.float64]
 
 SLOPE_FACTOR = 1.2
 """n of the model: a usual value for a thick gate oxide; it matters below threshold only."""
-GAIN_EXPONENT = 1.5
 THRESHOLD_FALL_V_PER_K = 0.002
-SERIES_EXPONENT = 2.3
-"""Where no hot on-resistance is printed (lattice mobility of n-type silicon; Sze)."""
+EXPONENT = 1.8
+"""Where no hot on-resistance is printed: between 1.5, of acoustic phonons alone, and 2.2, measured
+for holes in pure silicon (Sze); it makes an on-resistance of 1.6 times at 125 C."""
+EXPONENTS = (0.3, 4.0)
+"""What a printed hot on-resistance may ask for and still be believed."""
 LEAST_SERIES_OHM = 1e-7
 
 
@@ -45,12 +51,13 @@ class ChannelLaw:
     gain_A_per_V2: Floats | float
     threshold_V: Floats | float
     series_ohm: Floats | float
-    series_exponent: float = SERIES_EXPONENT
+    exponent: float = EXPONENT
 
     def series(self, junction_C: Floats | float) -> Floats:
         """Series resistance in ohms at a junction temperature."""
         ratio = (np.asarray(junction_C, dtype=float) + ZERO_C) / (REFERENCE_C + ZERO_C)
-        return np.asarray(self.series_ohm) * ratio**self.series_exponent
+        ohms: Floats = np.asarray(self.series_ohm) * ratio**self.exponent
+        return ohms
 
     def current(
         self, gate_V: Floats, drain_V: Floats, junction_C: Floats | float
@@ -61,7 +68,7 @@ class ChannelLaw:
         """
         vt, n = _vt(junction_C), SLOPE_FACTOR
         ratio = (np.asarray(junction_C, dtype=float) + ZERO_C) / (REFERENCE_C + ZERO_C)
-        unit = 2 * n * np.asarray(self.gain_A_per_V2) * ratio**-GAIN_EXPONENT * vt**2
+        unit = 2 * n * np.asarray(self.gain_A_per_V2) * ratio**-self.exponent * vt**2
         threshold = self.threshold_V - THRESHOLD_FALL_V_PER_K * (
             np.asarray(junction_C, dtype=float) - REFERENCE_C
         )
@@ -107,7 +114,7 @@ class MosfetModel:
         threshold = between(threshold_score, self.threshold_min_V, middle, self.threshold_max_V)
         return ChannelLaw(
             self.typical.gain_A_per_V2 / scale, threshold,
-            self.typical.series_ohm * scale, self.typical.series_exponent,
+            self.typical.series_ohm * scale, self.typical.exponent,
         )  # fmt: skip
 
     def body_law(self, score: Floats) -> DiodeLaw:
@@ -125,12 +132,12 @@ def mosfet_model(reference: str, part: PMosfet) -> MosfetModel:
                   key=lambda p: p.gate_V)  # fmt: skip
     if len({p.gate_V for p in cold}) < 2:
         raise InputError(f"{name} needs points at two gate voltages or more at junction_C = 25")
-    for low, high in zip(cold, cold[1:], strict=False):
+    for low, high in pairwise(cold):
         if high.typ_ohm >= low.typ_ohm and high.gate_V > low.gate_V:
             raise InputError(
-                f"{name} contradicts itself: {high.typ_ohm:g} ohm at {high.gate_V:g} V is not below "
-                f"{low.typ_ohm:g} ohm at {low.gate_V:g} V; a channel's resistance falls with gate "
-                "voltage"
+                f"{name} contradicts itself: {high.typ_ohm:g} ohm at {high.gate_V:g} V is not "
+                f"below {low.typ_ohm:g} ohm at {low.gate_V:g} V; a channel's resistance falls "
+                "with gate voltage"
             )
     if cold[0].gate_V <= part.threshold.middle_V:
         raise InputError(
@@ -146,13 +153,13 @@ def mosfet_model(reference: str, part: PMosfet) -> MosfetModel:
         )
     notes = []
     law = ChannelLaw(gain, extrapolated, max(series, LEAST_SERIES_OHM))
-    hot = [p for p in part.on_resistance if p.junction_C > REFERENCE_C]
+    hot = [p for p in part.on_resistance if p.junction_C != REFERENCE_C]
     if hot:
-        law = _fit_hot(name, law, hot[0].gate_V, hot[0].current_A, hot[0].junction_C, hot[0].typ_ohm)
+        law = _fit_hot(name, law, hot)
     else:
         notes.append(
-            f"{reference}: no hot on-resistance is given; its drift region is taken to rise with "
-            f"temperature to the power {SERIES_EXPONENT:g}"
+            f"{reference}: no hot on-resistance is given; it is taken to rise with the absolute "
+            f"temperature to the power {EXPONENT:g}, by a factor of 1.6 or so at 125 C"
         )
     ratios = [p.max_ohm / p.typ_ohm for p in part.on_resistance if p.max_ohm]
     if not ratios:
@@ -165,7 +172,7 @@ def mosfet_model(reference: str, part: PMosfet) -> MosfetModel:
     )  # fmt: skip
 
 
-def _fit_cold(cold: list, part: PMosfet) -> tuple[float, float, float]:  # type: ignore[type-arg]
+def _fit_cold(cold: Sequence[OnResistancePoint], part: PMosfet) -> tuple[float, float, float]:
     """Gain, extrapolated threshold and series resistance, by fixed-point iteration.
 
     The printed threshold is where a few hundred microamperes flow, below the extrapolated
@@ -196,21 +203,28 @@ def _fit_cold(cold: list, part: PMosfet) -> tuple[float, float, float]:  # type:
     return gain, threshold, series
 
 
-def _fit_hot(
-    name: str, law: ChannelLaw, gate_V: float, current_A: float, junction_C: float, ohms: float
-) -> ChannelLaw:
-    bare = ChannelLaw(law.gain_A_per_V2, law.threshold_V, 0.0)
-    left = ohms - float(bare.on_resistance(gate_V, current_A, junction_C))
-    cold = float(law.on_resistance(gate_V, current_A))
-    if left <= 0 or ohms <= cold:
-        raise InputError(
-            f"{name} contradicts itself: {ohms:g} ohm at {junction_C:g} C does not fit "
-            f"{cold:.4g} ohm at 25 C; a channel's resistance rises with temperature, mostly by a "
-            "factor of 1.3 to 1.9 at 125 C"
-        )
-    ratio = (junction_C + ZERO_C) / (REFERENCE_C + ZERO_C)
-    exponent = float(np.log(left / float(law.series_ohm)) / np.log(ratio))
-    return ChannelLaw(law.gain_A_per_V2, law.threshold_V, law.series_ohm, exponent)
+def _fit_hot(name: str, law: ChannelLaw, points: Sequence[OnResistancePoint]) -> ChannelLaw:
+    """The exponent of temperature that meets the points away from 25 C, the mean of all."""
+    from scipy.optimize import brentq
+
+    found = []
+    for point in points:
+
+        def excess(exponent: float, point: OnResistancePoint = point) -> float:
+            warm = replace(law, exponent=exponent)
+            ohms = warm.on_resistance(point.gate_V, point.current_A, point.junction_C)
+            return float(ohms) - point.typ_ohm
+
+        low, high = (excess(end) for end in EXPONENTS)
+        if low * high > 0:
+            cold = float(law.on_resistance(point.gate_V, point.current_A))
+            raise InputError(
+                f"{name} contradicts itself: {point.typ_ohm:g} ohm at {point.junction_C:g} C does "
+                f"not fit {cold:.3g} ohm at 25 C; a channel's resistance rises with temperature, "
+                "mostly by a factor of 1.3 to 1.9 at 125 C"
+            )
+        found.append(brentq(excess, *EXPONENTS))
+    return replace(law, exponent=float(np.mean(found)))
 
 
 def _logistic(x: Floats) -> Floats:

@@ -90,7 +90,9 @@ def derating(
     loss = forward(stage, sample, amps, supply_V, junction_limit_C).loss_W
     whole = sample.case_to_ambient_K_per_W + stage.main_part.junction_to_case_K_per_W
     allowed = np.maximum(junction_limit_C - ambient_C, 0.0) / whole[:, None]
-    return np.stack([
-        np.interp(allowed[k], np.concatenate([[0.0], loss[k]]), np.concatenate([[0.0], amps]))
-        for k in range(sample.size)
-    ])
+    return np.stack(
+        [
+            np.interp(allowed[k], np.concatenate([[0.0], loss[k]]), np.concatenate([[0.0], amps]))
+            for k in range(sample.size)
+        ]
+    )

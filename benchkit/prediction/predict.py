@@ -95,9 +95,7 @@ def predict(stage: Stage, samples: int = SAMPLES, seed: int = SEED) -> Predictio
         )
         for k in range(amps.size)
     ]  # fmt: skip
-    hottest = working_point(
-        stage, drawn, working.current_max_A, supply, working.ambient_max_C
-    )
+    hottest = working_point(stage, drawn, working.current_max_A, supply, working.ambient_max_C)
     ambients = np.linspace(min(ambient, 25.0), stage.main_part.junction_max_C, 26)
     limit = stage.main_part.junction_max_C
     curve = derating(stage, stage.typical(), supply, ambients, limit)[0]

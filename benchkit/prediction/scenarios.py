@@ -15,7 +15,7 @@ from benchkit.circuit import GROUND, CurrentLoad, Network, Resistor, Solution, n
 from benchkit.circuit.network import Element
 from benchkit.files.parts import Diode, PMosfet
 from benchkit.files.parts import Resistor as ResistorPart
-from benchkit.prediction.heat import working_point
+from benchkit.prediction.heat import BEYOND_C, working_point
 from benchkit.stage import Sample, Stage
 from benchkit.topologies.base import EXPOSED, GUARDED
 
@@ -66,10 +66,10 @@ def scenario(stage: Stage, sample: Sample, name: str) -> Scenario:
     """Answer one scenario; ValueError for a name that is not in SCENARIOS."""
     working = stage.file.stage
     if name == "right-way":
-        point = working_point(
-            stage, sample, working.current_max_A, working.supply_max_V, working.ambient_max_C
-        )
-        junction = np.nan_to_num(point.junction_C[:, 0], nan=300.0)
+        # Both ends of the supply: a channel gets hottest where its gate is driven least.
+        ends = np.array([working.supply_min_V, working.supply_max_V])
+        point = working_point(stage, sample, working.current_max_A, ends, working.ambient_max_C)
+        junction = np.nan_to_num(point.junction_C, nan=BEYOND_C).max(axis=1)
         load: list[Element] = [CurrentLoad("load", (GUARDED, GROUND), working.current_max_A)]
         circuit = network([*stage.elements(sample, junction), *load],
                           held={EXPOSED: working.supply_max_V})  # fmt: skip
@@ -101,7 +101,7 @@ def _of(circuit: Network, reference: str) -> list[Element]:
     ]
 
 
-def _terminals(circuit: Network, solution: Solution, element: Element) -> tuple[Floats, Floats]:
+def _terminals(solution: Solution, element: Element) -> tuple[Floats, Floats]:
     volts = np.stack([solution.volts[node] for node in element.nodes], axis=1)
     return volts, element.currents(volts)[0]
 
@@ -110,7 +110,7 @@ def _into(circuit: Network, solution: Solution, node: str) -> Floats:
     """Current that the elements draw from a node."""
     total = np.zeros_like(solution.volts[node])
     for element in circuit.elements:
-        _, currents = _terminals(circuit, solution, element)
+        _, currents = _terminals(solution, element)
         for terminal, name in enumerate(element.nodes):
             if name == node:
                 total = total + currents[:, terminal]
@@ -122,13 +122,13 @@ def _across(circuit: Network, solution: Solution, reference: str) -> tuple[Float
     own = _of(circuit, reference)
     power = np.zeros(solution.residual.shape)
     for element in own:
-        volts, currents = _terminals(circuit, solution, element)
+        volts, currents = _terminals(solution, element)
         power = power + (volts * currents).sum(axis=1)
     if len(own) > 1:
         first, last = own[1].nodes[0], own[0].nodes[2]
         outside = own[1:2]
-        through = _terminals(circuit, solution, outside[0])[1][:, 0]
-        body = _terminals(circuit, solution, own[2])[1][:, 0]
+        through = _terminals(solution, outside[0])[1][:, 0]
+        body = _terminals(solution, own[2])[1][:, 0]
         through = through + np.where(own[2].nodes[0] == first, body, -body)
     else:
         first, last = own[0].nodes[0], own[0].nodes[-1]

@@ -22,7 +22,7 @@ from benchkit.reports.law import FittedLaw
 
 Floats = NDArray[np.float64]
 
-# The first six are Okabe and Ito's set, which stays apart for every kind of colour vision.
+# From the set of Okabe and Ito, which stays apart for every kind of colour vision; plum besides.
 BLUE, ORANGE, GREEN = "#0072B2", "#D55E00", "#009E73"
 SKY, AMBER, PURPLE = "#56B4E9", "#E69F00", "#882E72"
 INK, GREY, PALE = "#20262B", "#68727A", "#E3E6E8"
@@ -145,6 +145,9 @@ def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | N
                     markersize=4.0, markerfacecolor=colour if up else "white",
                 )  # fmt: skip
     _drop_limits(top, evaluation, junction)
+    if not junction:
+        most = float(sweep.current_A.max())
+        top.set_xlim(-0.03 * most, 1.05 * most)
     top.set_ylim(bottom=None if junction else min(0.0, float(sweep.drop_V.min())))
     top.set_title("Forward drop against current")
     top.set_ylabel("drop (V)")
@@ -172,7 +175,11 @@ def _drop_limits(top: Any, evaluation: Evaluation, junction: bool) -> None:
     """A short bar at each limit, with teeth on the side that is not allowed."""
     span = top.get_xlim()[1]
     label: str | None = "limit"
+    assert evaluation.sweep is not None
+    reached = evaluation.sweep.targets
     for limit in evaluation.stage.file.limits.drop:
+        if limit.current_A not in reached:
+            continue
         at = limit.current_A
         ends = (at / 1.12, at * 1.12) if junction else (at - 0.02 * span, at + 0.02 * span)
         top.plot(ends, (limit.max_V, limit.max_V), color=PURPLE, linewidth=2.2, label=label)
@@ -192,6 +199,7 @@ def _heat(top: Any, below: Any, soak: Soak) -> None:
     shown = slice(None, None, stride)
     end = float(t[-1]) or 1.0
     fine = np.linspace(0.0, 1.35 * end, 100)
+    top.plot(t[shown], rise[shown], ".", color=SKY, markersize=4.0, label="measured")
     if heating.relaxation is not None:
         curve, u = heating.curve(fine), heating.curve_u(fine)
         known = heating.usable
@@ -222,7 +230,6 @@ def _heat(top: Any, below: Any, soak: Soak) -> None:
             0.5, 0.5, "no curve was fitted, so there are no residuals", ha="center", va="center",
             transform=below.transAxes, color=GREY,
         )  # fmt: skip
-    top.plot(t[shown], rise[shown], ".", color=BLUE, markersize=3.2, label="measured")
     top.axvline(end, color=GREY, linewidth=0.8, linestyle=":")
     top.set_xlim(0.0, 1.35 * end)
     top.set_title(f"Case rise over ambient at {soak.current_A:g} A")
@@ -264,6 +271,3 @@ def thinned(count: int) -> int:
     return max(1, math.ceil(count / MOST_SAMPLES))
 
 
-def spelled(values: Sequence[str]) -> str:
-    """``a, b and c``."""
-    return " and ".join(filter(None, [", ".join(values[:-1]), *values[-1:]]))

@@ -2,17 +2,19 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from benchkit.evaluation.findings import junction_of, temperature_coefficient
+from benchkit.evaluation.sources import accuracy_of
 from benchkit.evaluation.sweep import Sweep
 from benchkit.evaluation.verdict import rounded
 from benchkit.fits.drop_laws import channel_conditions, diode_conditions, fit_channel, fit_diode
 from benchkit.fits.least_squares import Fit
-from benchkit.metrology import Accuracy
+from benchkit.metrology import Accuracy, Distribution
 from benchkit.parts.diode import DiodeModel
 from benchkit.records.record import Record
 from benchkit.stage import Stage
@@ -31,14 +33,13 @@ class FittedLaw:
     sentences: list[str]
 
 
-def fitted_law(
-    stage: Stage, sweep: Sweep, drop: Accuracy, current: Accuracy
-) -> FittedLaw | str:
-    """Fit the stage's law to every visit; a string says in words why none could be fitted.
-
-    drop, current: declared limits of error of the ranges used, current in amperes.
-    """
+def fitted_law(record: Record, stage: Stage, sweep: Sweep) -> FittedLaw | str:
+    """Fit the stage's law to every visit; a string says in words why none could be fitted."""
     amps, volts = sweep.current_A, sweep.drop_V
+    drop, current = _accuracies(record, sweep)
+    lead = "fixture inside the Kelvin taps"
+    common = {lead: record.bench.points["drop"].lead_tolerance_ohm * amps / math.sqrt(3)}
+    shapes: dict[str, Distribution] = {lead: "rectangular"}
     junction = junction_of(stage, sweep)
     noise = max(sweep.drop_zero.noise, 1e-7)
     order = np.argsort(amps)
@@ -48,7 +49,8 @@ def fitted_law(
             alpha = temperature_coefficient(stage)
             found = fit_channel(
                 amps, volts, junction, alpha_per_K=alpha, u_noise_V=noise, scale_noise=True,
-                drop_accuracy=drop, current_accuracy=current,
+                drop_accuracy=drop, current_accuracy=current, common=common,
+                distributions=shapes,
             )  # fmt: skip
             line = amps.max() * grid
             at = channel_conditions(line, np.interp(line, amps[order], junction[order]), alpha)
@@ -59,7 +61,8 @@ def fitted_law(
             gap, exponent = law.typical.bandgap_V, law.typical.exponent
             found = fit_diode(
                 amps, volts, junction, u_noise_V=noise, scale_noise=True, gap_eV=gap,
-                xti=exponent, drop_accuracy=drop, current_accuracy=current,
+                xti=exponent, drop_accuracy=drop, current_accuracy=current, common=common,
+                distributions=shapes,
             )  # fmt: skip
             line = np.geomspace(amps.min(), amps.max(), grid.size)
             at = diode_conditions(
@@ -85,10 +88,8 @@ def fitted_law(
     return FittedLaw(line, found.predict(at), found.residuals, sentences)
 
 
-def accuracies(record: Record, sweep: Sweep) -> tuple[Accuracy, Accuracy]:
+def _accuracies(record: Record, sweep: Sweep) -> tuple[Accuracy, Accuracy]:
     """Declared accuracy of the drop's range, and of the current's in amperes, shunt included."""
-    from benchkit.evaluation.sources import accuracy_of
-
     point = record.bench.points["exposed_current"]
     current = accuracy_of(record.bench, "exposed_current", sweep.current_range_V)
     return accuracy_of(record.bench, "drop", sweep.drop_range_V), Accuracy(
@@ -100,12 +101,12 @@ def accuracies(record: Record, sweep: Sweep) -> tuple[Accuracy, Accuracy]:
 def _value(found: Fit, name: str, scale: float) -> str:
     expanded = found.budget(name).expanded()
     value, spread = rounded(scale * found[name], scale * expanded.U)
-    return f"{value} ± {spread}"
+    return f"{value.replace('-', '−')} ± {spread}"
 
 
 def _channel_words(found: Fit) -> list[str]:
     return [
-        f"Fitted law: a resistance of {_value(found, 'R25_ohm', 1e3)} mohm at 25 °C that grows "
+        f"Fitted law: a resistance of {_value(found, 'R25_ohm', 1e3)} mΩ at 25 °C that grows "
         f"with temperature as the datasheet says, and {_value(found, 'V0_V', 1e3)} mV that would "
         "remain at no current (± U, 95 %)."
     ]
@@ -114,7 +115,7 @@ def _channel_words(found: Fit) -> list[str]:
 def _junction_words(found: Fit) -> list[str]:
     return [
         f"Fitted law: a junction of ideality {_value(found, 'n', 1.0)} with "
-        f"{_value(found, 'Rs_ohm', 1e3)} mohm in series and ln(Is / 1 A) = "
+        f"{_value(found, 'Rs_ohm', 1e3)} mΩ in series and ln(Is / 1 A) = "
         f"{_value(found, 'ln_Is', 1.0)} at 25 °C (± U, 95 %). The three lean on each other; the "
         "curve is known better than any of them."
     ]

@@ -11,7 +11,7 @@ from benchkit.records.result import Measurand
 
 NAMES = {
     "drop": "Forward drop",
-    "case_rise": "Case rise over ambient, at the end of the soak's curve",
+    "case_rise": "Final case rise over ambient",
     "thermal_resistance": "Thermal resistance",
     "case_hottest": "Case at the highest current and ambient",
     "junction_margin": "Junction margin at the highest current and ambient",
@@ -21,6 +21,7 @@ VERDICTS = {"pass": "PASS", "fail": "FAIL", "undecided": "UNDECIDED"}
 NONE = "–"
 
 _DEGREES = re.compile(r"(?<=\d) C(?![\w/])")
+_UNITS = re.compile(r"(?<=\d) (?=(?:[AVWKs]|mV|K/W|°C|%)(?!\w))")
 
 
 def named(name: str) -> str:
@@ -34,8 +35,8 @@ def unit_of(unit: str) -> str:
 
 
 def degrees(text: str) -> str:
-    """``25 C`` as ``25 °C``: the record keeps to plain letters."""
-    return _DEGREES.sub(" °C", text)
+    """``25 C`` as ``25 °C`` (the record keeps to plain letters), and no line break in between."""
+    return _UNITS.sub("\u00a0", _DEGREES.sub(" °C", text))
 
 
 def sentence(text: str) -> str:
@@ -93,25 +94,25 @@ def _places(spread: str) -> int | None:
 
 
 def _to(value: float, places: int | None) -> str:
-    # A promise is not worth more digits than four, however well it is measured.
+    # A promise is not worth more than three digits, however well it is measured.
     if places is None or value == 0 or not math.isfinite(value):
-        return f"{value:.4g}"
-    most = 3 - math.floor(math.log10(abs(value)))
+        return f"{value:.3g}"
+    most = 2 - math.floor(math.log10(abs(value)))
     return f"{value:.{max(0, min(places, most))}f}"
 
 
 def place_in_band(row: Measurand) -> str:
-    """Where in the datasheet band a board sits, in words."""
+    """Where in the datasheet band a board sits: 0 % at its lower end, 100 % at its upper."""
     if row.predicted is None or row.measured is None:
         return ""
     low, high = row.predicted["low"], row.predicted["high"]
     if row.measured < low:
-        return "below the band"
+        return "below"
     if row.measured > high:
-        return "above the band"
+        return "above"
     if high <= low:
-        return "within the band"
-    return f"{100 * (row.measured - low) / (high - low):.0f} % of the band"
+        return "within"
+    return f"{100 * (row.measured - low) / (high - low):.0f} %"
 
 
 @dataclass(frozen=True)
@@ -161,6 +162,13 @@ def strip_of(row: Measurand) -> Strip | None:
 
 def _limits(row: Measurand) -> list[float]:
     return [bound for bound in row.limit.values() if bound is not None]
+
+
+def plain(value: float, digits: int = 3) -> str:
+    """Significant digits without an exponent, which few read at a glance."""
+    if value == 0 or not math.isfinite(value):
+        return f"{value:g}"
+    return f"{value:.{max(0, min(6, digits - 1 - math.floor(math.log10(abs(value)))))}f}"
 
 
 def scaled(unit: str, size: float) -> tuple[float, str]:

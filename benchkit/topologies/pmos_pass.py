@@ -20,6 +20,7 @@ from typing import Literal
 
 from benchkit.circuit import GROUND, Resistor
 from benchkit.circuit.network import Element
+from benchkit.parts.diode import DiodeLaw
 from benchkit.topologies.base import EXPOSED, GUARDED, Floats, Law, MosfetLaws, mosfet
 
 
@@ -41,7 +42,7 @@ class PmosPass:
         law = laws[reference]
         assert isinstance(law, MosfetLaws)
         ohms = laws[names["gate"]] if "gate" in names else 100.0
-        assert not isinstance(ohms, MosfetLaws) and not hasattr(ohms, "saturation_A")
+        assert not isinstance(ohms, MosfetLaws | DiodeLaw)
         return [
             *mosfet(reference, (EXPOSED, "gate", GUARDED), law, junction_C, polarity=-1),
             Resistor(names.get("gate", "gate-lead"), ("gate", GROUND), ohms),

@@ -1,0 +1,196 @@
+"""A scripted bench for the guard: no sockets, no simulated plant, just what a test tells it."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Callable
+from contextlib import AbstractContextManager, nullcontext
+from dataclasses import dataclass, field
+
+from benchkit.errors import LinkError
+from benchkit.guard import Ceilings, Guard
+from benchkit.protocols import Protection, SupplyState
+from benchkit.reading import POINT_UNITS, Reading, Status
+
+TODAY = dt.date(2026, 11, 5)
+
+
+@dataclass
+class World:
+    """What is true, and what goes wrong."""
+
+    time_s: float = 0.0
+    on: bool = False
+    volts: float = 0.0
+    limit_A: float = 0.0
+    load_A: float = 0.0
+    case_C: float = 25.0
+    ambient_C: float = 25.0
+    said: list[str] = field(default_factory=list)
+    stuck: bool = False
+    lying: bool = False
+    deaf: bool = False
+    meter_dead: bool = False
+    wrong_levels: bool = False
+    tripped: bool = False
+    polarity: int = 1
+    residual_V: float = 0.0
+    sensor_lost: bool = False
+    lead_off: bool = False
+    heating_K_per_s: float = 0.0
+
+    def port_V(self) -> float:
+        return self.polarity * self.volts if self.on else self.residual_V
+
+    def pass_time(self, seconds: float) -> None:
+        self.time_s += seconds
+        if self.on:
+            self.case_C += self.heating_K_per_s * seconds
+
+
+@dataclass
+class StandInSupply:
+    world: World
+    role: str = "supply"
+
+    def _heard(self, what: str) -> None:
+        self.world.said.append(what)
+        if self.world.deaf:
+            raise LinkError("supply: no answer")
+
+    def program(self, voltage_V: float, current_A: float) -> None:
+        self._heard(f"program {voltage_V:g} {current_A:g}")
+        self.world.volts, self.world.limit_A = voltage_V, current_A
+
+    def protect(self, protection: Protection) -> Protection:
+        self._heard("protect")
+        if self.world.wrong_levels:
+            return Protection(60.0, protection.over_current_A)
+        return protection
+
+    def enable(self) -> None:
+        self._heard("on")
+        self.world.on = True
+
+    def disable(self) -> None:
+        self.world.said.append("off")
+        if not self.world.stuck:
+            self.world.on = False
+        if self.world.deaf:
+            raise LinkError("supply: no answer")
+        if self.world.stuck and not self.world.lying:
+            raise LinkError("supply: output reads back as on")
+
+    def state(self) -> SupplyState:
+        self._heard("state")
+        w = self.world
+        amps = min(w.load_A, w.limit_A) if w.on else 0.0
+        return SupplyState(w.on, w.volts if w.on else 0.0, amps, w.load_A > w.limit_A, w.tripped)
+
+
+@dataclass
+class StandInLoad:
+    world: World
+    role: str = "load"
+
+    def draw(self, current_A: float) -> None:
+        self.world.said.append(f"draw {current_A:g}")
+        self.world.load_A = current_A
+
+    def release(self) -> None:
+        self.world.said.append("release")
+        self.world.load_A = 0.0
+
+
+@dataclass
+class StandInPoints:
+    world: World
+
+    def names(self) -> tuple[str, ...]:
+        return tuple(POINT_UNITS)
+
+    def expect(self, point: str, largest: float) -> None:
+        self.world.said.append(f"expect {point} {largest:g}")
+
+    def recover(self, point: str) -> None:
+        self.world.said.append(f"recover {point}")
+
+    def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
+        del quick
+        w = self.world
+        if w.meter_dead and point not in ("case", "ambient"):
+            raise LinkError("meter: connection closed")
+        values = {
+            "exposed_voltage": w.port_V(),
+            "guarded_voltage": w.port_V() - 0.02 * w.load_A,
+            "drop": 0.4 if w.lead_off else 0.02 * w.load_A,
+            "exposed_current": w.load_A,
+            "case": w.case_C,
+            "ambient": w.ambient_C,
+        }
+        status: Status = "invalid" if w.sensor_lost and point == "case" else "ok"
+        return Reading(time_s, point, values[point], POINT_UNITS[point], 0.001, 10.0, status)
+
+
+@dataclass
+class StandInClock:
+    world: World
+
+    def now(self) -> float:
+        return self.world.time_s
+
+    def sleep(self, seconds: float) -> None:
+        self.world.pass_time(seconds)
+
+
+@dataclass
+class StandInOperator:
+    answer: bool = True
+
+    def acknowledge(self, caution: str) -> bool:
+        del caution
+        return self.answer
+
+    def instruct(self, text: str) -> bool:
+        del text
+        return self.answer
+
+
+@dataclass
+class Notes:
+    """A journal in memory."""
+
+    readings: list[tuple[str, Reading]] = field(default_factory=list)
+    events: list[tuple[str, str]] = field(default_factory=list)
+
+    def reading(self, step: str, reading: Reading) -> None:
+        self.readings.append((step, reading))
+
+    def event(self, kind: str, text: str, **facts: object) -> None:
+        del facts
+        self.events.append((kind, text))
+
+    def kinds(self) -> list[str]:
+        return [kind for kind, _ in self.events]
+
+
+def guard_of(
+    world: World,
+    notes: Notes | None = None,
+    *,
+    due: dt.date = dt.date(2027, 1, 1),
+    operator: StandInOperator | None = None,
+    shield: Callable[[], AbstractContextManager[None]] = nullcontext,
+) -> Guard:
+    return Guard(
+        StandInSupply(world),
+        StandInLoad(world),
+        StandInPoints(world),
+        StandInClock(world),
+        operator or StandInOperator(),
+        notes if notes is not None else Notes(),
+        Ceilings(voltage_max_V=30, current_max_A=10, power_max_W=200, case_max_C=110, poll_s=1.0),
+        {"meter": due},
+        TODAY,
+        shield=shield,
+    )
