@@ -88,8 +88,8 @@ class Clock(Protocol):
     def now(self) -> float:
         """Seconds since an arbitrary start, monotonic."""
 
-    def sleep(self, seconds: float) -> None:
-        """Let bench time pass."""
+    def sleep(self, seconds: float) -> float:
+        """Let bench time pass; returns ``now()`` of the moment after."""
 
 
 class Operator(Protocol):

@@ -15,9 +15,10 @@ class WallClock:
         """Seconds since an arbitrary start."""
         return time.monotonic()
 
-    def sleep(self, seconds: float) -> None:
-        """Wait."""
+    def sleep(self, seconds: float) -> float:
+        """Wait; returns the time then."""
         time.sleep(seconds)
+        return time.monotonic()
 
 
 class SimulatedClock:
@@ -30,6 +31,6 @@ class SimulatedClock:
         """Seconds of the simulated bench."""
         return self._session.ask_number(":SIM:TIME?")
 
-    def sleep(self, seconds: float) -> None:
-        """Let simulated time pass."""
-        self._session.set(f":SIM:TIME:ADV {format_number(seconds)}")
+    def sleep(self, seconds: float) -> float:
+        """Let simulated time pass; returns the time then, in the same round trip."""
+        return self._session.ask_number(f":SIM:TIME:ADV {format_number(seconds)};:SIM:TIME?")

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import multiprocessing
+import signal
 from collections.abc import Callable, Sequence
+from concurrent.futures import Future, ProcessPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -14,7 +17,7 @@ from benchkit.records.result import Verdict
 from benchkit.records.run_folder import write_json, write_text
 from instruments.bench import Bench
 from procedures.screen import Screen
-from procedures.verify import Done, Job, run_board
+from procedures.verify import Done, Job, run_board, write_report
 
 COUNTED = ("finished", "tripped")
 """Runs of these statuses stand; others are measured again on --resume."""
@@ -64,6 +67,34 @@ def _stands(folder: Path) -> bool:
         return False
 
 
+class _Reports:
+    """Draws board reports in a process of its own, while the next board is being measured."""
+
+    def __init__(self) -> None:
+        context = multiprocessing.get_context("spawn")
+        self._pool = ProcessPoolExecutor(1, context, _leave_signals_alone)
+        self._waiting: list[Future[Path]] = []
+
+    def order(self, folder: Path) -> None:
+        """Have a run's report drawn."""
+        self._waiting.append(self._pool.submit(write_report, folder))
+
+    def __enter__(self) -> _Reports:
+        return self
+
+    def __exit__(self, *error: object) -> None:
+        """Wait for the last report; what went wrong with one comes out here."""
+        self._pool.shutdown(wait=True)
+        if error[0] is None:
+            for future in self._waiting:
+                future.result()
+
+
+def _leave_signals_alone() -> None:
+    """Ctrl-C at the terminal reaches every process: the one that measures answers it."""
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+
 def run_lot(
     bench: Bench,
     job: Job,
@@ -78,10 +109,11 @@ def run_lot(
     lost instrument, an operator's stop or an output that is not confirmed off ends the lot.
     """
     done = len(lot.serials) - len(todo)
-    with screen.progress(lot.name, len(lot.serials)):
+    with screen.progress(lot.name, len(lot.serials)), _Reports() as reports:
         for serial in todo:
             screen.advance(done, f"{lot.name}: {serial}")
             board = run_board(bench, job, serial, lot.board(serial), screen)
+            reports.order(board.folder)
             done += 1
             told(board)
             if board.error is not None and not isinstance(board.error, Tripped):

@@ -20,7 +20,7 @@ from procedures.operators import ConsoleOperator, SimulatedOperator
 from procedures.plan import Plan
 from procedures.screen import Screen
 from procedures.tell import tell_board, tell_lot
-from procedures.verify import Done, free_folder, run_board
+from procedures.verify import Done, free_folder, run_board, write_report
 
 CODES = {"pass": 0, "fail": 1, "undecided": 1}
 
@@ -68,6 +68,7 @@ def verify_board(
     folder = free_folder(out or Path("runs"), serial)
     with opened(inputs, screen) as bench:
         done = run_board(bench, inputs.job, serial, folder, screen)
+    write_report(done.folder, done.evaluation)
     if as_json:
         _print_json(done.evaluation.result.document())
     else:

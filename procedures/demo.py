@@ -13,7 +13,7 @@ from procedures.inputs import read_board, read_lot
 from procedures.screen import Screen
 from procedures.starters import place_starters
 from procedures.tell import tell_board, tell_lot
-from procedures.verify import run_board
+from procedures.verify import run_board, write_report
 
 DIODE_SERIAL = "TG-0042"
 
@@ -39,6 +39,7 @@ def run_demo(out: Path, seed: int | None) -> int:
     diode = read_board(files / "stage-diode.toml", files / "bench.toml")
     with opened(diode, screen) as bench:
         board = run_board(bench, diode.job, DIODE_SERIAL, out / DIODE_SERIAL, screen)
+    write_report(board.folder, board.evaluation)
     console = Console(highlight=False, soft_wrap=True)
     tell_lot(lot, document)
     console.print()

@@ -20,7 +20,7 @@ def read_rest(guard: Guard) -> None:
     for _ in range(REST_READINGS):
         guard.read("case")
         guard.read("ambient")
-        guard.clock.sleep(REST_GAP_S)
+        guard.sleep(REST_GAP_S)
 
 
 def read_zeros(guard: Guard, when: str, largest_drop_V: float, largest_A: float) -> None:
@@ -30,7 +30,7 @@ def read_zeros(guard: Guard, when: str, largest_drop_V: float, largest_A: float)
     while max(abs(guard.read(p).value) for p in ("exposed_voltage", "guarded_voltage")) > ZERO_V:
         if guard.now() - began > DISCHARGE_S:
             break  # the evaluation sees zeros that are none, and does not use them
-        guard.clock.sleep(0.1)
+        guard.sleep(0.1)
     guard.step(f"zero/{when}")
     guard.expect("drop", largest_drop_V)
     guard.expect("exposed_current", largest_A)

@@ -46,7 +46,7 @@ class Job:
 
 
 def run_board(bench: Bench, job: Job, serial: str, folder: Path, screen: Screen) -> Done:
-    """Measure one board into ``folder``, which must not exist yet.
+    """Measure one board into ``folder``, which must not exist yet. Its report is yet to be drawn.
 
     Never raises for what stops a run: ``Done.error`` carries it, with the record closed.
     """
@@ -69,7 +69,6 @@ def run_board(bench: Bench, job: Job, serial: str, folder: Path, screen: Screen)
             bench.traffic.log = None
         evaluation = evaluate(read_record(folder), serial)
         run.close({"result.json": evaluation.result.document()}, _manifest(bench, serial, status))
-    write_report(folder, evaluation)
     return Done(folder, evaluation, status, error)
 
 

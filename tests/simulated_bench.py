@@ -14,7 +14,7 @@ from procedures.commands import opened
 from procedures.inputs import BoardInputs, read_board
 from procedures.screen import Screen
 from procedures.starters import place_starters
-from procedures.verify import Done, run_board
+from procedures.verify import Done, run_board, write_report
 
 GOOD, UNDRIVEN, MARGINAL = "TG-0101", "TG-0106", "TG-0111"
 QUICK = {"identify_s": 0.5, "set_s": 0.5, "read_s": 0.5, "slow_s": 1.0, "open_s": 1.0}
@@ -53,7 +53,9 @@ def measure(
     """One board on the simulated bench, in this process but over its sockets."""
     inputs, screen = inputs_of(folder, stage), Screen(quiet=True)
     with opened(inputs, screen) as bench:
-        return run_board(bench, inputs.job, serial, folder / run, screen), bench
+        done = run_board(bench, inputs.job, serial, folder / run, screen)
+    write_report(done.folder, done.evaluation)
+    return done, bench
 
 
 def failure(done: Done) -> BenchkitError:

@@ -139,8 +139,9 @@ class StandInClock:
     def now(self) -> float:
         return self.world.time_s
 
-    def sleep(self, seconds: float) -> None:
+    def sleep(self, seconds: float) -> float:
         self.world.pass_time(seconds)
+        return self.world.time_s
 
 
 @dataclass

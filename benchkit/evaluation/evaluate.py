@@ -6,21 +6,16 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from benchkit.evaluation.findings import remarks_of
 from benchkit.evaluation.hottest import Hottest, hottest
+from benchkit.evaluation.promised import Promised, promised
 from benchkit.evaluation.soak import Soak, read_soak
 from benchkit.evaluation.sweep import DropAt, Sweep, drop_at, read_sweep
 from benchkit.evaluation.verdict import Promise, judged, missing, summary
-from benchkit.prediction.forward import forward
-from benchkit.prediction.heat import working_point
-from benchkit.prediction.predict import BAND_PERCENT, SAMPLES, SEED
 from benchkit.records.record import Record
 from benchkit.records.result import Measurand, Result
-from benchkit.stage import Sample, Stage, build_stage
-
-Floats = NDArray[np.float64]
+from benchkit.stage import Stage
 
 
 @dataclass(frozen=True)
@@ -37,8 +32,8 @@ class Evaluation:
 
 def evaluate(record: Record, serial: str) -> Evaluation:
     """Work out every figure and verdict of a run."""
-    stage = build_stage(record.stage, str(record.path / "inputs" / "stage.toml"))
-    drawn = stage.draw(SAMPLES, SEED)
+    promise = promised(record)
+    stage = promise.stage
     stopped = record.said("stopped")
     sweep = read_sweep(record)
     drops = [drop_at(sweep, record.bench, t) for t in sweep.targets] if sweep else []
@@ -46,12 +41,11 @@ def evaluate(record: Record, serial: str) -> Evaluation:
     usable = soak is not None and soak.heating.usable
     extreme = hottest(stage, soak, drops[-1]) if soak is not None and usable and drops else None
     measurands = [
-        *_drops(stage, drawn, drops),
-        *_thermal(stage, drawn, soak if usable else None, extreme),
+        *_drops(promise, drops),
+        *_thermal(promise, soak if usable else None, extreme),
     ]
     remarks = remarks_of(record, stage, sweep, drops, soak, extreme)
     verdict, why = summary(measurands, remarks, stopped)
-    told = [remark.text for remark in remarks]
     result = Result(
         serial,
         record.stage.stage.name,
@@ -59,35 +53,32 @@ def evaluate(record: Record, serial: str) -> Evaluation:
         verdict,
         why,
         measurands,
-        told,
+        [remark.text for remark in remarks],
         _not_tested(record),
     )
     return Evaluation(result, stage, sweep, drops, soak, extreme)
 
 
-def _drops(stage: Stage, drawn: Sample, drops: list[DropAt]) -> Iterator[Measurand]:
+def _drops(promise: Promised, drops: list[DropAt]) -> Iterator[Measurand]:
     """Drop at every current that was reached, and every limit that was not."""
+    stage = promise.stage
     limits = {limit.current_A: limit.max_V for limit in stage.file.limits.drop}
-    rule = stage.file.limits.rule
     supply = stage.file.stage.supply_nominal_V
     lag = stage.main_part.junction_to_case_K_per_W
-    amps = np.array([d.current_A for d in drops])
-    junction = np.array([d.case_C + lag * d.drop_V * d.current_A for d in drops])
     if drops:
-        band = forward(stage, drawn, amps, supply, junction).drop_V
-        typical = forward(stage, stage.typical(), amps, supply, junction).drop_V[0]
-        low, high = np.percentile(band, BAND_PERCENT, axis=0)
-        for k, drop in enumerate(drops):
+        amps = np.array([d.current_A for d in drops])
+        junction = np.array([d.case_C + lag * d.drop_V * d.current_A for d in drops])
+        for drop, band in zip(drops, promise.drops(amps, junction), strict=True):
             yield judged(
                 "drop",
                 "V",
                 f"{drop.current_A:g} A, {supply:g} V supply, case at {drop.case_C:.1f} C",
                 drop.drop_V,
                 drop.budget,
-                Promise(float(typical[k]), float(low[k]), float(high[k])),
+                band,
                 None,
                 limits.get(drop.current_A),
-                rule,
+                stage.file.limits.rule,
             )
     reached = {d.current_A for d in drops}
     for current, most in limits.items():
@@ -102,13 +93,10 @@ def _drops(stage: Stage, drawn: Sample, drops: list[DropAt]) -> Iterator[Measura
             )
 
 
-def _thermal(
-    stage: Stage, drawn: Sample, soak: Soak | None, extreme: Hottest | None
-) -> Iterator[Measurand]:
-    file, rule = stage.file, stage.file.limits.rule
-    working = file.stage
-    low, high = np.percentile(drawn.case_to_ambient_K_per_W, BAND_PERCENT)
-    typical = file.heat.case_to_ambient_K_per_W
+def _thermal(promise: Promised, soak: Soak | None, extreme: Hottest | None) -> Iterator[Measurand]:
+    file = promise.stage.file
+    rule, working = file.limits.rule, file.stage
+    resistance = promise.thermal_resistance()
     end = f"{working.current_max_A:g} A at {working.ambient_max_C:g} C ambient"
     margin = file.limits.junction_margin_min_K
     if soak is None or extreme is None:
@@ -127,7 +115,7 @@ def _thermal(
         f"final, {at}",
         soak.heating.final_rise_K,
         soak.heating.final_rise_budget,
-        Promise(typical * loss, float(low) * loss, float(high) * loss),
+        Promise(resistance.nominal * loss, resistance.low * loss, resistance.high * loss),
         None,
         None,
         rule,
@@ -138,46 +126,36 @@ def _thermal(
         f"case to ambient, {at}",
         soak.resistance_K_per_W,
         soak.resistance_budget,
-        Promise(typical, float(low), float(high)),
+        resistance,
         None,
         None,
         rule,
     )
-    conditions = (working.current_max_A, working.supply_nominal_V, working.ambient_max_C)
-    many = working_point(stage, drawn, *conditions)
-    one = working_point(stage, stage.typical(), *conditions)
     yield judged(
         "case_hottest",
         "C",
         end,
         extreme.case_C,
         extreme.case_budget,
-        _promise(many.case_C, one.case_C),
+        promise.case_hottest,
         None,
         file.limits.case_max_C,
         rule,
         remark=f"extrapolated from {at} to {extreme.loss_W:.3g} W",
     )
-    top = stage.main_part.junction_max_C
+    top = promise.stage.main_part.junction_max_C
     yield judged(
         "junction_margin",
         "K",
         f"below {top:g} C, {end}",
         top - extreme.junction_C,
         extreme.junction_budget,
-        _promise(top - many.junction_C, top - one.junction_C),
+        promise.junction_margin,
         margin,
         None,
         rule,
         remark=f"junction at {extreme.junction_C:.1f} C",
     )
-
-
-def _promise(many: Floats, one: Floats) -> Promise | None:
-    if np.isnan(many).any() or np.isnan(one).any():
-        return None
-    low, high = np.percentile(many, BAND_PERCENT)
-    return Promise(float(one[0, 0]), float(low), float(high))
 
 
 def _not_tested(record: Record) -> list[str]:

@@ -23,6 +23,9 @@ HEAT_SHARE = 0.02
 """Every sweep warms its part a little, and good meters see it: worth a sentence from here on."""
 
 
+LAW_SHARE = 1e-3
+"""The laws of the parts are not exact to better than this share of the largest drop: what they
+leave over below it is not a sign of anything."""
 FAULTS = {"gate-not-driven", "shorted", "open"}
 DOUBTS = {"too-few"}
 
@@ -125,7 +128,7 @@ def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[Remark]:
         sweep.current_A,
         sweep.drop_V,
         junction_of(stage, sweep),
-        u_noise_V=max(sweep.drop_zero.noise, 1e-7),
+        u_noise_V=max(sweep.drop_zero.noise, LAW_SHARE * float(np.max(np.abs(sweep.drop_V)))),
         rising=sweep.rising,
         alpha_per_K=temperature_coefficient(stage),
         drop_accuracy=accuracy_of(record.bench, "drop", sweep.drop_range_V),

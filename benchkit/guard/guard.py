@@ -62,7 +62,7 @@ class Guard:
         watcher: Callable[[Reading], None] | None = None,
     ) -> None:
         self.__supply, self.__load = supply, load
-        self._points, self.clock, self._operator = points, clock, operator
+        self._points, self._clock, self._operator = points, clock, operator
         self._journal = journal
         self.ceilings = ceilings
         self._due, self._today = calibration_due, today
@@ -75,11 +75,15 @@ class Guard:
 
     def now(self) -> float:
         """Seconds of bench time since the run began, to the microsecond."""
-        return round(self.clock.now() - self._start_s, 6)
+        return round(self._clock.now() - self._start_s, 6)
+
+    def sleep(self, seconds: float) -> float:
+        """Let bench time pass while nothing is energised; returns ``now()`` after it."""
+        return round(self._clock.sleep(seconds) - self._start_s, 6)
 
     def restart_time(self, journal: Journal) -> None:
         """Begin a run: time 0, and a new journal."""
-        self._journal, self._start_s, self._step = journal, self.clock.now(), "start"
+        self._journal, self._start_s, self._step = journal, self._clock.now(), "start"
 
     def step(self, name: str) -> None:
         """Name what is being done; readings and events carry it."""
@@ -92,7 +96,10 @@ class Guard:
 
     def read(self, point: str, *, quick: bool = False) -> Reading:
         """One reading, recorded before it is returned."""
-        reading = self._points.read(point, self.now(), quick=quick)
+        return self._read(point, self.now(), quick=quick)
+
+    def _read(self, point: str, time_s: float, *, quick: bool) -> Reading:
+        reading = self._points.read(point, time_s, quick=quick)
         self._keep(reading)
         return reading
 
@@ -271,13 +278,16 @@ class Guard:
         if self._watcher is not None:
             self._watcher(reading)
 
-    def look(self, envelope: Envelope, began_s: float) -> None:
-        """One look at everything that trips; Tripped says threshold, reading and time."""
+    def look(self, envelope: Envelope, began_s: float) -> float:
+        """One look at everything that trips; Tripped says threshold, reading and time.
+
+        Returns the time of the look, which stamps all that was read in it.
+        """
         state = self.__supply.state()
         now = self.now()
         self._keep(Reading(now, "supply_voltage", state.voltage_V, "V", 0.0, 0.0))
         self._keep(Reading(now, "supply_current", state.current_A, "A", 0.0, 0.0))
-        case = self.read("case", quick=True)
+        case = self._read("case", now, quick=True)
         if state.tripped:
             self._trip("the supply's own protection", "has tripped", now)
         if not state.output_on:
@@ -294,10 +304,13 @@ class Guard:
             self._trip("case", f"gives no usable reading ({case.status})", now)
         self._compare("case", case.value, envelope.case_max_C, "C", now)
         self._compare("time", now - began_s, envelope.longest_s, "s", now)
+        return now
 
     def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
         """Trip on the stage's own loss."""
-        self._compare("loss", drop_V * current_A, envelope.loss_max_W, "W", self.now())
+        loss = drop_V * current_A
+        if not loss <= envelope.loss_max_W:
+            self._compare("loss", loss, envelope.loss_max_W, "W", self.now())
 
     def _compare(self, what: str, value: float, threshold: float, unit: str, now: float) -> None:
         if not value <= threshold:
@@ -350,18 +363,18 @@ class Guard:
     def _discharged(self) -> str | None:
         """Wait for the exposed port to fall below RESIDUAL_V; a sentence when it does not."""
         self._points.recover("exposed_voltage")
-        began = self.clock.now()
+        began = self._clock.now()
         while True:
             reading = self.read("exposed_voltage", quick=True)
             if reading.usable and abs(reading.value) < RESIDUAL_V:
                 return None
-            if self.clock.now() - began > DISCHARGE_S:
+            if self._clock.now() - began > DISCHARGE_S:
                 value = f"{reading.value:.3g} V" if reading.usable else reading.status
                 return (
                     f"the meter: exposed_voltage is still {value} {DISCHARGE_S:g} s after "
                     "switching off"
                 )
-            self.clock.sleep(0.02)
+            self._clock.sleep(0.02)
 
 
 class Live:
@@ -370,7 +383,7 @@ class Live:
     def __init__(self, guard: Guard, supply: Supply, load: Load, envelope: Envelope) -> None:
         self._guard, self.__supply, self.__load = guard, supply, load
         self.envelope = envelope
-        self._began_s = self._looked_s = guard.now()
+        self._began_s = self._looked_s = self._read_s = guard.now()
 
     def draw(self, current_A: float) -> None:
         """Set the load, never above the envelope's current limit (InputError)."""
@@ -385,27 +398,38 @@ class Live:
         """Release the load, keep the supply on."""
         self.__load.release()
 
-    def look(self) -> None:
-        """Look now, whatever the polling interval."""
-        self._guard.look(self.envelope, self._began_s)
-        self._looked_s = self._guard.now()
+    def look(self) -> float:
+        """Look now, whatever the polling interval; returns the time of the look."""
+        self._looked_s = self._guard.look(self.envelope, self._began_s)
+        return self._looked_s
 
-    def wait(self, seconds: float) -> None:
-        """Let time pass, looking at least every polling interval and once at the start."""
-        until = self._guard.now() + seconds
-        self.look()
-        while (left := until - self._guard.now()) > 1e-6:
-            due = self._looked_s + self._guard.ceilings.poll_s - self._guard.now()
-            if due <= 0:
-                self.look()
-                continue
-            self._guard.clock.sleep(min(left, due))
+    @property
+    def looked_s(self) -> float:
+        """When the guard looked last."""
+        return self._looked_s
+
+    def wait(self, seconds: float) -> float:
+        """Look, then let ``seconds`` pass, looking again every polling interval.
+
+        Returns the time at the end.
+        """
+        now = self.look()
+        until = now + seconds
+        while (left := until - now) > 1e-6:
+            due = self._looked_s + self._guard.ceilings.poll_s - now
+            now = self._guard.sleep(min(left, due)) if due > 0 else self.look()
+        return now
 
     def read(self, point: str) -> Reading:
-        """A recorded reading; overload or a lost sensor trips."""
-        if self._guard.now() - self._looked_s > self._guard.ceilings.poll_s:
+        """A recorded reading; overload or a lost sensor trips.
+
+        Looks first when the last look is a polling interval ago, seen from the last reading: a
+        reading's own duration is part of the stated blind time.
+        """
+        if self._read_s - self._looked_s > self._guard.ceilings.poll_s:
             self.look()
         reading = self._guard.read(point)
+        self._read_s = reading.time_s
         if not reading.usable:
             self._guard._trip(point, f"gives no usable reading ({reading.status})", reading.time_s)
         return reading

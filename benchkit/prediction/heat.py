@@ -62,7 +62,7 @@ def working_point(
         loss, later = both[:, : wide[1]], both[:, wide[1] :]
         left = ambient + whole * loss - junction
         slope = whole * (later - loss) / step_K - 1
-        away |= (slope >= 0) & (left > 0)
+        away |= (left > 0) & ((slope >= 0) | (junction >= BEYOND_C))
         move = np.where(away, 0.0, np.clip(-left / np.where(slope < 0, slope, -1.0), -60, 60))
         junction = np.clip(junction + move, -80.0, BEYOND_C)
         if np.all(away | (np.abs(move) < 1e-6)):

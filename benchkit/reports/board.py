@@ -35,8 +35,8 @@ NOTABLE = {
 }
 ANSWERS = {
     "pass": "Yes, for what was tested here.",
-    "fail": "No: a limit is missed.",
-    "undecided": "Not on this run: not every limit could be decided.",
+    "fail": "No: the board does not meet what it must.",
+    "undecided": "Not on this run: not everything could be decided.",
 }
 
 
@@ -90,7 +90,7 @@ def board_report(record: Record, evaluation: Evaluation, manifest: Mapping[str, 
         law = fitted_law(record, evaluation.stage, sweep)
     instruments = list(_instruments(record, manifest))
     overdue = [i for i in instruments if i.overdue]
-    simulated = manifest.get("clock") == "simulated"
+    simulated = record.bench.is_simulated or manifest.get("clock") == "simulated"
     not_off = record.said("not-confirmed-off")
     front = front_page(
         result.measurands, result.why, [t for t in result.findings if t not in result.why],

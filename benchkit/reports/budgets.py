@@ -6,7 +6,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from benchkit.records.result import Measurand
+from benchkit.records.result import BudgetLine, Measurand
 from benchkit.reports.words import degrees, named, plain, scaled
 
 LEAST_SHARE = 0.001
@@ -60,7 +60,8 @@ def budget_tables(rows: Sequence[Measurand]) -> list[BudgetTable]:
 def _table(row: Measurand) -> BudgetTable:
     combined = math.hypot(*(line.u for line in row.budget))
     factor, unit = scaled(row.unit, combined)
-    shown, small = [], []
+    shown: list[tuple[BudgetLine, float]] = []
+    small: list[tuple[BudgetLine, float]] = []
     for line in row.budget:
         share = (line.u / combined) ** 2 if combined else 0.0
         (shown if share >= LEAST_SHARE else small).append((line, share))
@@ -75,9 +76,7 @@ def _table(row: Measurand) -> BudgetTable:
     if small:
         rest = math.hypot(*(line.u for line, _ in small))
         what = "one smaller source" if len(small) == 1 else f"{len(small)} smaller sources together"
-        rows.append(
-            BudgetRow(what, plain(factor * rest), sum(100 * s for _, s in small), "", "")
-        )
+        rows.append(BudgetRow(what, plain(factor * rest), sum(100 * s for _, s in small), "", ""))
     return BudgetTable(
         f"{named(row.name)}, {degrees(row.condition)}", unit, rows, plain(factor * combined),
         f"{row.k:.2f}" if row.k is not None else "", plain(factor * (row.U or 0.0)),

@@ -9,7 +9,6 @@ from __future__ import annotations
 import io
 import math
 import re
-from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -30,7 +29,7 @@ INK, GREY, PALE = "#20262B", "#68727A", "#E3E6E8"
 MOST_SAMPLES = 240
 """More samples of a soak than this are thinned: they would lie on each other."""
 
-STYLE = {
+STYLE: dict[Any, Any] = {
     "svg.fonttype": "none",
     "svg.hashsalt": "benchkit",
     "font.family": ["DejaVu Sans"],
@@ -85,7 +84,8 @@ def board_figure(evaluation: Evaluation, law: FittedLaw | str | None) -> str:
                 _drop(top, below, evaluation, law)
             elif evaluation.soak is not None:
                 _heat(top, below, evaluation.soak)
-            figure.align_ylabels([top, below])
+            for axes in (top, below):
+                axes.yaxis.set_label_coords(-0.075, 0.5)
         return as_svg(figure, "Drop against current and case rise against time")
 
 
@@ -149,15 +149,18 @@ def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | N
         most = float(sweep.current_A.max())
         top.set_xlim(-0.03 * most, 1.05 * most)
     top.set_ylim(bottom=None if junction else min(0.0, float(sweep.drop_V.min())))
-    top.set_title("Forward drop against current")
+    top.set_title("Forward drop against current", y=1.0)
     top.set_ylabel("drop (V)")
     below.set_ylabel("residual (mV)")
     below.set_xlabel("current (A)" + (", logarithmic" if junction else ""))
     below.axhline(0.0, color=INK, linewidth=0.8)
     if isinstance(law, FittedLaw):
-        centre = np.array([
-            1e3 * float(law.residual_V[sweep.visits(d.current_A)].mean()) for d in evaluation.drops
-        ])
+        centre = np.array(
+            [
+                1e3 * float(law.residual_V[sweep.visits(d.current_A)].mean())
+                for d in evaluation.drops
+            ]
+        )
         U = np.array([1e3 * d.budget.expanded().U for d in evaluation.drops])
         below.errorbar(
             [d.current_A for d in evaluation.drops], centre, yerr=np.where(np.isfinite(U), U, 0.0),
@@ -232,7 +235,7 @@ def _heat(top: Any, below: Any, soak: Soak) -> None:
         )  # fmt: skip
     top.axvline(end, color=GREY, linewidth=0.8, linestyle=":")
     top.set_xlim(0.0, 1.35 * end)
-    top.set_title(f"Case rise over ambient at {soak.current_A:g} A")
+    top.set_title(f"Case rise over ambient at {soak.current_A:g} A", y=1.0)
     top.set_ylabel("rise (K)")
     below.axhline(0.0, color=INK, linewidth=0.8)
     below.set_ylabel("residual (mK)")
@@ -269,5 +272,3 @@ def _joined(amps: Floats, volts: Floats, fine: Floats, junction: bool) -> Floats
 def thinned(count: int) -> int:
     """Of how many samples one is drawn."""
     return max(1, math.ceil(count / MOST_SAMPLES))
-
-

@@ -35,6 +35,12 @@ class FittedLaw:
 
 def fitted_law(record: Record, stage: Stage, sweep: Sweep) -> FittedLaw | str:
     """Fit the stage's law to every visit; a string says in words why none could be fitted."""
+    least = 3 if stage.topology.conducts == "channel" else 4
+    if len(sweep.targets) < least:
+        return (
+            f"No law could be fitted to the sweep: it has {len(sweep.targets)} currents, and the "
+            f"law of a {stage.topology.conducts} needs {least}."
+        )
     amps, volts = sweep.current_A, sweep.drop_V
     drop, current = _accuracies(record, sweep)
     lead = "fixture inside the Kelvin taps"

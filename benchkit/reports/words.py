@@ -13,8 +13,8 @@ NAMES = {
     "drop": "Forward drop",
     "case_rise": "Final case rise over ambient",
     "thermal_resistance": "Thermal resistance",
-    "case_hottest": "Case at the highest current and ambient",
-    "junction_margin": "Junction margin at the highest current and ambient",
+    "case_hottest": "Hottest case",
+    "junction_margin": "Junction margin",
 }
 UNITS = {"C": "°C"}
 VERDICTS = {"pass": "PASS", "fail": "FAIL", "undecided": "UNDECIDED"}

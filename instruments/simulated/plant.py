@@ -27,8 +27,8 @@ from instruments.simulated.timebase import Timebase
 
 Floats = NDArray[np.float64]
 
-SUPPLY_LAG_S = 0.004
-SUPPLY_FALL_S = 0.02
+SUPPLY_RISE_S = 0.004
+SUPPLY_FALL_S, FALL_STEP_S = 0.02, 0.01
 LOAD_LAG_S = 0.003
 LEAD_OHM = 0.018
 FADE_V = 0.05
@@ -37,8 +37,7 @@ OFF_OHM = 50.0
 """What discharges the output of a supply that is off."""
 LAWS_END_C = 250.0
 """The laws of the parts are not valid beyond; a real part would soon be dead."""
-NEAR_K = 0.2
-NEAR_SHARE = 2e-3
+NEAR_K = 1.0
 
 WIRING_FAULTS = {
     "lead-off:drop": "a Kelvin lead of this point is off: the meter floats",
@@ -118,7 +117,7 @@ class Plant:
         self._lived_until = timebase.now()
         self._command_supply = (0.0, 0.0, False)
         self._command_load = ("CURR", 0.0, False)
-        self._emf = self._amps = 0.0
+        self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
         self._state: _State | None = None
         self._guess: dict[str, float] = {}
 
@@ -143,21 +142,33 @@ class Plant:
         self._lived_until = self._time.now()
 
     def _live(self, seconds: float) -> None:
-        volts, _, on = self._command_supply
-        target = volts if on else 0.0
-        lag = SUPPLY_LAG_S if on else SUPPLY_FALL_S
-        self._emf = _towards(self._emf, target, seconds / lag)
-        mode, value, drawing = self._command_load
-        amps = value if drawing and mode == "CURR" else 0.0
-        self._amps = _towards(self._amps, amps, seconds / LOAD_LAG_S)
+        self._since_switch_s += seconds
+        self._emf = self._emf_now()
+        self._amps = _towards(self._amps, self._target_amps(), seconds / LOAD_LAG_S)
         if self._board is not None:
             self._board.heat.pass_time(seconds, max(self._quantity("loss"), 0.0))
+
+    def _emf_now(self) -> float:
+        """Up after a dead time; down like a capacitor that discharges, in steps, because every
+        step is an operating point to solve."""
+        volts, _, on = self._command_supply
+        if on:
+            return volts if self._since_switch_s >= SUPPLY_RISE_S else self._emf
+        steps = math.floor(self._since_switch_s / FALL_STEP_S)
+        left = self._emf_at_switch * math.exp(-steps * FALL_STEP_S / SUPPLY_FALL_S)
+        return left if left > 1e-6 else 0.0
+
+    def _target_amps(self) -> float:
+        mode, value, drawing = self._command_load
+        return value if drawing and mode == "CURR" else 0.0
 
     # World: what the instruments do
 
     def command_supply(self, voltage_V: float, current_A: float, on: bool) -> None:
         """Take the supply's new set-points."""
         self._catch_up()
+        if on != self._command_supply[2]:
+            self._since_switch_s, self._emf_at_switch = 0.0, self._emf
         self._command_supply = (voltage_V, current_A, on)
 
     def command_load(self, mode: str, value: float, on: bool) -> None:
@@ -179,7 +190,7 @@ class Plant:
         except InputError as error:
             raise ValueError(str(error)) from None
         self._inserted_at = self.now()
-        self._emf = self._amps = 0.0
+        self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
         self._state = None
         self._guess = {}
         self._faults = []
@@ -287,9 +298,9 @@ class Plant:
             state is None
             or state.key != (self._emf, self._command_supply[1:], self._command_load)
             or abs(junction - state.junction_C) > NEAR_K
-            or abs(self._amps - state.amps) > NEAR_SHARE * abs(state.amps)
         ):
-            state = self._state = self._solve(self._amps, junction)
+            # At the current the load is going to: on the way there the straight line serves.
+            state = self._state = self._solve(self._target_amps(), junction)
         return state.at(name, self._amps, junction)
 
     def _solve(self, amps: float, junction_C: float) -> _State:

@@ -8,7 +8,7 @@ from __future__ import annotations
 import csv
 import json
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -208,9 +208,7 @@ class _Log:
     def event(self, kind: str, text: str, **facts: object) -> None:
         self.lines.append({"at": "2026-03-02T09:16:00.000Z", "kind": kind, "text": text, **facts})
 
-    def _row(
-        self, step: str, point: str, value: float, unit: str, full: str, u: float
-    ) -> None:
+    def _row(self, step: str, point: str, value: float, unit: str, full: str, u: float) -> None:
         self.rows.append(
             (repr(round(self.now, 4)), step, point, repr(value), unit, repr(u), full, "ok")
         )
@@ -292,10 +290,20 @@ def run(folder: Path, board: Board, serial: str = "TG-0007") -> tuple[Record, Ev
     return made, evaluate(made, serial)
 
 
+def like(evaluation: Evaluation, serial: str, factor: float) -> Evaluation:
+    """The same evaluation for another serial, every figure measured ``factor`` times as large."""
+    rows = [
+        replace(m, measured=None if m.measured is None else m.measured * factor)
+        for m in evaluation.result.measurands
+    ]
+    return replace(evaluation, result=replace(evaluation.result, serial=serial, measurands=rows))
+
+
 def test_a_typical_board_passes_and_a_worse_one_fails(tmp_path: Path) -> None:
     _, good = run(tmp_path / "good", Board())
     _, bad = run(tmp_path / "bad", Board(scale=1.7))
     assert good.result.verdict == "pass"
     assert bad.result.verdict == "fail"
-    assert good.soak is not None and good.soak.heating.usable
+    assert good.soak is not None
+    assert good.soak.heating.usable
     assert abs(good.soak.resistance_K_per_W - 44.0) < 0.8
