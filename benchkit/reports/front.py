@@ -10,7 +10,7 @@ from benchkit.records.result import Measurand
 
 PAGE_MM = 268.0
 """What A4 leaves between the margins of page.css."""
-FIXED_MM = 27.0 + 17.0 + 17.0 + 20.0
+FIXED_MM = 26.0 + 14.0 + 16.0 + 18.0
 """Head with facts, table head, its key, signatures."""
 MOST_REASONS = 5
 MOST_REMARKS = 3
@@ -40,11 +40,11 @@ def front_page(
     taken = FIXED_MM + max(30.0, 17.0 + 4.6 * _lines(first, 90)) + 11.0 * notes
     taken += 10.0 + 4.6 * _lines(second, 115) if second else 0.0
     taken += 13.0 + 4.6 * math.ceil(_lines(not_tested, 55) / 2 + 0.5)
-    order = sorted(range(len(rows)), key=lambda k: (_weight(rows[k]), k))
+    order = sorted(range(len(rows)), key=lambda k: _weight(rows[k], k))
     kept: list[int] = []
     groups: set[str] = set()
     for k in order:
-        height = _height(rows[k]) + (0.0 if rows[k].name in groups else 7.0)
+        height = _height(rows[k]) + (0.0 if rows[k].name in groups else 6.5)
         if taken + height > PAGE_MM:
             break
         taken += height
@@ -56,11 +56,13 @@ def front_page(
     )  # fmt: skip
 
 
-def _weight(row: Measurand) -> int:
-    """Missed and undecided limits first, drops that nothing is asked of last."""
+def _weight(row: Measurand, place: int) -> tuple[int, int]:
+    """Missed and undecided limits first; of the drops that nothing is asked of, the largest."""
     if row.verdict is not None:
-        return ("fail", "undecided", "pass").index(row.verdict)
-    return 3 if row.name != "drop" else 4 if (row.en or 0.0) > 1 else 5
+        return ("fail", "undecided", "pass").index(row.verdict), place
+    if row.name != "drop":
+        return 3, place
+    return (4 if (row.en or 0.0) > 1 else 5), -place
 
 
 def _height(row: Measurand) -> float:
