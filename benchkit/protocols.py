@@ -78,6 +78,10 @@ class Points(Protocol):
     def expect(self, point: str, largest: float) -> None:
         """Choose the fixed range for the coming readings from the largest value expected."""
 
+    def forget(self) -> None:
+        """Go back to the ranges of the bench file, and take no instrument's setting for granted:
+        a run does not depend on what was measured before."""
+
     def recover(self, point: str) -> None:
         """After a LinkError: make the instrument that reads a point usable again, if it can be."""
 

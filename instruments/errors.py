@@ -20,8 +20,6 @@ benchkit.errors.LinkError
 Errors of the layers below are translated into this tree once, in ``instruments/link.py``.
 """
 
-
-
 from __future__ import annotations
 
 from collections.abc import Sequence

@@ -38,6 +38,10 @@ class ScpiMeter:
         """Close the session."""
         self._session.close()
 
+    def forget(self) -> None:
+        """Take nothing for confirmed: the next ``configure`` of each route is sent."""
+        self._confirmed.clear()
+
     def recover(self) -> None:
         """Bring a session that is out of step back into it; nothing when it is in step."""
         if self._session.out_of_step:

@@ -35,9 +35,9 @@ class BenchPoints:
                     f"instruments.{name}.voltage declares range_V {strange[0]:g}, but its dialect "
                     f"knows the ranges {', '.join(f'{r:g}' for r in meter.ranges_V)}"
                 )
+        self.forget()
         for point, table in bench.points.items():
             if table.instrument in meters:
-                self.expect(point, math.inf)
                 apertures = meters[table.instrument].apertures_nplc
                 if table.aperture_nplc not in apertures:
                     raise InputError(
@@ -82,6 +82,14 @@ class BenchPoints:
             value, u = volts / table.shunt_ohm, u / table.shunt_ohm
             u = math.hypot(u, value * table.shunt_tolerance_percent / 100 / math.sqrt(3))
         return Reading(time_s, point, value, POINT_UNITS[point], u, accuracy.range, status)
+
+    def forget(self) -> None:
+        """Largest ranges, and every setting sent anew when it is next needed."""
+        for meter in self._meters.values():
+            meter.forget()
+        for point, table in self._bench.points.items():
+            if table.instrument in self._meters:
+                self.expect(point, math.inf)
 
     def recover(self, point: str) -> None:
         """Bring the instrument that reads a point back into step, if it is out of it."""

@@ -16,7 +16,7 @@ from procedures.batch import Lot, conclude, prepare, run_lot
 from procedures.exits import report_error
 from procedures.inputs import BoardInputs, read_board, read_lot, read_serial
 from procedures.interrupts import Interrupts
-from procedures.operators import ConsoleOperator, SimulatedOperator
+from procedures.operators import ConsoleOperator, SimulatedOperator, check_somebody_is_there
 from procedures.plan import Plan
 from procedures.screen import Screen
 from procedures.tell import tell_board, tell_lot
@@ -37,7 +37,12 @@ class _NoJournal:
 
 @contextmanager
 def opened(inputs: BoardInputs, screen: Screen) -> Iterator[Bench]:
-    """The bench of a command, with its operator, live readings and signals."""
+    """The bench of a command, with its operator, live readings and signals.
+
+    InputError, before anything is opened, for a real bench with nobody at the terminal.
+    """
+    if not inputs.bench.is_simulated:
+        check_somebody_is_there()
     operator: Operator = (
         SimulatedOperator(screen) if inputs.bench.is_simulated else ConsoleOperator(screen)
     )

@@ -8,8 +8,17 @@ from benchkit.errors import InputError
 from procedures.screen import Screen
 
 
+def check_somebody_is_there() -> None:
+    """InputError when standard input is no terminal: nobody can answer there."""
+    if not sys.stdin.isatty():
+        raise InputError(
+            "standard input: this bench needs a person at a terminal, to read the cautions and "
+            "put boards in; run the command in one"
+        )
+
+
 class ConsoleOperator:
-    """Asks at the terminal. InputError when there is nobody to ask."""
+    """Asks at the terminal; a closed terminal declines."""
 
     def __init__(self, screen: Screen) -> None:
         self._screen = screen
@@ -25,13 +34,11 @@ class ConsoleOperator:
         return self._ask("Enter when it is done, or stop: ").strip().lower() not in ("stop", "no")
 
     def _ask(self, prompt: str) -> str:
-        if not sys.stdin.isatty():
-            raise InputError(
-                "standard input: this bench needs a person at a terminal, to read the cautions "
-                "and put boards in; run the command in one"
-            )
         self._screen.console.print(prompt, end="", markup=False)
-        return input()
+        try:
+            return input()
+        except EOFError:
+            return "stop"
 
 
 class SimulatedOperator:

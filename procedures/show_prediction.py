@@ -62,7 +62,7 @@ def _show(p: Prediction) -> None:
     if p.lowest_useful_supply_V is not None:
         console.print(
             f"lowest useful supply voltage: {p.lowest_useful_supply_V:.1f} V "
-            "(below it the drop grows by half)",
+            "for every board within tolerance (below it the drop grows by half)",
             markup=False,
         )
     for scenario in p.scenarios:

@@ -75,7 +75,7 @@ def run_board(bench: Bench, job: Job, serial: str, folder: Path, screen: Screen)
 def _measure(bench: Bench, job: Job, serial: str, run: RunFolder, screen: Screen) -> None:
     guard, file = bench.guard, bench.file
     bench.fixture.place(serial, job.stage_path)
-    guard.restart_time(run)
+    guard.begin(run)
     guard.step("permissives")
     guard.permit()
     read_rest(guard)

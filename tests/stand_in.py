@@ -112,6 +112,9 @@ class StandInPoints:
     def expect(self, point: str, largest: float) -> None:
         self.world.said.append(f"expect {point} {largest:g}")
 
+    def forget(self) -> None:
+        self.world.said.append("forget")
+
     def recover(self, point: str) -> None:
         self.world.said.append(f"recover {point}")
 

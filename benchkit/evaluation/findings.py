@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from benchkit.evaluation.hottest import Hottest
 from benchkit.evaluation.soak import Soak
 from benchkit.evaluation.sources import accuracy_of
-from benchkit.evaluation.sweep import DropAt, Sweep
+from benchkit.evaluation.sweep import DropAt, Sweep, junctions_C
 from benchkit.fits.drop import diagnose
 from benchkit.metrology import Accuracy
 from benchkit.prediction.forward import forward
@@ -79,9 +79,8 @@ def remarks_of(
 def _of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:
     """Is this the part that the stage file says? Limits alone cannot tell: a short across a diode
     meets every upper limit of its drop."""
-    lag = stage.main_part.junction_to_case_K_per_W
     amps = np.array([d.current_A for d in drops])
-    junction = np.array([d.case_C + lag * d.drop_V * d.current_A for d in drops])
+    junction = junctions_C(drops, stage.main_part.junction_to_case_K_per_W)
     supply = stage.file.stage.supply_nominal_V
     least, most = (
         forward(stage, stage.corner(way), amps, supply, junction).drop_V[0] for way in (-1, 1)

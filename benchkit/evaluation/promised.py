@@ -57,7 +57,7 @@ def _promised(text: str) -> Promised:
     stage = build_stage(StageFile.model_validate_json(text), "stage.toml")
     drawn = stage.draw(SAMPLES, SEED)
     working = stage.file.stage
-    conditions = (working.current_max_A, working.supply_nominal_V, working.ambient_max_C)
+    conditions = (working.current_max_A, working.supply_min_V, working.ambient_max_C)
     many = working_point(stage, drawn, *conditions)
     one = working_point(stage, stage.typical(), *conditions)
     top = stage.main_part.junction_max_C

@@ -34,6 +34,10 @@ class Soak:
     loss_W: Floats
     late_loss_W: float
     loss_budget: Budget
+    warm_drop_V: float
+    """Drop at the soak's current once warm, the mean of its last part."""
+    warm_drop_budget: Budget
+    warm_case_C: float
     resistance_K_per_W: float
     resistance_budget: Budget
 
@@ -124,7 +128,8 @@ def read_soak(record: Record, sweep: Sweep | None) -> Soak | None:
     at = np.array([r.time_s for r in drops[:size]]) - begun[0]
     late = at >= (1 - LATE_SHARE) * at[-1]
     level = float(loss[late].mean())
-    budget = _loss_budget(record, sweep, volts[late], amps[late], heating)
+    drop_budget = _drop_budget(record, sweep, volts[late], amps[late], heating)
+    budget = Budget.linear([(float(amps[late].mean()), drop_budget)])
     rise = heating.final_rise_K
     resistance = rise / level
     return Soak(
@@ -134,16 +139,22 @@ def read_soak(record: Record, sweep: Sweep | None) -> Soak | None:
         loss,
         level,
         budget,
+        float(volts[late].mean()),
+        drop_budget,
+        case[-1].value,
         resistance,
         Budget.linear([(1 / level, heating.final_rise_budget), (-rise / level**2, budget)]),
     )
 
 
-def _loss_budget(
+def _drop_budget(
     record: Record, sweep: Sweep, volts: Floats, amps: Floats, heating: Heating
 ) -> Budget:
-    """P = V I: errors of V count I times, errors of I count V times (a negative slope of -V/I in
-    ``reading_components`` says just that, since there an error of I counts -slope times)."""
+    """The warm drop, at the current it was read at, such that the current times this is the loss.
+
+    P = V I: an error of V counts I times and one of I counts V times. A slope of -V/I in
+    ``reading_components``, where an error of I counts -slope times, says just that.
+    """
     drop, current = float(volts.mean()), float(amps.mean())
     table = record.bench.points["drop"]
     as_drop = [
@@ -154,4 +165,4 @@ def _loss_budget(
         rectangular("thermoelectric voltages", table.thermoelectric_V_per_K * heating.final_rise_K),
         Component("loss still drifting", float(np.ptp(volts)) / 2 / math.sqrt(3), "rectangular"),
     ]
-    return Budget.linear([(current, Budget(c for c in as_drop if c.u != 0.0))])
+    return Budget(c for c in as_drop if c.u != 0.0)

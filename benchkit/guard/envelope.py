@@ -67,26 +67,35 @@ class Envelope:
         voltage. InputError when that would pass one of the bench's ceilings.
         """
         limit = 1.1 * largest_A + 0.05
-        over = 1.1 * voltage_V + 0.5
+        envelope = cls(
+            name,
+            voltage_V,
+            limit,
+            1.1 * voltage_V + 0.5,
+            limit,
+            min(case_max_C, ceilings.case_max_C),
+            loss_max_W,
+            longest_s,
+        )
+        envelope.check(ceilings)
+        return envelope
+
+    def check(self, ceilings: Ceilings) -> None:
+        """InputError when the step would pass one of the bench's ceilings."""
+        name, limit = self.name, max(self.current_limit_A, self.over_current_A)
         _within(
             name,
             "voltage with its over-voltage level",
-            over,
+            max(self.voltage_V, self.over_voltage_V),
             ceilings.voltage_max_V,
             "V",
             "bench.voltage_max_V",
         )
         _within(name, "current limit", limit, ceilings.current_max_A, "A", "bench.current_max_A")
-        _within(name, "power", voltage_V * limit, ceilings.power_max_W, "W", "bench.power_max_W")
-        return cls(
-            name,
-            voltage_V,
-            limit,
-            over,
-            limit,
-            min(case_max_C, ceilings.case_max_C),
-            loss_max_W,
-            longest_s,
+        power = self.voltage_V * limit
+        _within(name, "power", power, ceilings.power_max_W, "W", "bench.power_max_W")
+        _within(
+            name, "case limit", self.case_max_C, ceilings.case_max_C, "C", "bench.case_max_C"
         )
 
     def sentence(self) -> str:
@@ -100,7 +109,7 @@ class Envelope:
 
 
 def _within(step: str, what: str, value: float, ceiling: float, unit: str, key: str) -> None:
-    if value > ceiling:
+    if not value <= ceiling:
         raise InputError(
             f"{step}: its {what} would be {value:.4g} {unit}, above {key} = {ceiling:g} of the "
             "bench file; lower the stage's values, or use a bench that allows it"

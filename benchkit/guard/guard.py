@@ -39,6 +39,8 @@ REST_K = 10.0
 PLAUSIBLE_C = (-45.0, 90.0)
 LEVEL_SHARE, LEVEL_V = 0.02, 0.05
 """How far a read-back of a protection level may be from what was asked."""
+SLACK_S = 1.0
+"""What arithmetic, disk and screen may take between two looks, beside the instruments."""
 MESH_V = 0.03
 """Exposed less guarded voltage must equal the drop within this and a share of a percent."""
 
@@ -58,6 +60,7 @@ class Guard:
         calibration_due: Mapping[str, dt.date],
         today: dt.date,
         *,
+        waits_s: float = 0.0,
         shield: Callable[[], AbstractContextManager[None]] = nullcontext,
         watcher: Callable[[Reading], None] | None = None,
     ) -> None:
@@ -66,10 +69,14 @@ class Guard:
         self._journal = journal
         self.ceilings = ceilings
         self._due, self._today = calibration_due, today
-        self._shield, self._watcher = shield, watcher
+        self._waits_s, self._shield, self._watcher = waits_s, shield, watcher
         self._start_s = clock.now()
         self._step = "start"
         self._case_C = math.nan
+        self._live: Live | None = None
+        self._off = False
+        self._found_on = ""
+        self._unwritten: Exception | None = None
 
     # what anyone may do
 
@@ -78,12 +85,21 @@ class Guard:
         return round(self._clock.now() - self._start_s, 6)
 
     def sleep(self, seconds: float) -> float:
-        """Let bench time pass while nothing is energised; returns ``now()`` after it."""
+        """Let bench time pass, looking all the while if something is energised; returns ``now()``
+        after it."""
+        return self._sleep(seconds) if self._live is None else self._live.wait(seconds)
+
+    def _sleep(self, seconds: float) -> float:
         return round(self._clock.sleep(seconds) - self._start_s, 6)
 
-    def restart_time(self, journal: Journal) -> None:
-        """Begin a run: time 0, and a new journal."""
+    def begin(self, journal: Journal) -> None:
+        """Begin a run: time 0, a new journal, and nothing remembered of the run before."""
         self._journal, self._start_s, self._step = journal, self._clock.now(), "start"
+        self._case_C = math.nan
+        self._points.forget()
+        if self._found_on:
+            self._journal.event("found-on", self._found_on, time_s=self.now())
+            self._found_on = ""
 
     def step(self, name: str) -> None:
         """Name what is being done; readings and events carry it."""
@@ -95,8 +111,16 @@ class Guard:
         self._points.expect(point, largest)
 
     def read(self, point: str, *, quick: bool = False) -> Reading:
-        """One reading, recorded before it is returned."""
-        return self._read(point, self.now(), quick=quick)
+        """One reading, recorded before it is returned; while something is energised, the guard
+        looks first when a look is due."""
+        return self._read(point, self._look_when_due(), quick=quick)
+
+    def _look_when_due(self) -> float:
+        now = self.now()
+        if self._live is not None and not 0 <= now - self._live.looked_s <= self.ceilings.poll_s:
+            self._live.look()
+            now = self.now()
+        return now
 
     def _read(self, point: str, time_s: float, *, quick: bool) -> Reading:
         reading = self._points.read(point, time_s, quick=quick)
@@ -112,25 +136,41 @@ class Guard:
         return self._case_C
 
     def instruct(self, text: str) -> None:
-        """Ask for something to be done by hand; OperatorStopped when it is declined."""
+        """Ask for something to be done by hand; OperatorStopped when it is declined, Refused
+        while something is energised."""
+        self._require_rest("nothing is asked of a person")
         self._journal.event("instruction", text, time_s=self.now())
         if not self._operator.instruct(text):
             raise OperatorStopped(f"the operator declined: {text}")
 
+    def _require_rest(self, what: str) -> None:
+        if self._live is not None:
+            raise Refused(f"{what} while {self._live.envelope.name} is energised")
+
     # before
+
+    def start_off(self) -> None:
+        """See that nothing is on before a person reaches in: off, and confirmed, or
+        NotConfirmedOff. An output found on is told by the next run."""
+        self._found_on = self._switched_on()
+        self.make_safe(self._found_on or "before anything is done")
+
+    def _switched_on(self) -> str:
+        """What the supply says when it was found on; empty when it is off."""
+        state = self.__supply.state()
+        if not state.output_on:
+            return ""
+        return (
+            f"{self.__supply.role} was found switched on, at {state.voltage_V:.3g} V and "
+            f"{state.current_A:.3g} A: switching it off"
+        )
 
     def permit(self) -> None:
         """Check every permissive that needs no voltage. Refused names the one that is missing."""
         self._check_calibration()
-        state = self.__supply.state()
-        if state.output_on:
-            self._journal.event(
-                "found-on",
-                f"{self.__supply.role} was found switched on: switching it off",
-                time_s=self.now(),
-                voltage_V=state.voltage_V,
-                current_A=state.current_A,
-            )
+        if found_on := self._switched_on():
+            self._off = False
+            self._journal.event("found-on", found_on, time_s=self.now())
             self.make_safe("found switched on")
         self.__load.release()
         for point in ("exposed_voltage", "guarded_voltage"):
@@ -221,16 +261,19 @@ class Guard:
         Whatever ends the block (its end, a trip, an error, Ctrl-C), the output is switched off
         first and then confirmed off; NotConfirmedOff replaces the error when it cannot be.
         """
-        if envelope.voltage_V > self.ceilings.voltage_max_V:
-            raise InputError(
-                f"{envelope.name}: {envelope.voltage_V:g} V is above the bench's "
-                f"{self.ceilings.voltage_max_V:g} V"
-            )
+        self._require_rest(f"{envelope.name} cannot begin")
+        envelope.check(self.ceilings)
         if caution is not None:
+            caution += (
+                f" The guard looks every {self.ceilings.poll_s:g} s; when instruments fail it may "
+                f"be blind for up to {self.blind_s:.0f} s, with only the supply's own limits left."
+            )
             self._journal.event("caution", caution, time_s=self.now())
             if not self._operator.acknowledge(caution):
                 raise OperatorStopped("the operator did not accept the caution")
         try:
+            self._off = False
+            self.__load.release()
             # The limit first: on supplies whose over-current level is their current limit, the
             # level read back is that of the limit then in force.
             self.__supply.program(envelope.voltage_V, envelope.current_limit_A)
@@ -241,22 +284,22 @@ class Guard:
                 time_s=self.now(),
                 blind_s=self.blind_s,
             )
-            live = Live(self, self.__supply, self.__load, envelope)
+            live = self._live = Live(self, self.__supply, self.__load, envelope)
             self.__supply.enable()
             yield live
         except BaseException as error:
-            kind = type(error).__name__
-            text = str(error) if isinstance(error, BenchkitError) else kind
-            self._journal.event("stopped", text, time_s=self.now(), error=kind)
-            self.make_safe(text)
+            self.make_safe(_say(error), error)
             raise
         self.make_safe(f"end of {envelope.name}")
 
     @property
     def blind_s(self) -> float:
-        """The longest the guard can be without a look while something is energised: its polling
-        interval, and one reading of a second's aperture beside it."""
-        return self.ceilings.poll_s + 1.0
+        """The longest from one look to the end of the next, or to output-off being sent: the
+        polling interval, what the instruments may take meanwhile, and SLACK_S.
+
+        Not bounded is a machine that stands still (suspended, its disk hanging).
+        """
+        return self.ceilings.poll_s + self._waits_s + SLACK_S
 
     def _protect(self, envelope: Envelope) -> None:
         asked = Protection(envelope.over_voltage_V, envelope.over_current_A)
@@ -287,7 +330,6 @@ class Guard:
         now = self.now()
         self._keep(Reading(now, "supply_voltage", state.voltage_V, "V", 0.0, 0.0))
         self._keep(Reading(now, "supply_current", state.current_A, "A", 0.0, 0.0))
-        case = self._read("case", now, quick=True)
         if state.tripped:
             self._trip("the supply's own protection", "has tripped", now)
         if not state.output_on:
@@ -298,8 +340,9 @@ class Guard:
                 f"limits its current at {state.current_A:.3g} A, which the step does not expect",
                 now,
             )
-        self._compare("supply_voltage", state.voltage_V, envelope.over_voltage_V, "V", now)
-        self._compare("supply_current", state.current_A, envelope.over_current_A, "A", now)
+        self._compare("supply_voltage", abs(state.voltage_V), envelope.over_voltage_V, "V", now)
+        self._compare("supply_current", abs(state.current_A), envelope.over_current_A, "A", now)
+        case = self._read("case", now, quick=True)
         if not case.usable:
             self._trip("case", f"gives no usable reading ({case.status})", now)
         self._compare("case", case.value, envelope.case_max_C, "C", now)
@@ -322,36 +365,48 @@ class Guard:
 
     # after
 
-    def make_safe(self, why: str) -> None:
+    @property
+    def confirmed_off(self) -> bool:
+        """Whether off was confirmed, and nothing was begun or found on since."""
+        return self._off
+
+    def make_safe(self, why: str, error: BaseException | None = None) -> None:
         """Output off first, then confirmed by read-back and by a meter; NotConfirmedOff if not.
 
-        Called on every way out; harmless when everything is off already.
+        Called on every way out; harmless when everything is off already. ``error`` is what ended
+        a step, for the journal. Whatever fails in here, a full disk too, the rest is done all the
+        same; what could not be written is raised at the end.
         """
         with self._shield():
-            doubts = []
-            try:
-                self.__supply.disable()
-            except LinkError as error:
-                doubts.append(f"{self.__supply.role}'s read-back: {error}")
-            try:
-                left = self._discharged()
-                if left is not None:
-                    doubts.append(left)
-            except LinkError as error:
-                doubts.append(f"the meter: {error}")
-            try:
-                self.__load.release()
-            except LinkError as error:
-                self._journal.event("load", f"could not be released: {error}", time_s=self._then())
+            self._off, self._live = False, None
+            doubts = [
+                *_doubts(f"{self.__supply.role}'s read-back", self.__supply.disable),
+                *_doubts("the meter", self._discharged),
+            ]
+            for doubt in _doubts("could not be released", self.__load.release):
+                self._note("load", doubt)
+            if error is not None:
+                self._note("stopped", _say(error), error=type(error).__name__)
             if doubts:
-                self._journal.event("not-confirmed-off", "; ".join(doubts), time_s=self._then())
+                self._note("not-confirmed-off", "; ".join(doubts))
                 raise NotConfirmedOff(
                     "OUTPUTS NOT CONFIRMED OFF. Make the bench safe by hand: switch the supply "
                     "off at its own switch, then disconnect the exposed port, then measure it "
                     f"with a separate meter. Not confirmed by {' and by '.join(doubts)} "
                     f"(after: {why})"
                 )
-            self._journal.event("off", f"confirmed off: {why}", time_s=self._then())
+            self._off = True
+            self._note("off", f"confirmed off: {why}")
+            unwritten, self._unwritten = self._unwritten, None
+            if unwritten is not None:
+                raise unwritten
+
+    def _note(self, kind: str, text: str, **facts: object) -> None:
+        """Write down what switching off found; a journal that fails must not keep it from ending."""
+        try:
+            self._journal.event(kind, text, time_s=self._then(), **facts)
+        except Exception as fault:  # noqa: BLE001  see above
+            self._unwritten = fault
 
     def _then(self) -> float | None:
         """The time, where the clock can still be asked."""
@@ -365,16 +420,31 @@ class Guard:
         self._points.recover("exposed_voltage")
         began = self._clock.now()
         while True:
-            reading = self.read("exposed_voltage", quick=True)
+            reading = self._points.read("exposed_voltage", self.now(), quick=True)
+            try:
+                self._keep(reading)
+            except Exception as fault:  # noqa: BLE001  as in _note
+                self._unwritten = fault
             if reading.usable and abs(reading.value) < RESIDUAL_V:
                 return None
             if self._clock.now() - began > DISCHARGE_S:
                 value = f"{reading.value:.3g} V" if reading.usable else reading.status
-                return (
-                    f"the meter: exposed_voltage is still {value} {DISCHARGE_S:g} s after "
-                    "switching off"
-                )
+                return f"exposed_voltage is still {value} {DISCHARGE_S:g} s after switching off"
             self._clock.sleep(0.02)
+
+
+def _doubts(what: str, confirm: Callable[[], str | None]) -> list[str]:
+    """Nothing when ``confirm`` does, else a sentence: whatever it raises confirms nothing."""
+    try:
+        doubt = confirm()
+    except Exception as fault:  # noqa: BLE001  see above
+        doubt = _say(fault)
+    return [] if doubt is None else [f"{what}: {doubt}"]
+
+
+def _say(error: BaseException) -> str:
+    kind = type(error).__name__
+    return str(error) if isinstance(error, BenchkitError) else f"{kind}: {error}".rstrip(": ")
 
 
 class Live:
@@ -383,7 +453,7 @@ class Live:
     def __init__(self, guard: Guard, supply: Supply, load: Load, envelope: Envelope) -> None:
         self._guard, self.__supply, self.__load = guard, supply, load
         self.envelope = envelope
-        self._began_s = self._looked_s = self._read_s = guard.now()
+        self._began_s = self._looked_s = guard.now()
 
     def draw(self, current_A: float) -> None:
         """Set the load, never above the envelope's current limit (InputError)."""
@@ -392,11 +462,16 @@ class Live:
                 f"{self.envelope.name}: a load of {current_A:g} A is not inside its limit of "
                 f"{self.envelope.current_limit_A:.3g} A"
             )
+        self._guard._look_when_due()
         self.__load.draw(current_A)
 
     def rest(self) -> None:
-        """Release the load, keep the supply on."""
-        self.__load.release()
+        """Draw nothing, keep the supply on.
+
+        Not by releasing the load: what that does to be certain may take long with a load that
+        does not answer, and the supply would be on and unwatched meanwhile.
+        """
+        self.draw(0.0)
 
     def look(self) -> float:
         """Look now, whatever the polling interval; returns the time of the look."""
@@ -415,21 +490,16 @@ class Live:
         """
         now = self.look()
         until = now + seconds
+        poll_s = self._guard.ceilings.poll_s
         while (left := until - now) > 1e-6:
-            due = self._looked_s + self._guard.ceilings.poll_s - now
-            now = self._guard.sleep(min(left, due)) if due > 0 else self.look()
+            due = self._looked_s + poll_s - now
+            # A clock that was set back must not lengthen the time to the next look.
+            now = self._guard._sleep(min(left, due)) if 0 < due <= poll_s else self.look()
         return now
 
     def read(self, point: str) -> Reading:
-        """A recorded reading; overload or a lost sensor trips.
-
-        Looks first when the last look is a polling interval ago, seen from the last reading: a
-        reading's own duration is part of the stated blind time.
-        """
-        if self._read_s - self._looked_s > self._guard.ceilings.poll_s:
-            self.look()
+        """A recorded reading (see ``Guard.read``); overload or a lost sensor trips."""
         reading = self._guard.read(point)
-        self._read_s = reading.time_s
         if not reading.usable:
             self._guard._trip(point, f"gives no usable reading ({reading.status})", reading.time_s)
         return reading

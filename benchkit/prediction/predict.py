@@ -96,7 +96,10 @@ def predict(stage: Stage, samples: int = SAMPLES, seed: int = SEED) -> Predictio
         )
         for k in range(amps.size)
     ]  # fmt: skip
-    hottest = working_point(stage, drawn, working.current_max_A, supply, working.ambient_max_C)
+    # At the lowest supply voltage, where a channel's gate is driven least.
+    hottest = working_point(
+        stage, drawn, working.current_max_A, working.supply_min_V, working.ambient_max_C
+    )
     ambients = np.linspace(min(ambient, 25.0), stage.main_part.junction_max_C, 26)
     limit = stage.main_part.junction_max_C
     curve = derating(stage, stage.typical(), supply, ambients, limit)[0]
@@ -128,13 +131,16 @@ def _worst(values: Floats, away: bool) -> float:
 
 
 def _lowest_useful(stage: Stage) -> float | None:
-    """Only a channel has one: a junction drops the same from any supply voltage."""
+    """Where the board with the highest threshold the sheet allows is still really on.
+
+    Only a channel has one: a junction drops the same from any supply voltage.
+    """
     if stage.topology.control is None:
         return None
     working = stage.file.stage
     volts = np.linspace(0.5, working.supply_nominal_V, 120)
     drops = forward(
-        stage, stage.typical(), working.current_nominal_A, volts, working.ambient_nominal_C
+        stage, stage.corner(1), working.current_nominal_A, volts, working.ambient_nominal_C
     ).drop_V[0]
     good = drops <= USEFUL_RATIO * drops[-1]
     return float(volts[int(np.argmax(good))])

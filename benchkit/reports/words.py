@@ -11,6 +11,7 @@ from benchkit.records.result import Measurand
 
 NAMES = {
     "drop": "Forward drop",
+    "warm_drop": "Drop when warm",
     "case_rise": "Final case rise over ambient",
     "thermal_resistance": "Thermal resistance",
     "case_hottest": "Hottest case",

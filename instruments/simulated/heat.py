@@ -39,7 +39,7 @@ class BoardHeat:
     def resistance(self, rise_K: float) -> float:
         """Case-to-ambient resistance at a rise, from natural convection."""
         ratio = max(rise_K, 0.5) / CONVECTION_AT_K
-        return self.case_to_ambient_K_per_W * ratio**CONVECTION_EXPONENT
+        return float(self.case_to_ambient_K_per_W * ratio**CONVECTION_EXPONENT)
 
     def pass_time(self, seconds: float, loss_W: float) -> None:
         """Warm or cool for a while at constant loss (at most LONGEST_STEP_S)."""

@@ -38,6 +38,7 @@ OFF_OHM = 50.0
 LAWS_END_C = 250.0
 """The laws of the parts are not valid beyond; a real part would soon be dead."""
 NEAR_K = 1.0
+ROUNDING_S = 1e-6
 
 WIRING_FAULTS = {
     "lead-off:drop": "a Kelvin lead of this point is off: the meter floats",
@@ -113,7 +114,7 @@ class Plant:
         )
         self._thermal_V_per_K = draw.uniform(-1, 1) * drop.thermoelectric_V_per_K
         self._board: Board | None = None
-        self._inserted_at = 0.0
+        self._age_s = 0.0
         self._lived_until = timebase.now()
         self._command_supply = (0.0, 0.0, False)
         self._command_load = ("CURR", 0.0, False)
@@ -130,16 +131,28 @@ class Plant:
     def elapse(self, seconds: float) -> None:
         """Let bench time pass, and the plant live through it."""
         self._time.elapse(seconds)
+        self._live_through(seconds)
+        self._lived_until += seconds
         self._catch_up()
 
     def _catch_up(self) -> None:
-        """Live until now: in real time the clock runs on between two messages."""
+        """Live until now: in real time the clock runs on between two messages.
+
+        With a virtual clock nothing but rounding is left over here, and it is dropped: a board's
+        life must not depend on how late it was put in.
+        """
         left = self._time.now() - self._lived_until
-        while left > 1e-9:
+        if left > ROUNDING_S:
+            self._live_through(left)
+        self._lived_until = self._time.now()
+
+    def _live_through(self, seconds: float) -> None:
+        left = seconds
+        while left > 0:
             step = min(left, LONGEST_STEP_S)
             self._live(step)
             left -= step
-        self._lived_until = self._time.now()
+        self._age_s += seconds
 
     def _live(self, seconds: float) -> None:
         self._since_switch_s += seconds
@@ -189,7 +202,7 @@ class Plant:
             )
         except InputError as error:
             raise ValueError(str(error)) from None
-        self._inserted_at = self.now()
+        self._age_s = 0.0
         self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
         self._state = None
         self._guess = {}
@@ -219,7 +232,7 @@ class Plant:
         """The value of a fault whose time has come, or None."""
         if not self._faults:
             return None
-        age = self.now() - self._inserted_at
+        age = self._age_s
         values = [value for known, at_s, value in self._faults if known == name and at_s <= age]
         return values[-1] if values else None
 
@@ -276,7 +289,7 @@ class Plant:
     def _ambient(self) -> float:
         if self._board is None:
             return self._settings.ambient_C
-        age = self.now() - self._inserted_at
+        age = self._age_s
         swing = math.sin(age / 290.0 + self._board.ambient_phase)
         return self._board.ambient_C + self._board.ambient_swing_K * swing
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import datetime as dt
 from collections.abc import Iterator
 from contextlib import contextmanager
+from itertools import pairwise
 
 import pytest
 
@@ -48,7 +49,7 @@ def test_the_guard_looks_at_least_every_polling_interval() -> None:
     world, notes = World(), Notes()
     run(guard_of(world, notes), seconds=20.0)
     looks = [r.time_s for step, r in notes.readings if r.point == "case"]
-    assert max(b - a for a, b in zip(looks, looks[1:], strict=False)) <= CEILINGS.poll_s + 1e-6
+    assert max(b - a for a, b in pairwise(looks)) <= CEILINGS.poll_s + 1e-6
 
 
 @pytest.mark.parametrize(
@@ -124,7 +125,7 @@ def test_whatever_ends_the_block_ends_off(error: BaseException) -> None:
 @pytest.mark.parametrize(
     ("trouble", "words"),
     [
-        ({"stuck": True}, "reads back as on.*and by the meter"),
+        ({"stuck": True}, r"reads back as on.*and by the meter"),
         ({"stuck": True, "lying": True}, "exposed_voltage is still 12 V"),
         ({"deaf": True}, "no answer"),
         ({"meter_dead": True}, "connection closed"),

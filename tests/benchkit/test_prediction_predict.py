@@ -55,7 +55,7 @@ def test_below_the_lowest_useful_voltage_the_channel_is_not_driven(pmos: Predict
     assert lowest is not None
     assert 1.7 < lowest < 9.0
     full, here, below, off = (
-        forward(stage, stage.typical(), 3.0, volts, 25.0).drop_V[0, 0]
+        forward(stage, stage.corner(1), 3.0, volts, 25.0).drop_V[0, 0]
         for volts in (12.0, lowest, lowest - 0.3, 1.5)
     )
     assert here <= USEFUL_RATIO * full < below

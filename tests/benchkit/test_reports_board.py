@@ -226,13 +226,13 @@ def test_what_is_not_on_the_front_page_is_behind_it(tmp_path: Path) -> None:
     html = board_report(record, evaluation, MANIFEST)
     every = html[html.index('id="figures"') : html.index('id="budgets"')]
     rows = re.findall(r'<tr><td class="b">', every)
-    assert len(rows) == len(evaluation.result.measurands) == 54
+    assert len(rows) == len(evaluation.result.measurands) == 55
 
 
 def test_shares_of_a_budget_add_up(good: Made) -> None:
     rows = good[1].result.measurands
     tables = budget_tables(rows)
-    assert len(tables) == 6
+    assert len(tables) == 7
     for table in tables:
         assert sum(line.share for line in table.rows) == pytest.approx(100.0)
     assert [len(table.heads) for table in drop_tables(rows)] == [8]

@@ -133,9 +133,9 @@ def test_boards_are_compared_at_the_same_condition_though_their_own_temperatures
         f"{a} A, 12 V supply" for a in ("0.1", "0.2", "0.5", "1", "2", "3", "4", "5")
     ]
     assert [q.name for q in found][8:] == [
-        "case_hottest", "junction_margin", "case_rise", "thermal_resistance",
+        "case_hottest", "junction_margin", "warm_drop", "case_rise", "thermal_resistance",
     ]  # fmt: skip
-    assert [q.statistics.n for q in found] == [3, 3, 3, 2, 2, 2, 2, 2, 2, 2, 2, 2]
+    assert [q.statistics.n for q in found] == [3, 3, 3, 2, 2, 2, 2, 2, 2, 2, 2, 2, 2]
     margin = next(q for q in found if q.name == "junction_margin")
     assert (margin.low, margin.high) == (30.0, None)
     assert line_of(margin).limit == "≥ 30"

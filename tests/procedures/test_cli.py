@@ -8,6 +8,7 @@ import signal
 import subprocess
 import sys
 import time
+from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
@@ -170,34 +171,36 @@ def test_a_stage_too_much_for_the_bench_is_refused_before_it_is_opened(folder: P
     assert not (folder / "o").exists()
 
 
-def test_a_real_bench_wants_a_person(folder: Path) -> None:
-    """Standard input that is no terminal cannot acknowledge a caution."""
-    with subprocess.Popen(
-        [sys.executable, "-m", "procedures", "simulate", "bench.toml", "--speed", "50"],
-        cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(ROOT)},
-        stdout=subprocess.PIPE,
-        stderr=subprocess.PIPE,
-        text=True,
-    ) as served:
-        assert served.stdout is not None
-        ports = {}
-        for line in served.stdout:
+@pytest.fixture
+def served(folder: Path) -> Iterator[Path]:
+    """`simulate` in real time, and a bench file that takes its instruments for real ones."""
+    process = start("simulate", "bench.toml", "--speed", "50", cwd=folder)
+    try:
+        assert process.stdout is not None
+        text = (folder / "bench.toml").read_text()
+        text = text[: text.index("\n[simulated]\n")]
+        for line in process.stdout:
             if line.startswith("in real time"):
                 break
             name, resource = line.split()
-            ports[name] = resource
-        text = (folder / "bench.toml").read_text()
-        text = text[: text.index("[simulated]")]
-        for name in ("supply", "load", "meter", "thermometer"):
-            text = text.replace('resource = "simulated"', f'resource = "{ports[name]}"', 1)
+            if name != "control":
+                text = text.replace('resource = "simulated"', f'resource = "{resource}"', 1)
         (folder / "real.toml").write_text(text)
-        arguments = ("verify", "stage.toml", "--bench", "real.toml", "--serial", "A", "--out", "o")
-        code, _, err = run(*arguments, cwd=folder)
-        assert code == 2
-        assert "needs a person at a terminal" in err
-        served.send_signal(signal.SIGINT)
-        assert served.wait(10) == 0
+        yield folder
+        process.send_signal(signal.SIGINT)
+        assert process.wait(10) == 0
+    finally:
+        process.kill()
+        process.communicate()
+
+
+def test_a_real_bench_wants_a_person(served: Path) -> None:
+    """Standard input that is no terminal cannot acknowledge a caution."""
+    arguments = ("verify", "stage.toml", "--bench", "real.toml", "--serial", "A", "--out", "o")
+    code, _, err = run(*arguments, cwd=served)
+    assert code == 2
+    assert "needs a person at a terminal" in err
+    assert not (served / "o").exists()
 
 
 @pytest.mark.parametrize("name", ["SIGTERM", "SIGINT", "SIGHUP"])

@@ -21,6 +21,7 @@ from instruments.errors import (
     PeerClosed,
     WrongInstrument,
 )
+from instruments.simulated.child import start_child
 from procedures.verify import Done
 from tests.simulated_bench import failure, measure, workshop
 
@@ -108,11 +109,8 @@ def test_a_wrong_identity_is_refused_before_anything_is_on(tmp_path: Path) -> No
     other = folder / "other.toml"
     other.write_text(text, "utf-8")
     # The child serves what the bench file says, so serve one file and expect another.
-    import instruments.bench as module
-
-    served = module.start_child
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(module, "start_child", lambda _: served(other))
+        patch.setattr("instruments.bench.start_child", lambda _: start_child(other))
         with pytest.raises(WrongInstrument, match="meter"):
             measure(folder)
     assert not (folder / "run").exists()
