@@ -7,7 +7,7 @@ and the load stay inside the guard.
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from contextlib import AbstractContextManager, ExitStack, contextmanager, nullcontext
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -26,11 +26,11 @@ from instruments.dialects import (
     load_dialect,
     shipped_dialects,
 )
-from instruments.dialects.tables import Dialect, Timing
+from instruments.dialects.tables import Dialect, Kind, Timing
 from instruments.fixture import Fixture, HandFixture, SimulatedFixture
 from instruments.link import Link
 from instruments.load import ScpiLoad
-from instruments.meter import ScpiMeter
+from instruments.meter import SLOWEST_MAINS_HZ, ScpiMeter
 from instruments.points import BenchPoints
 from instruments.session import Session
 from instruments.simulated.child import start_child
@@ -58,19 +58,55 @@ DIALECTS: dict[str, type[Dialect]] = {
 
 
 class Traffic:
-    """Sends every SCPI message to the log of whatever run is going on."""
+    """Sends every SCPI message to the log of whatever run is going on.
+
+    A log that fails (a full disk) must not keep a message from being sent, since it may be the one
+    that switches off: the fault is kept, and raised by ``end``.
+    """
 
     def __init__(self) -> None:
-        self.log: Callable[[str, str, str], object] | None = None
+        self._log: Callable[[str, str, str], object] | None = None
+        self._fault: Exception | None = None
+
+    def begin(self, log: Callable[[str, str, str], object]) -> None:
+        """Write to this log from now on."""
+        self._log, self._fault = log, None
+
+    def end(self) -> None:
+        """Write nowhere any more; raises what kept the log from being whole."""
+        self._log = None
+        if self._fault is not None:
+            raise self._fault
 
     def of(self, role: str) -> Callable[[str, str], object]:
         """The callable that one session reports to."""
 
         def report(direction: str, text: str) -> None:
-            if self.log is not None:
-                self.log(role, direction, text)
+            if self._log is not None:
+                try:
+                    self._log(role, direction, text)
+                except Exception as fault:  # noqa: BLE001  see above
+                    self._log, self._fault = None, fault
 
         return report
+
+
+@dataclass
+class _WholeExchanges:
+    """A clock behind a link: an exchange broken off half way would leave no time to go by."""
+
+    clock: Clock
+    shield: Callable[[], AbstractContextManager[None]]
+
+    def now(self) -> float:
+        """See Clock."""
+        with self.shield():
+            return self.clock.now()
+
+    def sleep(self, seconds: float) -> float:
+        """See Clock."""
+        with self.shield():
+            return self.clock.sleep(seconds)
 
 
 @dataclass
@@ -99,7 +135,9 @@ def open_bench(
     """Open every instrument of a bench file and close them all at the end.
 
     Raises InputError for a bench file or dialect that cannot be used, and the errors of
-    ``instruments.errors`` for an instrument that cannot be reached or is another.
+    ``instruments.errors`` for an instrument that cannot be reached or is another. Outputs are
+    confirmed off before anything is handed out, and whatever is raised inside leaves with outputs
+    confirmed off, or as NotConfirmedOff.
     """
     dialects = {name: _dialect(path, name, item) for name, item in file.instruments.items()}
     with ExitStack() as stack:
@@ -119,12 +157,19 @@ def open_bench(
             )
             stack.callback(control.close)
             control.open()
-            clock, fixture = SimulatedClock(control), SimulatedFixture(control)
+            clock = _WholeExchanges(SimulatedClock(control), shield)
+            fixture = SimulatedFixture(control)
         guard = _guard(
             file, sessions, dialects, clock, operator, journal, shield=shield, watcher=watcher
         )
         identities = {name: session.identity for name, session in sessions.items()}
-        yield Bench(file, guard, fixture, traffic, identities, control)
+        try:
+            guard.start_off()
+            yield Bench(file, guard, fixture, traffic, identities, control)
+        except BaseException as error:
+            if not guard.confirmed_off and not isinstance(error, NotConfirmedOff):
+                guard.make_safe(str(error) or type(error).__name__, error)
+            raise
 
 
 def _open_all(
@@ -152,17 +197,51 @@ def _open_all(
             if name not in sessions:
                 link = dialects[name].link
                 sessions[name] = _open(stack, name, item, link, ports, traffic)
-    except LinkError:
+    except BaseException as error:
         dialect = dialects[supply]
         assert isinstance(dialect, SupplyDialect)
+        output = ScpiSupply(sessions[supply], dialect, table.channel)
         try:
-            ScpiSupply(sessions[supply], dialect, table.channel).disable()
-        except LinkError as error:
+            found_on = output.state().output_on
+            output.disable()
+        except LinkError as doubt:
             raise NotConfirmedOff(
-                f"the supply did not confirm that its output is off: {error}"
+                f"the supply did not confirm that its output is off: {doubt}"
+            ) from error
+        if found_on:
+            raise NotConfirmedOff(
+                f"{supply} was found switched on. It reads back as off now, but no meter could "
+                f"confirm it: see for yourself. The bench could not be opened: {error}"
             ) from error
         raise
     return sessions
+
+
+def longest_waits_s(file: BenchFile, dialects: Mapping[str, Dialect]) -> float:
+    """What instruments may take, at most, from a look being due until it is done and output-off
+    is sent, in seconds: every answer comes at the end of its timeout.
+
+    One operation of a procedure that had just begun (a point configured and read, or the load
+    set), then the look at supply and case, then a lost connection to the supply that is opened
+    again, twice, before output-off gets through. Emptying an error queue that an instrument has
+    filled counts as one answer.
+    """
+
+    def allowed(name: str, *kinds: Kind) -> float:
+        link = dialects[name].link
+        return sum(link.timeout(kind) + link.gap_s for kind in kinds)
+
+    operations = [allowed(file.only("load")[0], "set")]
+    for point in file.points.values():
+        meter = dialects[point.instrument]
+        if isinstance(meter, MeterDialect):
+            aperture_s = meter.reading.apertures * point.aperture_nplc / SLOWEST_MAINS_HZ
+            operations.append(allowed(point.instrument, "set", "read") + aperture_s)
+        else:
+            operations.append(allowed(point.instrument, "read"))
+    supply = file.only("supply")[0]
+    look = allowed(supply, "read") + allowed(file.points["case"].instrument, "read")
+    return max(operations) + look + 2 * dialects[supply].link.open_s
 
 
 def _guard(
@@ -197,6 +276,7 @@ def _guard(
         Ceilings.of(file.bench),
         {name: item.calibration_due for name, item in file.instruments.items()},
         dt.datetime.now(dt.UTC).date(),
+        waits_s=longest_waits_s(file, dialects),
         shield=shield,
         watcher=watcher,
     )

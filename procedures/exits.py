@@ -6,7 +6,7 @@ import os
 import sys
 import traceback
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 
 import typer
 
@@ -22,9 +22,16 @@ def report_error(error: BenchkitError) -> int:
     if isinstance(error, NotConfirmedOff):
         bar = "!" * 78
         text = f"{bar}\n{text}\n{bar}"
-    for number, line in enumerate(text.splitlines()):
-        sys.stderr.write(f"benchkit: {line}\n" if number == 0 else f"  {line}\n")
+    first, *others = text.splitlines() or [type(error).__name__]
+    _complain("\n  ".join([f"benchkit: {first}", *others]))
     return error.exit_code
+
+
+def _complain(text: str) -> None:
+    """To standard error; a terminal that is gone must not change the exit code."""
+    with suppress(OSError, ValueError):
+        sys.stderr.write(text + "\n")
+        sys.stderr.flush()
 
 
 @contextmanager
@@ -32,21 +39,40 @@ def leaving() -> Iterator[None]:
     """No traceback reaches a user (set BENCHKIT_DEBUG=1 to see one)."""
     try:
         yield
+    except typer.Exit as done:
+        if not _all_written() and done.exit_code < INTERNAL:
+            _complain("benchkit: standard output could not be written")
+            raise typer.Exit(INTERNAL) from None
+        raise
     except BenchkitError as error:
         raise typer.Exit(report_error(error)) from None
     except KeyboardInterrupt:
-        sys.stderr.write("benchkit: stopped by Ctrl-C\n")
+        _complain("benchkit: stopped by Ctrl-C")
         raise typer.Exit(INTERNAL) from None
     except BrokenPipeError:
-        sys.stderr.close()
         raise typer.Exit(INTERNAL) from None
-    except Exception as error:  # a defect of ours: say so, in one line
-        if isinstance(error, typer.Exit):
-            raise
+    except OSError as error:
+        _complain(f"benchkit: {error.filename or 'a file'}: {error.strerror or error}")
+        raise typer.Exit(INTERNAL) from None
+    except Exception as error:  # noqa: BLE001  a defect of ours: say so, in one line
         if os.environ.get(DEBUG):
             traceback.print_exc()
-        sys.stderr.write(
+        _complain(
             f"benchkit: defect in benchkit itself: {type(error).__name__}: {error} (outputs were "
-            f"switched off if any were on; run again with {DEBUG}=1 and report what it prints)\n"
+            f"switched off if any were on; run again with {DEBUG}=1 and report what it prints)"
         )
         raise typer.Exit(INTERNAL) from None
+    finally:
+        _all_written()
+
+
+def _all_written() -> bool:
+    """Whether standard output took everything. What it did not is dropped here: at the end of the
+    process it would turn the exit code into another."""
+    try:
+        sys.stdout.flush()
+    except (OSError, ValueError):
+        with suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return False
+    return True

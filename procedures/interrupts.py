@@ -3,13 +3,22 @@
 from __future__ import annotations
 
 import signal
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from types import FrameType
 
 from benchkit.errors import OperatorStopped
 
-NAMES = ("SIGINT", "SIGTERM", "SIGHUP")
+NAMES = ("SIGINT", "SIGTERM", "SIGHUP", "SIGQUIT", "SIGTSTP")
+"""Ctrl-Z too: a process that is suspended watches nothing."""
+REPEAT_S = 2.0
+"""A signal this soon after another is its repetition: the run is on its way out already, and must
+not be stopped between the first and the switching off."""
+
+
+class _Interrupt(KeyboardInterrupt):
+    """A signal on its way out. No Exception, so that nothing takes it for a fault of the link."""
 
 
 class Interrupts:
@@ -18,6 +27,7 @@ class Interrupts:
     def __init__(self) -> None:
         self._shielded = 0
         self._waiting: str | None = None
+        self._raised_s = float("-inf")
 
     @contextmanager
     def listening(self) -> Iterator[Interrupts]:
@@ -26,6 +36,8 @@ class Interrupts:
         before = {number: signal.signal(number, self._handle) for number in numbers}
         try:
             yield self
+        except _Interrupt as interrupt:
+            raise OperatorStopped(str(interrupt)) from None
         finally:
             for number, handler in before.items():
                 signal.signal(number, handler)
@@ -43,7 +55,7 @@ class Interrupts:
             self._shielded -= 1
         if self._waiting is not None and not self._shielded:
             name, self._waiting = self._waiting, None
-            raise OperatorStopped(f"stopped by {name}")
+            self._stop(name)
 
     def _handle(self, number: int, frame: FrameType | None) -> None:
         del frame
@@ -51,4 +63,9 @@ class Interrupts:
         if self._shielded:
             self._waiting = name
         else:
-            raise OperatorStopped(f"stopped by {name}")
+            self._stop(name)
+
+    def _stop(self, name: str) -> None:
+        before, self._raised_s = self._raised_s, time.monotonic()
+        if self._raised_s - before > REPEAT_S:
+            raise _Interrupt(f"stopped by {name}")

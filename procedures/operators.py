@@ -31,7 +31,8 @@ class ConsoleOperator:
     def instruct(self, text: str) -> bool:
         """Ask for something to be done, and wait for the answer."""
         self._screen.console.print(f"TO DO  {text}", style="bold", markup=False)
-        return self._ask("Enter when it is done, or stop: ").strip().lower() not in ("stop", "no")
+        answer = self._ask("Enter when it is done, anything else to stop: ")
+        return answer.strip().lower() in ("", "yes", "done")
 
     def _ask(self, prompt: str) -> str:
         self._screen.console.print(prompt, end="", markup=False)

@@ -50,8 +50,8 @@ class Plan:
     def lines(self) -> Iterator[str]:
         """For `--dry-run`."""
         for number, step in enumerate(self.steps, start=1):
-            yield f"{number}. {step.name} (about {_spell(step.seconds)}): {step.text}"
-        yield f"at most {_spell(self.seconds)} in all; no fuse is at risk"
+            yield f"{number}. {step.name} ({_spell(step.seconds)}): {step.text}"
+        yield f"at most {_spell(self.seconds)} of bench time in all; no fuse is at risk"
         for caution in self.cautions:
             yield f"caution: {caution}"
 
@@ -102,8 +102,8 @@ def plan_board(stage: Stage, bench: BenchFile) -> Plan:
             f"{REST_READINGS} readings of case and ambient, nothing on",
             REST_READINGS * REST_GAP_S,
         ),
-        Step("zero", f"{ZEROS} zero readings of drop and current", ZEROS * aperture),
         Step("polarity", "1 V at 50 mA: plus is plus, and the meters agree", 0.5),
+        Step("zero", f"{ZEROS} zero readings of drop and current", ZEROS * aperture),
         Step(
             "forward sweep",
             f"{', '.join(f'{a:g}' for a in file.sweep.currents_A)} A, up and then down, "
@@ -140,4 +140,6 @@ def plan_board(stage: Stage, bench: BenchFile) -> Plan:
 
 
 def _spell(seconds: float) -> str:
+    if seconds < 1:
+        return "under 1 s"
     return f"{seconds:.0f} s" if seconds < 120 else f"{seconds / 60:.0f} min"

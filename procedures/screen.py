@@ -7,12 +7,11 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 
 from rich.console import Console
-from rich.progress import BarColumn, Progress, TaskID, TextColumn, TimeElapsedColumn
+from rich.progress import BarColumn, Progress, TaskID, TextColumn
 
 from benchkit.reading import Reading
 
-SHOWN = ("drop", "exposed_current", "supply_voltage", "case")
-LABELS = {"drop": "drop", "exposed_current": "current", "supply_voltage": "supply", "case": "case"}
+LABELS = {"drop": "drop", "exposed_current": "current", "case": "case"}
 REFRESH_S = 0.1
 
 
@@ -43,10 +42,9 @@ class Screen:
             yield
             return
         columns = (
-            TextColumn("{task.description:<28}", markup=False),
+            TextColumn("{task.description:<16}", markup=False),
             BarColumn(bar_width=24),
             TextColumn("{task.percentage:>3.0f} %"),
-            TimeElapsedColumn(),
             TextColumn("{task.fields[readings]}", markup=False),
         )
         with Progress(*columns, console=self.console, transient=True) as bar:
@@ -66,14 +64,14 @@ class Screen:
 
     def reading(self, reading: Reading) -> None:
         """Show a live reading beside the bar."""
-        if self._progress is None or self._task is None or reading.point not in SHOWN:
+        if self._progress is None or self._task is None or reading.point not in LABELS:
             return
         value = _short(reading.value, reading.unit) if reading.usable else reading.status
         self._latest[reading.point] = f"{LABELS[reading.point]} {value}"
         now = time.monotonic()
         if now - self._shown_s > REFRESH_S:
             self._shown_s = now
-            text = "  ".join(self._latest[p] for p in SHOWN if p in self._latest)
+            text = "  ".join(self._latest[p] for p in LABELS if p in self._latest)
             self._progress.update(self._task, readings=text)
 
 

@@ -34,7 +34,7 @@ def serve_bench(path: Path, speed: float) -> int:
             "simulated bench being served?"
         ) from None
     stop = threading.Event()
-    with servers, Interrupts().listening(), suppress(OperatorStopped):
+    with servers, suppress(OperatorStopped), Interrupts().listening():
         for name, port in servers.ports.items():
             sys.stdout.write(f"{name:<14} TCPIP::127.0.0.1::{port}::SOCKET\n")
         sys.stdout.write(

@@ -9,8 +9,17 @@ from dataclasses import dataclass
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 
-from benchkit.errors import BenchkitError, LinkError, NotConfirmedOff, Stopped, Tripped
+from benchkit.errors import (
+    BenchkitError,
+    InputError,
+    LinkError,
+    NotConfirmedOff,
+    OperatorStopped,
+    Stopped,
+    Tripped,
+)
 from benchkit.evaluation.evaluate import Evaluation, evaluate
+from benchkit.guard import Guard
 from benchkit.records.record import read_json, read_record
 from benchkit.records.run_folder import RunFolder, write_text
 from benchkit.stage import Stage
@@ -48,34 +57,59 @@ class Job:
 def run_board(bench: Bench, job: Job, serial: str, folder: Path, screen: Screen) -> Done:
     """Measure one board into ``folder``, which must not exist yet. Its report is yet to be drawn.
 
-    Never raises for what stops a run: ``Done.error`` carries it, with the record closed.
+    Does not raise for what stops a run: ``Done.error`` carries it, with the record closed. Raises
+    Stopped when the record cannot be written, and whatever else is no BenchkitError; never without
+    the outputs confirmed off, or NotConfirmedOff.
     """
+    if folder.exists():
+        raise InputError(f"{folder}: is there already; a run needs a folder of its own")
     error: BenchkitError | None = None
-    status = "finished"
-    with RunFolder(folder, job.inputs) as run:
-        bench.traffic.log = run.traffic
-        try:
+    try:
+        with RunFolder(folder, job.inputs) as run:
+            bench.traffic.begin(run.traffic)
             try:
                 _measure(bench, job, serial, run, screen)
-            except LinkError as lost:
-                run.event("stopped", str(lost), error=type(lost).__name__)
-                bench.guard.make_safe(str(lost))
-                raise
-        except (Stopped, LinkError) as stopped:
-            error, status = stopped, _status(stopped)
-            if status != "not-confirmed-off" and not _told(folder, str(stopped)):
-                run.event("stopped", str(stopped), error=type(stopped).__name__)
-        finally:
-            bench.traffic.log = None
-        evaluation = evaluate(read_record(folder), serial)
-        run.close({"result.json": evaluation.result.document()}, _manifest(bench, serial, status))
+            except BaseException as stopped:  # noqa: BLE001  raised again when it is none of ours
+                error = _secured(bench.guard, stopped)
+            if isinstance(error, NotConfirmedOff):
+                screen.caution(str(error))  # at once: the report and the exit code come later
+            bench.traffic.end()
+            if error is not None and str(error) not in read_record(folder).said("stopped"):
+                run.event("stopped", str(error), error=type(error).__name__)
+            status = "finished" if error is None else _status(error)
+            evaluation = evaluate(read_record(folder), serial)
+            documents = {"result.json": evaluation.result.document()}
+            run.close(documents, _manifest(bench, serial, status))
+    except BaseException as fault:
+        # A record that cannot be closed must not hide that the outputs may be on.
+        if error is not None:
+            raise error from fault
+        if isinstance(fault, OSError):
+            raise Stopped(
+                f"{folder}: the record or the screen cannot be written: {fault}"
+            ) from fault
+        raise
     return Done(folder, evaluation, status, error)
+
+
+def _secured(guard: Guard, stopped: BaseException) -> BenchkitError:
+    """What ended a run, once nothing is on any more; raises what is none of ours."""
+    if not guard.confirmed_off and not isinstance(stopped, NotConfirmedOff):
+        try:
+            guard.make_safe(str(stopped) or type(stopped).__name__, stopped)
+        except NotConfirmedOff as worse:
+            return worse
+    if isinstance(stopped, KeyboardInterrupt):
+        return OperatorStopped(str(stopped) or "stopped by Ctrl-C")
+    if isinstance(stopped, (Stopped, LinkError)):
+        return stopped
+    raise stopped
 
 
 def _measure(bench: Bench, job: Job, serial: str, run: RunFolder, screen: Screen) -> None:
     guard, file = bench.guard, bench.file
-    bench.fixture.place(serial, job.stage_path)
     guard.begin(run)
+    bench.fixture.place(serial, job.stage_path)
     guard.step("permissives")
     guard.permit()
     read_rest(guard)
@@ -90,10 +124,6 @@ def _status(error: BenchkitError) -> str:
     if isinstance(error, NotConfirmedOff):
         return "not-confirmed-off"
     return "tripped" if isinstance(error, Tripped) else "stopped"
-
-
-def _told(folder: Path, text: str) -> bool:
-    return text in read_record(folder).said("stopped")
 
 
 def _manifest(bench: Bench, serial: str, status: str) -> dict[str, object]:

@@ -27,6 +27,7 @@ class World:
     case_C: float = 25.0
     ambient_C: float = 25.0
     said: list[str] = field(default_factory=list)
+    points_read: list[str] = field(default_factory=list)
     stuck: bool = False
     lying: bool = False
     deaf: bool = False
@@ -38,9 +39,17 @@ class World:
     sensor_lost: bool = False
     lead_off: bool = False
     heating_K_per_s: float = 0.0
+    load_stuck: bool = False
+    reading_s: float = 0.0
+    broken: dict[str, Exception] = field(default_factory=dict)
+    """What the supply, the load or the meter raises, by what is asked of it."""
 
     def port_V(self) -> float:
         return self.polarity * self.volts if self.on else self.residual_V
+
+    def break_at(self, what: str) -> None:
+        if what in self.broken:
+            raise self.broken[what]
 
     def pass_time(self, seconds: float) -> None:
         self.time_s += seconds
@@ -55,6 +64,7 @@ class StandInSupply:
 
     def _heard(self, what: str) -> None:
         self.world.said.append(what)
+        self.world.break_at(what)
         if self.world.deaf:
             raise LinkError("supply: no answer")
 
@@ -76,6 +86,7 @@ class StandInSupply:
         self.world.said.append("off")
         if not self.world.stuck:
             self.world.on = False
+        self.world.break_at("off")
         if self.world.deaf:
             raise LinkError("supply: no answer")
         if self.world.stuck and not self.world.lying:
@@ -99,6 +110,9 @@ class StandInLoad:
 
     def release(self) -> None:
         self.world.said.append("release")
+        self.world.break_at("release")
+        if self.world.load_stuck:
+            raise LinkError("load: input reads back as on")
         self.world.load_A = 0.0
 
 
@@ -121,6 +135,9 @@ class StandInPoints:
     def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
         del quick
         w = self.world
+        w.points_read.append(point)
+        w.break_at(f"read {point}")
+        w.pass_time(w.reading_s)
         if w.meter_dead and point not in ("case", "ambient"):
             raise LinkError("meter: connection closed")
         values = {
@@ -185,6 +202,8 @@ def guard_of(
     due: dt.date = dt.date(2027, 1, 1),
     operator: StandInOperator | None = None,
     shield: Callable[[], AbstractContextManager[None]] = nullcontext,
+    watcher: Callable[[Reading], None] | None = None,
+    waits_s: float = 0.0,
 ) -> Guard:
     return Guard(
         StandInSupply(world),
@@ -196,5 +215,7 @@ def guard_of(
         Ceilings(voltage_max_V=30, current_max_A=10, power_max_W=200, case_max_C=110, poll_s=1.0),
         {"meter": due},
         TODAY,
+        waits_s=waits_s,
         shield=shield,
+        watcher=watcher,
     )

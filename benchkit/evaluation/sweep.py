@@ -20,6 +20,10 @@ Floats = NDArray[np.float64]
 ZERO_LIMITS = 4.0
 """A zero further off than this many declared offset limits is not an offset of the meter."""
 LAWS_END_C = 250.0
+SPREAD_SHARE = 1 / 3
+"""The mean of up and down is taken at times that lie alike around the turning point, so a steady
+warming cancels: what is left of half their difference is taken as this share at most (common
+practice, no source)."""
 SLOPE_SHARE = 0.1
 """Relative limit of error of the slope by which a drop is carried to the exact current."""
 
@@ -122,7 +126,7 @@ def junctions_C(drops: Sequence[DropAt], junction_to_case_K_per_W: float) -> Flo
     """Junction temperature at each drop, for the datasheet's laws, which end at LAWS_END_C: an
     open part seems to burn far more than it does."""
     hot = [d.case_C + junction_to_case_K_per_W * d.drop_V * d.current_A for d in drops]
-    return np.minimum(np.array(hot), LAWS_END_C)
+    return np.minimum(np.array(hot, dtype=np.float64), np.float64(LAWS_END_C))
 
 
 def read_zero(record: Record, point: PointName, range_V: float, scale: float) -> Zero:
@@ -159,7 +163,7 @@ def drop_at(sweep: Sweep, bench: BenchFile, target_A: float) -> DropAt:
     spread = 0.5 * float(carried.max() - carried.min())
     components = [
         *reading_components(sweep, bench, drop, target_A, slope, int(chosen.sum()), "sweep"),
-        rectangular("up against down: heat and contact", spread),
+        rectangular("up against down: heat and contact", SPREAD_SHARE * spread),
         rectangular("carried to the exact current", SLOPE_SHARE * moved),
         rectangular("fixture inside the Kelvin taps", table.lead_tolerance_ohm * target_A),
         rectangular("thermoelectric voltages", table.thermoelectric_V_per_K * rise),

@@ -94,9 +94,7 @@ class Envelope:
         _within(name, "current limit", limit, ceilings.current_max_A, "A", "bench.current_max_A")
         power = self.voltage_V * limit
         _within(name, "power", power, ceilings.power_max_W, "W", "bench.power_max_W")
-        _within(
-            name, "case limit", self.case_max_C, ceilings.case_max_C, "C", "bench.case_max_C"
-        )
+        _within(name, "case limit", self.case_max_C, ceilings.case_max_C, "C", "bench.case_max_C")
 
     def sentence(self) -> str:
         """For plans and cautions."""

@@ -402,7 +402,7 @@ class Guard:
                 raise unwritten
 
     def _note(self, kind: str, text: str, **facts: object) -> None:
-        """Write down what switching off found; a journal that fails must not keep it from ending."""
+        """Write down what switching off found; a journal that fails must not break it off."""
         try:
             self._journal.event(kind, text, time_s=self._then(), **facts)
         except Exception as fault:  # noqa: BLE001  see above
@@ -443,8 +443,9 @@ def _doubts(what: str, confirm: Callable[[], str | None]) -> list[str]:
 
 
 def _say(error: BaseException) -> str:
-    kind = type(error).__name__
-    return str(error) if isinstance(error, BenchkitError) else f"{kind}: {error}".rstrip(": ")
+    if isinstance(error, (BenchkitError, KeyboardInterrupt)) and str(error):
+        return str(error)
+    return f"{type(error).__name__}: {error}".rstrip(": ")
 
 
 class Live:

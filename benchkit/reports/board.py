@@ -20,6 +20,8 @@ from benchkit.reports.words import (
     figures_of,
     named,
     place_in_band,
+    rescaled,
+    shown_in,
     strip_of,
     unit_of,
 )
@@ -92,8 +94,11 @@ def board_report(record: Record, evaluation: Evaluation, manifest: Mapping[str, 
     overdue = [i for i in instruments if i.overdue]
     simulated = record.bench.is_simulated or manifest.get("clock") == "simulated"
     not_off = record.said("not-confirmed-off")
+    # What was not tested has its own place: not a second time among reasons and remarks.
+    why = [text for text in result.why if text not in result.not_tested]
+    told = {*why, *result.not_tested}
     front = front_page(
-        result.measurands, result.why, [t for t in result.findings if t not in result.why],
+        result.measurands, why, [t for t in result.findings if t not in told],
         2 * bool(not_off) + simulated + bool(overdue), result.not_tested,
     )  # fmt: skip
     return render(
@@ -118,10 +123,12 @@ def board_report(record: Record, evaluation: Evaluation, manifest: Mapping[str, 
 def _groups(rows: Sequence[Measurand]) -> list[Group]:
     groups = []
     for (name, unit), group in groupby(rows, key=lambda row: (row.name, row.unit)):
-        members = list(group)
+        found = list(group)
+        factor, shown = shown_in(unit, found)
+        members = [rescaled(row, factor, shown) for row in found]
         parts = [row.condition.split(", ") for row in members]
         shared = [p for p in parts[0] if len(parts) > 1 and all(p in other for other in parts)]
-        title = ", ".join([f"{named(name)} ({unit_of(unit)})", *shared])
+        title = ", ".join([f"{named(name)} ({unit_of(shown)})", *shared])
         groups.append(Group(title, [
             _row(row, ", ".join(p for p in own if p not in shared))
             for row, own in zip(members, parts, strict=True)

@@ -18,6 +18,7 @@ from benchkit.evaluation.evaluate import Evaluation
 from benchkit.evaluation.soak import Soak
 from benchkit.records.result import Measurand
 from benchkit.reports.law import FittedLaw
+from benchkit.reports.words import shown_in
 
 Floats = NDArray[np.float64]
 
@@ -51,7 +52,10 @@ STYLE: dict[Any, Any] = {
     "ytick.color": GREY,
     "xtick.labelcolor": INK,
     "ytick.labelcolor": INK,
-    "legend.frameon": False,
+    "legend.facecolor": "white",
+    "legend.edgecolor": "none",
+    "legend.framealpha": 0.9,
+    "legend.borderpad": 0.2,
     "legend.fontsize": 7.5,
     "lines.linewidth": 1.3,
     "hatch.linewidth": 0.5,
@@ -106,9 +110,11 @@ def as_svg(figure: Any, label: str) -> str:
 def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | None) -> None:
     sweep, junction = evaluation.sweep, evaluation.stage.topology.conducts == "junction"
     assert sweep is not None
+    measured = _measured(evaluation)
+    factor, unit = shown_in("V", measured)
     rows = [
         (drop, row)
-        for drop, row in zip(evaluation.drops, _measured(evaluation), strict=True)
+        for drop, row in zip(evaluation.drops, measured, strict=True)
         if row.predicted is not None
     ]
     if junction and sweep.current_A.min() > 0:
@@ -116,7 +122,7 @@ def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | N
     if rows:
         amps = np.array([drop.current_A for drop, _ in rows])
         low, typical, high = (
-            np.array([(row.predicted or {})[key] for _, row in rows])
+            factor * np.array([(row.predicted or {})[key] for _, row in rows])
             for key in ("low", "nominal", "high")
         )
         fine = _between(amps, junction)
@@ -129,14 +135,14 @@ def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | N
             linestyle=(0, (5, 3)), label="datasheet, typical part",
         )  # fmt: skip
     if isinstance(law, FittedLaw):
-        top.plot(law.current_A, law.curve_V, color=INK, linewidth=1.0, label="fitted law")
+        top.plot(law.current_A, factor * law.curve_V, color=INK, linewidth=1.0, label="fitted law")
     for up, marker, colour, label in (
         (True, "^", BLUE, "measured, going up"), (False, "v", ORANGE, "measured, coming down"),
     ):  # fmt: skip
         chosen = sweep.rising == up
         if chosen.any():
             top.plot(
-                sweep.current_A[chosen], sweep.drop_V[chosen], marker, color=colour,
+                sweep.current_A[chosen], factor * sweep.drop_V[chosen], marker, color=colour,
                 markersize=5.0, markerfacecolor=colour if up else "white", label=label,
             )  # fmt: skip
             if isinstance(law, FittedLaw):
@@ -144,13 +150,17 @@ def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | N
                     sweep.current_A[chosen], 1e3 * law.residual_V[chosen], marker, color=colour,
                     markersize=4.0, markerfacecolor=colour if up else "white",
                 )  # fmt: skip
-    _drop_limits(top, evaluation, junction)
+    _drop_limits(top, evaluation, junction, factor)
     if not junction:
         most = float(sweep.current_A.max())
         top.set_xlim(-0.03 * most, 1.05 * most)
-    top.set_ylim(bottom=None if junction else min(0.0, float(sweep.drop_V.min())))
+    bottom, high = top.get_ylim()
+    if not junction:
+        bottom = min(0.0, factor * float(sweep.drop_V.min()))
+    # Room for a limit's value above the highest of all marks.
+    top.set_ylim(bottom, high + 0.06 * (high - bottom))
     top.set_title("Forward drop against current", y=1.0)
-    top.set_ylabel("drop (V)")
+    top.set_ylabel(f"drop ({unit})")
     below.set_ylabel("residual (mV)")
     below.set_xlabel("current (A)" + (", logarithmic" if junction else ""))
     below.axhline(0.0, color=INK, linewidth=0.8)
@@ -171,11 +181,11 @@ def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | N
             0.5, 0.5, "no law was fitted, so there are no residuals", ha="center", va="center",
             transform=below.transAxes, color=GREY,
         )  # fmt: skip
-    top.legend(loc="upper left", ncols=2)
+    top.legend(loc="best", ncols=2)
 
 
-def _drop_limits(top: Any, evaluation: Evaluation, junction: bool) -> None:
-    """A short bar at each limit, with teeth on the side that is not allowed."""
+def _drop_limits(top: Any, evaluation: Evaluation, junction: bool, factor: float) -> None:
+    """A short bar at each limit, its value above, on the side that is not allowed."""
     span = top.get_xlim()[1]
     label: str | None = "limit"
     assert evaluation.sweep is not None
@@ -185,8 +195,12 @@ def _drop_limits(top: Any, evaluation: Evaluation, junction: bool) -> None:
             continue
         at = limit.current_A
         ends = (at / 1.12, at * 1.12) if junction else (at - 0.02 * span, at + 0.02 * span)
-        top.plot(ends, (limit.max_V, limit.max_V), color=PURPLE, linewidth=2.2, label=label)
-        top.plot([at], [limit.max_V], "|", color=PURPLE, markersize=5.0, markeredgewidth=1.4)
+        most = factor * limit.max_V
+        top.plot(ends, (most, most), color=PURPLE, linewidth=2.2, label=label)
+        top.annotate(
+            f"≤ {most:.6g}", (at, most), xytext=(0, 2.5), textcoords="offset points",
+            ha="center", va="bottom", fontsize=7.0, color=PURPLE,
+        )  # fmt: skip
         label = None
 
 
@@ -209,7 +223,7 @@ def _heat(top: Any, below: Any, soak: Soak) -> None:
         if known:
             top.fill_between(
                 fine, curve - 1.96 * u, curve + 1.96 * u, color=SKY, alpha=0.35, linewidth=0,
-                label="its uncertainty (95 %)",
+                label="fitted curve ± U",
             )  # fmt: skip
         else:
             curve = np.where(fine <= end, curve, np.nan)

@@ -10,13 +10,21 @@ from benchkit.evaluation.evaluate import Evaluation
 from benchkit.evaluation.verdict import rounded
 from benchkit.metrology import overall
 from benchkit.records.record import Record
-from benchkit.records.result import Verdict
+from benchkit.records.result import Result, Verdict
 from benchkit.reports.lot_figures import lot_figure
 from benchkit.reports.pages import render
-from benchkit.reports.quantities import Quantity, line_of, quantities_of, remarks_on
-from benchkit.reports.words import NONE, degrees, named, unit_of
+from benchkit.reports.quantities import (
+    Quantity,
+    left_out_of,
+    line_of,
+    quantities_of,
+    remarks_on,
+    same_condition,
+)
+from benchkit.reports.words import NONE, degrees, named, rescaled, unit_of
 
-PANELS = 14
+KEY = ("warm_drop", "case_hottest", "junction_margin", "thermal_resistance")
+"""Drawn board by board even where nothing is asked of them."""
 COLUMNS = 5
 """Key figures beside each serial."""
 REASONS = 3
@@ -63,18 +71,23 @@ def lot_report(
     counted = [k for k, (_, e, _) in enumerate(runs) if last[e.result.serial] == k]
     results = [runs[k][1].result for k in counted]
     serials = [result.serial for result in results]
-    quantities = quantities_of([result.measurands for result in results])
+    failed = [k for k, result in enumerate(results) if result.verdict == "fail"]
+    quantities = quantities_of([result.measurands for result in results], failed)
     missing = [serial for serial in planned if serial not in last]
     verdicts: list[Verdict] = [result.verdict for result in results]
     owed: list[Verdict] = ["undecided"] * len(missing)
     verdict = overall([*verdicts, *owed])
-    panels, keys = _chosen(quantities, PANELS), _chosen(quantities, COLUMNS)
+    panels, keys = _drawn(quantities), _chosen(quantities)
     boards = []
     for k, (_, evaluation, link) in enumerate(runs):
         result = evaluation.result
-        mine = quantities_of([result.measurands])
-        found = {(q.name, q.condition): q.rows[0] for q in mine}
-        cells = [found.get((key.name, key.condition)) for key in keys]
+        # Not by place in the lot: a run that a later one supersedes has none.
+        mine = {(m.name, same_condition(m.condition)): m for m in result.measurands}
+        cells = [
+            None if (row := mine.get((key.name, key.condition))) is None
+            else rescaled(row, key.factor, key.unit)
+            for key in keys
+        ]  # fmt: skip
         boards.append(Board(
             result.serial, quote(link, safe="/"), result.verdict,
             [NONE if c is None or c.measured is None else rounded(c.measured, c.U)[0]
@@ -93,19 +106,40 @@ def lot_report(
         again=len(runs) - len(counted), different=different,
         figure=Markup(lot_figure(panels, serials)), undrawn=len(quantities) - len(panels),
         lines=[line_of(quantity) for quantity in quantities], remarks=remarks_on(quantities),
+        left_out=left_out_of(quantities, serials, failed),
         keys=[(named(q.name), degrees(q.condition), unit_of(q.unit)) for q in keys],
         boards=boards,
-        not_tested=list(dict.fromkeys(t for r in results for t in r.not_tested)),
+        not_tested=_not_tested(results),
     )  # fmt: skip
 
 
-def _chosen(quantities: Sequence[Quantity], most: int) -> list[Quantity]:
+def _drawn(quantities: Sequence[Quantity]) -> list[Quantity]:
+    """What is judged and what matters besides; of drops that nothing is asked of, the largest."""
+    drops = [q for q in quantities if q.name == "drop"]
+    last = [] if any(q.judged for q in drops) else drops[-1:]
+    return [q for q in quantities if q.judged or q.name in KEY or q in last]
+
+
+def _chosen(quantities: Sequence[Quantity]) -> list[Quantity]:
     """Judged figures first, then heat, then the other drops; in their own order."""
     order = sorted(
         range(len(quantities)),
         key=lambda k: (not quantities[k].judged, quantities[k].name == "drop", k),
     )
-    return [quantities[k] for k in sorted(order[:most])]
+    return [quantities[k] for k in sorted(order[:COLUMNS])]
+
+
+def _not_tested(results: Sequence[Result]) -> list[str]:
+    """Each sentence once; with the serials, where it does not hold for every board."""
+    whose: dict[str, list[str]] = {}
+    for result in results:
+        for text in result.not_tested:
+            whose.setdefault(text, []).append(result.serial)
+    told = []
+    for text, serials in whose.items():
+        names = ", ".join(serials) if len(serials) <= REASONS else f"{len(serials)} boards"
+        told.append(text if len(serials) == len(results) else f"{names}: {text}")
+    return told
 
 
 def _different(
@@ -119,10 +153,11 @@ def _different(
         result = evaluation.result
         reasons = []
         if result.verdict != "pass":
-            reasons = list(result.why[:REASONS])
-            if len(result.why) > REASONS:
-                reasons.append(f"and {len(result.why) - REASONS} more, in its own report")
-        odd = [q for q in quantities if place in q.statistics.outliers]
+            why = [text for text in result.why if text not in result.not_tested]
+            reasons = why[:REASONS]
+            if len(why) > REASONS:
+                reasons.append(f"and {len(why) - REASONS} more, in its own report")
+        odd = [q for q in quantities if place in q.odd]
         if odd:
             reasons.append(_outlier(odd, place))
         if reasons:
@@ -132,7 +167,7 @@ def _different(
 
 
 def _outlier(odd: Sequence[Quantity], place: int) -> str:
-    """Names the figure that is furthest out, in standard deviations of the lot."""
+    """Names the figure that is furthest out, in standard deviations of the boards that do not."""
 
     def far(quantity: Quantity) -> float:
         s = quantity.statistics
@@ -140,10 +175,11 @@ def _outlier(odd: Sequence[Quantity], place: int) -> str:
 
     worst = max(odd, key=far)
     s, unit = worst.statistics, unit_of(worst.unit)
-    value = rounded(worst.values[place], s.sd)[0]
+    row = worst.rows[place]
+    value = rounded(worst.values[place], row.U if row is not None else None)[0]
     mean, sd = rounded(s.mean, s.sd)
     more = f", and stands out in {len(odd) - 1} more" if len(odd) > 1 else ""
     return (
-        f"stands out from the lot: {worst.title} is {value} {unit}, the lot's mean is {mean} "
-        f"{unit} with a standard deviation of {sd} {unit}{more}"
+        f"stands out from the lot: {worst.title} is {value} {unit}, the other boards' mean is "
+        f"{mean} {unit} with a standard deviation of {sd} {unit}{more}"
     )

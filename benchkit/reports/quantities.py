@@ -3,28 +3,40 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass
 
 from benchkit.evaluation.verdict import rounded
-from benchkit.lots import LotStatistics, summarise
+from benchkit.lots import LotStatistics, generalised_esd, summarise
 from benchkit.metrology import Limit
 from benchkit.records.result import Measurand
-from benchkit.reports.words import NONE, degrees, named, plain, unit_of
+from benchkit.reports.words import NONE, degrees, named, plain, rescaled, shown_in, unit_of
 
+FEWEST = 5
+"""Among fewer boards none is said to stand out: two that chance to be close would damn a third."""
 UNLIKELY = 0.01
 """A probability below this is worth a remark: a lot has many figures, and chance has its share."""
 
 
 @dataclass(frozen=True)
 class Quantity:
-    """One figure of every board: ``rows`` in the order of the boards, None where it is missing."""
+    """One figure of every board: ``rows`` in the order of the boards, None where it is missing.
+
+    All of it is in ``unit``, which is the record's or a smaller one. ``statistics`` speak of the
+    boards that are not ``left_out``.
+    """
 
     name: str
     condition: str
     unit: str
+    factor: float
+    """From the record's unit to this one."""
     rows: list[Measurand | None]
     statistics: LotStatistics
+    odd: frozenset[int]
+    """Places of the boards that stand out from the others in this figure."""
+    left_out: frozenset[int]
+    """Places of the boards that stand out or fail, whether or not they have a value."""
     low: float | None
     high: float | None
 
@@ -44,19 +56,24 @@ class Quantity:
         return [math.nan if r is None or r.measured is None else r.measured for r in self.rows]
 
 
-def quantities_of(boards: Sequence[Sequence[Measurand]]) -> list[Quantity]:
-    """Gather the rows of all boards, in the order in which they first occur."""
+def quantities_of(
+    boards: Sequence[Sequence[Measurand]], failed: Collection[int] = ()
+) -> list[Quantity]:
+    """Gather the rows of all boards, in the order in which they first occur.
+
+    failed: places of the boards whose verdict is fail; no statistics are made of them.
+    """
     found: dict[tuple[str, str, str], list[Measurand | None]] = {}
     for number, rows in enumerate(boards):
         for row in rows:
-            key = (row.name, _same(row.condition), row.unit)
+            key = (row.name, same_condition(row.condition), row.unit)
             found.setdefault(key, [None] * len(boards))[number] = row
     # A board that was stopped lists fewer currents: its order must not scatter the others'.
     order = sorted(found, key=lambda key: (_rank(found, key[0]), _leading(key[1])))
-    return [_quantity(key, found[key]) for key in order]
+    return [_quantity(key, found[key], frozenset(failed)) for key in order]
 
 
-def _same(condition: str) -> str:
+def same_condition(condition: str) -> str:
     """A condition without what was itself measured, so that boards can be compared."""
     parts = condition.split(", ")
     own = ("case at ", "below ")
@@ -75,16 +92,35 @@ def _leading(condition: str) -> float:
         return math.inf
 
 
-def _quantity(key: tuple[str, str, str], rows: list[Measurand | None]) -> Quantity:
+def _quantity(
+    key: tuple[str, str, str], found: list[Measurand | None], failed: frozenset[int]
+) -> Quantity:
     name, condition, unit = key
+    factor, unit = shown_in(unit, found)
+    rows = [None if row is None else rescaled(row, factor, unit) for row in found]
     limits = [row.limit for row in rows if row is not None]
     low = next((limit["low"] for limit in limits if limit["low"] is not None), None)
     high = next((limit["high"] for limit in limits if limit["high"] is not None), None)
-    values = [math.nan if r is None or r.measured is None else r.measured for r in rows]
-    spreads = [math.nan if r is None or r.U is None else r.U for r in rows]
+    measured = {
+        k: r.measured for k, r in enumerate(rows) if r is not None and r.measured is not None
+    }
+    sound = [k for k in measured if k not in failed]
+    found_odd = generalised_esd([measured[k] for k in sound]) if len(sound) >= FEWEST else []
+    odd = {sound[k] for k in found_odd}
+    kept = [k for k in sound if k not in odd]
+    # Failed boards would hide each other from the test: each is held against the others alone.
+    odd |= {
+        k for k in measured
+        if k in failed
+        and len(kept) >= FEWEST
+        and generalised_esd([*(measured[j] for j in kept), measured[k]], most=1) == [len(kept)]
+    }  # fmt: skip
+    spreads = [math.nan if (row := rows[k]) is None or row.U is None else row.U for k in kept]
     limit = Limit(low, high) if low is not None or high is not None else None
     return Quantity(
-        name, condition, unit, rows, summarise(values, limit, U=spreads), low, high
+        name, condition, unit, factor, rows,
+        summarise([measured[k] for k in kept], limit, U=spreads),
+        frozenset(odd), frozenset(odd) | failed, low, high,
     )  # fmt: skip
 
 
@@ -94,7 +130,7 @@ class Line:
 
     title: str
     unit: str
-    n: int
+    n: str
     mean: str
     sd: str
     extremes: str
@@ -106,7 +142,10 @@ class Line:
 
 
 def line_of(quantity: Quantity) -> Line:
-    """Spell a lot's statistics, to the decimal place that two digits of the spread allow."""
+    """Spell a lot's statistics, to the decimal place that two digits of the spread allow.
+
+    Mean and standard deviation get one digit more: further figures are worked out from them.
+    """
     s = quantity.statistics
     sd = s.sd if s.sd else None
 
@@ -122,8 +161,9 @@ def line_of(quantity: Quantity) -> Line:
     bounds = [f"≥ {quantity.low:.6g}"] if quantity.low is not None else []
     bounds += [f"≤ {quantity.high:.6g}"] if quantity.high is not None else []
     return Line(
-        quantity.title, unit_of(quantity.unit), s.n, spell(s.mean),
-        NONE if s.sd is None else plain(s.sd, 2),
+        quantity.title, unit_of(quantity.unit), f"{s.n} of {len(quantity.rows)}",
+        NONE if s.mean is None else rounded(s.mean, None if sd is None else 0.1 * sd)[0],
+        NONE if s.sd is None else plain(s.sd),
         NONE if s.minimum is None or s.n < 2 else f"{spell(s.minimum)} to {spell(s.maximum)}",
         interval, " and ".join(bounds) or NONE, ppk, _probability(s.normality_p),
         NONE if s.trend is None else f"{s.trend:+.2f} ({_probability(s.trend_p)})",
@@ -159,6 +199,12 @@ def _whom(titles: Sequence[str], every: int) -> str:
 def _remarks(quantity: Quantity) -> list[str]:
     s = quantity.statistics
     told = []
+    silent = sum(
+        1 for k, row in enumerate(quantity.rows)
+        if k not in quantity.left_out and (row is None or row.measured is None)
+    )  # fmt: skip
+    if silent:
+        told.append(f"{silent} of {len(quantity.rows)} boards gave no value")
     if s.trend is not None and s.trend_p is not None and s.trend_p < UNLIKELY:
         way = "rises" if s.trend > 0 else "falls"
         told.append(
@@ -167,8 +213,8 @@ def _remarks(quantity: Quantity) -> list[str]:
         )
     if s.normality_p is not None and s.normality_p < UNLIKELY:
         told.append(
-            "the boards, those that stand out included, do not look like one normal lot, so "
-            "tolerance interval and capability are not to be leaned on"
+            "the boards counted do not look like one normal lot, so tolerance interval "
+            "and capability are not to be leaned on"
         )
     if s.ppk is not None and s.ppk_low is None:
         told.append("a capability from fewer than ten boards has no interval: it is a rough figure")
@@ -178,3 +224,32 @@ def _remarks(quantity: Quantity) -> list[str]:
             "to all: the spread says how alike they are, not how right the mean is"
         )
     return [*told, *s.notes]
+
+
+def left_out_of(
+    quantities: Sequence[Quantity], serials: Sequence[str], failed: Sequence[int]
+) -> str:
+    """Which boards the statistics do not hold, and why, so that nobody takes them for the lot's."""
+    whose: dict[int, list[str]] = {}
+    for quantity in quantities:
+        for k in sorted(quantity.odd - set(failed)):
+            whose.setdefault(k, []).append(quantity.title)
+    told = []
+    if failed:
+        names = ", ".join(serials[k] for k in failed)
+        verb = "its verdict is fail" if len(failed) == 1 else "their verdict is fail"
+        told.append(f"{names} everywhere, because {verb}")
+    for k in sorted(whose):
+        titles = whose[k]
+        where = (
+            " and ".join(titles)
+            if len(titles) < 3
+            else f"{len(titles)} of the {len(quantities)} figures"
+        )
+        told.append(f"{serials[k]} from {where}, because it stands out there")
+    if not told:
+        return "No board fails or stands out: every board that gave a value is counted."
+    return (
+        "These numbers are not the whole lot's: they speak of the boards that neither fail nor "
+        f"stand out. Left out: {'; '.join(told)}."
+    )

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import math
 import re
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 from benchkit.evaluation.verdict import rounded
 from benchkit.records.result import Measurand
@@ -20,6 +21,8 @@ NAMES = {
 UNITS = {"C": "°C"}
 VERDICTS = {"pass": "PASS", "fail": "FAIL", "undecided": "UNDECIDED"}
 NONE = "–"
+SMALL_V = 0.2
+"""Voltages of a quantity that stays below this are shown in millivolts."""
 
 _DEGREES = re.compile(r"(?<=\d) C(?![\w/])")
 _UNITS = re.compile(r"(?<=\d) (?=(?:[AVWKs]|mV|K/W|°C|%)(?!\w))")
@@ -84,7 +87,7 @@ def figures_of(row: Measurand) -> Figures:
         NONE if promised is None
         else f"{_to(promised['low'], places)} to {_to(promised['high'], places)}",
         " and ".join(bounds) or NONE,
-        NONE if row.en is None else f"{row.en:.2f}",
+        NONE if row.en is None else f"{row.en:.{2 if row.en < 10 else 0}f}",
     )  # fmt: skip
 
 
@@ -170,6 +173,32 @@ def plain(value: float, digits: int = 3) -> str:
     if value == 0 or not math.isfinite(value):
         return f"{value:g}"
     return f"{value:.{max(0, min(6, digits - 1 - math.floor(math.log10(abs(value)))))}f}"
+
+
+def shown_in(unit: str, rows: Sequence[Measurand | None]) -> tuple[float, str]:
+    """Factor and unit in which figures of one quantity are shown: small voltages in mV.
+
+    Chosen by what is promised where there is a promise, so that a board whose drop is far from
+    it is shown in the same unit as its neighbours.
+    """
+    sizes = [
+        abs(row.measured if row.predicted is None else row.predicted["nominal"])
+        for row in rows
+        if row is not None and row.measured is not None
+    ]
+    return (1e3, "mV") if unit == "V" and sizes and max(sizes) < SMALL_V else (1.0, unit)
+
+
+def rescaled(row: Measurand, factor: float, unit: str) -> Measurand:
+    """The row in another unit, its budget excepted."""
+    if factor == 1.0:
+        return row
+    return replace(
+        row, unit=unit, measured=None if row.measured is None else factor * row.measured,
+        U=None if row.U is None else factor * row.U,
+        predicted=row.predicted and {key: factor * v for key, v in row.predicted.items()},
+        limit={key: None if v is None else factor * v for key, v in row.limit.items()},
+    )  # fmt: skip
 
 
 def scaled(unit: str, size: float) -> tuple[float, str]:

@@ -121,6 +121,7 @@ class Plant:
         self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
         self._state: _State | None = None
         self._guess: dict[str, float] = {}
+        self._guess_of: tuple[float, bool] | None = None
 
     # World: time
 
@@ -205,7 +206,7 @@ class Plant:
         self._age_s = 0.0
         self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
         self._state = None
-        self._guess = {}
+        self._guess_of = None
         self._faults = []
         for spelled in self._settings.faults:
             what, _, at = spelled.partition("@")
@@ -332,7 +333,7 @@ class Plant:
         port = "port+" if stray else EXPOSED
         source = (
             LimitedSource("supply", ("supply+", GROUND), self._emf, limit)
-            if on
+            if on and self._emf > 0
             else Resistor("supply", ("supply+", "idle"), OFF_OHM)
         )
         circuit = network(
@@ -346,10 +347,15 @@ class Plant:
             ],
             held={"idle": self._emf},
         )
-        fresh = dict.fromkeys(("supply+", port, EXPOSED, GUARDED), self._emf)
-        solution = solve(circuit, 3, start=self._guess or fresh)
-        if not solution.settled.all():
+        # Near the last point when only the load moved; from scratch when the supply did.
+        source_now = (self._emf, on)
+        near = self._guess if self._guess_of == source_now else None
+        level = self._emf if on else 0.0
+        fresh = dict.fromkeys(("supply+", port, EXPOSED, GUARDED), level)
+        solution = solve(circuit, 3, start=near or fresh)
+        if near is not None and not solution.settled.all():
             solution = solve(circuit, 3, start=fresh)
+        self._guess_of = source_now
         if not solution.settled.all():
             raise ArithmeticError("the simulated circuit has no operating point")
         self._guess = {name: float(v[0]) for name, v in solution.volts.items()}

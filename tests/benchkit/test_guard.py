@@ -103,7 +103,7 @@ def test_output_that_goes_off_by_itself_trips() -> None:
 
 def test_levels_that_do_not_read_back_are_refused_before_on() -> None:
     world = World(wrong_levels=True)
-    with pytest.raises(Refused, match="over-voltage level reads back as 60 after 13.7"):
+    with pytest.raises(Refused, match=r"over-voltage level reads back as 60 after 13.7"):
         run(guard_of(world))
     assert "on" not in world.said
 

@@ -17,7 +17,15 @@ from benchkit.reports.board import board_report
 from benchkit.reports.budgets import budget_tables, drop_tables
 from benchkit.reports.front import front_page
 from benchkit.reports.law import FittedLaw, fitted_law
-from benchkit.reports.words import degrees, figures_of, place_in_band, plain, strip_of
+from benchkit.reports.words import (
+    degrees,
+    figures_of,
+    place_in_band,
+    plain,
+    rescaled,
+    shown_in,
+    strip_of,
+)
 from tests.benchkit.test_reports_material import BENCH, CHANNEL, JUNCTION, MANIFEST, Board, run
 
 SECTIONS = ("front", "curves", "budgets", "run", "events", "cautions")
@@ -86,7 +94,10 @@ def test_figures_are_printed_to_what_their_uncertainty_allows(good: Made) -> Non
     judged = [m for m in good[1].result.measurands if m.verdict is not None]
     assert len(judged) == 4
     for row in judged:
-        value, spread = rounded(row.measured, row.U)
+        factor, _ = shown_in(row.unit, [row])
+        assert row.measured is not None
+        assert row.U is not None
+        value, spread = rounded(factor * row.measured, factor * row.U)
         assert f"<strong>{value}</strong> ± {spread}</td>" in html
 
 
@@ -176,6 +187,27 @@ def test_two_currents_are_too_few_for_a_junction_s_law(tmp_path: Path) -> None:
     html = board_report(record, evaluation, MANIFEST)
     assert "No law could be fitted to the sweep" in html
     assert "no law was fitted, so there are no residuals" in html
+
+
+def test_a_skipped_soak_is_told_under_what_was_not_tested_and_nowhere_else_in_front(
+    tmp_path: Path,
+) -> None:
+    skipped = "heat: the loss could take the case too high, so the soak was left out"
+    board = Board(scale=1.7, soak_s=0, events=(("soak-skipped", skipped),))
+    record, evaluation = run(tmp_path / "run", board)
+    assert skipped in evaluation.result.why
+    html = board_report(record, evaluation, MANIFEST)
+    before = html[: html.index('id="events"')]
+    assert before.count("so the soak was left out") == 1
+    assert before.index("What was not tested") < before.index("so the soak was left out")
+
+
+def test_small_drops_are_shown_in_millivolts_whatever_the_board_itself_does() -> None:
+    assert shown_in("V", [ROW, replace(ROW, measured=0.6)]) == (1e3, "mV")
+    volts = {"nominal": 0.43, "low": 0.4, "high": 0.46}
+    assert shown_in("V", [ROW, replace(ROW, predicted=volts)]) == (1.0, "V")
+    assert shown_in("K", [ROW]) == (1.0, "K")
+    assert figures_of(rescaled(ROW, 1e3, "mV")).measured == "53.86"
 
 
 ROW = Measurand(

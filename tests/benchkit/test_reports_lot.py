@@ -71,6 +71,80 @@ def test_an_outlier_is_named_though_it_passes(
     assert "None: every measured board passes" in lot_report("x", alike(made, 20), [])
 
 
+def test_numbers_and_scales_are_those_of_the_boards_that_neither_fail_nor_stand_out(
+    made: dict[str, tuple[Record, Evaluation]],
+) -> None:
+    runs = alike(made, 16)
+    good = [e.result.measurands for _, e, _ in runs]
+    record, evaluation = made["good"]
+    far = like(evaluation, "B-FAR", 100.0)
+    runs[3] = (record, replace(far, result=replace(far.result, verdict="fail")), "far.html")
+    runs[9] = (record, like(evaluation, "B-ODD", 1.2), "odd.html")
+    boards = [e.result.measurands for _, e, _ in runs]
+    three = next(q for q in quantities_of(boards, [3]) if q.condition.startswith("3 A"))
+    assert sorted(three.odd) == sorted(three.left_out) == [3, 9]
+    assert three.unit == "mV"
+    assert three.high == pytest.approx(85.0)
+    kept = quantities_of([rows for k, rows in enumerate(good) if k not in (3, 9)])
+    alone = next(q for q in kept if q.condition.startswith("3 A"))
+    assert three.statistics == alone.statistics
+    line = line_of(three)
+    assert line.n == "14 of 16"
+    assert float(line.mean) == pytest.approx(alone.statistics.mean or 0.0, rel=1e-3)
+    assert all(len(re.sub(r"^[0.]+|\.", "", text)) >= 3 for text in (line.mean, line.sd))
+    html = lot_report("Tide gauges", runs, [e.result.serial for _, e, _ in runs])
+    assert "B-FAR everywhere, because its verdict is fail; B-ODD from 13 of the 13" in html
+    spread = html[html.index('id="spread"') :]
+    ticks = [float(t) for t in re.findall(r">([\d.]+)</text>", spread)]
+    assert max(ticks) < 1000
+    assert re.search(r"B-FAR: \d{4,5}(\.\d+)? mV</text>", spread)
+    assert "limit ≤ 85 mV" in spread
+
+
+def test_many_failed_boards_neither_hide_each_other_nor_change_the_numbers(
+    made: dict[str, tuple[Record, Evaluation]],
+) -> None:
+    _, evaluation = made["good"]
+    boards = [e.result.measurands for _, e, _ in alike(made, 12)]
+    failed = [1, 4, 6, 7, 10]
+    for k in failed:
+        boards[k] = like(evaluation, f"B-{k}", 1.5).result.measurands
+    drop = quantities_of(boards, failed)[0]
+    assert sorted(drop.odd) == failed
+    assert drop.statistics.n == 7
+    assert drop.statistics.sd == pytest.approx(0.0071 * (drop.statistics.mean or 0.0), rel=0.5)
+
+
+def test_only_what_is_judged_and_the_key_figures_of_heat_are_drawn(
+    made: dict[str, tuple[Record, Evaluation]],
+) -> None:
+    html = lot_report("Tide gauges", alike(made, 6), [])
+    spread = html[html.index('id="spread"') :]
+    titles = re.findall(r">([A-Z][^<,]*, [^<]*)\((?:mV|V|K|K/W|°C)\)", spread)
+    assert [t.partition(",")[0] for t in titles] == [
+        "Forward drop", "Forward drop", "Drop when warm", "Thermal resistance", "Hottest case",
+        "Junction margin",
+    ]  # fmt: skip
+    assert "7 more figures" in spread
+
+
+def test_what_one_board_was_not_tested_for_names_that_board(
+    made: dict[str, tuple[Record, Evaluation]],
+) -> None:
+    runs = alike(made, 3)
+    record, evaluation, link = runs[1]
+    result = evaluation.result
+    skipped = "heat: too hot, so the soak was left out"
+    result = replace(
+        result, verdict="undecided", why=["no usable soak", skipped],
+        not_tested=[*result.not_tested, skipped],
+    )  # fmt: skip
+    runs[1] = (record, replace(evaluation, result=result), link)
+    html = lot_report("Tide gauges", runs, [])
+    assert html.count("too hot, so the soak was left out") == 1
+    assert "B-001: heat: too hot" in html
+
+
 def test_a_lot_of_one_says_what_it_cannot_say(
     made: dict[str, tuple[Record, Evaluation]],
 ) -> None:

@@ -16,6 +16,7 @@ import sys
 import tempfile
 from collections import defaultdict
 from pathlib import Path
+from statistics import median
 
 from benchkit.reading import Reading
 from instruments.bench import Bench
@@ -77,20 +78,24 @@ def measure(folder: Path, seed: int, stage: str) -> list[tuple[str, float, float
 
 def campaign(boards: int) -> dict[str, object]:
     """Measure boards of both stages in turn."""
-    held: dict[str, list[bool]] = defaultdict(list)
+    shares: dict[str, list[float]] = defaultdict(list)
     for number in range(boards):
         stage = ("stage.toml", "stage-diode.toml")[number % 2]
         with tempfile.TemporaryDirectory() as name:
             rows = measure(Path(name) / "w", 1000 + number, stage)
         for quantity, value, U, true in rows:
-            held[quantity].append(abs(value - true) <= U)
-    total = [ok for group in held.values() for ok in group]
+            shares[f"{quantity}, {stage}"].append(abs(value - true) / U)
+    total = [share <= 1 for group in shares.values() for share in group]
     return {
         "boards": boards,
         "intervals": len(total),
         "held": sum(total),
         "share": round(sum(total) / len(total), 4),
-        **{f"share of {q}": round(sum(g) / len(g), 4) for q, g in held.items()},
+        **{
+            f"share of {name}": round(sum(share <= 1 for share in group) / len(group), 4)
+            for name, group in shares.items()
+        },
+        **{f"median error over U of {n}": round(median(g), 3) for n, g in shares.items()},
     }
 
 
