@@ -30,6 +30,7 @@ from instruments.dialects.tables import Dialect, Kind, Timing
 from instruments.fixture import Fixture, HandFixture, SimulatedFixture
 from instruments.link import Link
 from instruments.load import ScpiLoad
+from instruments.lock import bench_lock
 from instruments.meter import SLOWEST_MAINS_HZ, ScpiMeter
 from instruments.points import BenchPoints
 from instruments.session import Session
@@ -145,6 +146,8 @@ def open_bench(
         ports: dict[str, int] = {}
         if file.is_simulated:
             ports = stack.enter_context(start_child(path)).ports
+        else:
+            stack.enter_context(bench_lock(file.only("supply")[1].resource))
         sessions = _open_all(stack, file, dialects, ports, traffic)
         control: Session | None = None
         clock: Clock = WallClock()

@@ -5,17 +5,18 @@ from __future__ import annotations
 import multiprocessing
 import signal
 from collections.abc import Callable, Sequence
-from concurrent.futures import Future, ProcessPoolExecutor
+from concurrent.futures import BrokenExecutor, Future, ProcessPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 
-from benchkit.errors import BenchkitError, InputError, Tripped
+from benchkit.errors import BenchkitError, InputError, NotConfirmedOff, Tripped
 from benchkit.evaluation.evaluate import Evaluation, evaluate
 from benchkit.metrology import overall
 from benchkit.records.record import Record, read_json, read_record
 from benchkit.records.result import Verdict
 from benchkit.records.run_folder import write_json, write_text
 from instruments.bench import Bench
+from procedures.interrupts import NAMES
 from procedures.screen import Screen
 from procedures.verify import Done, Job, run_board, write_report
 
@@ -73,26 +74,36 @@ class _Reports:
     def __init__(self) -> None:
         context = multiprocessing.get_context("spawn")
         self._pool = ProcessPoolExecutor(1, context, _leave_signals_alone)
-        self._waiting: list[Future[Path]] = []
+        self._waiting: list[tuple[Path, Future[Path] | None]] = []
 
     def order(self, folder: Path) -> None:
         """Have a run's report drawn."""
-        self._waiting.append(self._pool.submit(write_report, folder))
+        try:
+            self._waiting.append((folder, self._pool.submit(write_report, folder)))
+        except BrokenExecutor:
+            self._waiting.append((folder, None))
 
     def __enter__(self) -> _Reports:
         return self
 
-    def __exit__(self, *error: object) -> None:
-        """Wait for the last report; what went wrong with one comes out here."""
+    def __exit__(self, kind: type[BaseException] | None, *rest: object) -> None:
+        """Wait for the last report. Those that a killed process left over are drawn here."""
+        del rest
         self._pool.shutdown(wait=True)
-        if error[0] is None:
-            for future in self._waiting:
+        for folder, future in self._waiting if kind is None else ():
+            try:
+                if future is None:
+                    raise BrokenExecutor
                 future.result()
+            except BrokenExecutor:
+                write_report(folder)
 
 
 def _leave_signals_alone() -> None:
-    """Ctrl-C at the terminal reaches every process: the one that measures answers it."""
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
+    """Signals from the terminal reach every process: the one that measures answers them."""
+    for name in NAMES:
+        if hasattr(signal, name):
+            signal.signal(getattr(signal, name), signal.SIG_IGN)
 
 
 def run_lot(
@@ -106,13 +117,16 @@ def run_lot(
     """Measure the boards of ``todo``; returns the error that ended the lot early, if any.
 
     A board that trips a limit is a finding about that board: the lot goes on with the next. A
-    lost instrument, an operator's stop or an output that is not confirmed off ends the lot.
+    lost instrument or an operator's stop ends the lot. An output that is not confirmed off is
+    raised at once.
     """
     done = len(lot.serials) - len(todo)
     with screen.progress(lot.name, len(lot.serials)), _Reports() as reports:
         for serial in todo:
             screen.advance(done, f"{lot.name}: {serial}")
             board = run_board(bench, job, serial, lot.board(serial), screen)
+            if isinstance(board.error, NotConfirmedOff):
+                raise board.error  # nothing comes before making the bench safe
             reports.order(board.folder)
             done += 1
             told(board)

@@ -8,7 +8,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
 
-from benchkit.errors import BenchkitError
+from benchkit.errors import BenchkitError, NotConfirmedOff
 from benchkit.protocols import Operator
 from benchkit.reading import Reading
 from instruments.bench import Bench, open_bench
@@ -73,6 +73,8 @@ def verify_board(
     folder = free_folder(out or Path("runs"), serial)
     with opened(inputs, screen) as bench:
         done = run_board(bench, inputs.job, serial, folder, screen)
+    if isinstance(done.error, NotConfirmedOff):
+        raise done.error  # nothing comes before making the bench safe; `report` draws it later
     write_report(done.folder, done.evaluation)
     if as_json:
         _print_json(done.evaluation.result.document())

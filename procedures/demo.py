@@ -39,13 +39,13 @@ def run_demo(out: Path, seed: int | None) -> int:
     diode = read_board(files / "stage-diode.toml", files / "bench.toml")
     with opened(diode, screen) as bench:
         board = run_board(bench, diode.job, DIODE_SERIAL, out / DIODE_SERIAL, screen)
+    if board.error is not None:
+        raise board.error
     write_report(board.folder, board.evaluation)
     console = Console(highlight=False, soft_wrap=True)
     tell_lot(lot, document)
     console.print()
     tell_board(board)
-    if board.error is not None:
-        raise board.error
     console.print()
     console.print("Open these in a browser:", style="bold", markup=False)
     console.print(f"  {lot.folder / 'lot.html'}", markup=False)

@@ -37,7 +37,7 @@ PROOF_V, PROOF_A = 1.0, 0.05
 REST_K = 10.0
 """Case and ambient may differ by this much before a run (a board fresh from the hand)."""
 PLAUSIBLE_C = (-45.0, 90.0)
-LEVEL_SHARE, LEVEL_V = 0.02, 0.05
+LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
 """How far a read-back of a protection level may be from what was asked."""
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
@@ -304,11 +304,11 @@ class Guard:
     def _protect(self, envelope: Envelope) -> None:
         asked = Protection(envelope.over_voltage_V, envelope.over_current_A)
         read = self.__supply.protect(asked)
-        for what, want, got in (
-            ("over-voltage", asked.over_voltage_V, read.over_voltage_V),
-            ("over-current", asked.over_current_A, read.over_current_A),
+        for what, want, got, slack in (
+            ("over-voltage", asked.over_voltage_V, read.over_voltage_V, LEVEL_V),
+            ("over-current", asked.over_current_A, read.over_current_A, LEVEL_A),
         ):
-            if not abs(got - want) <= LEVEL_SHARE * want + LEVEL_V:
+            if not abs(got - want) <= LEVEL_SHARE * want + slack:
                 raise Refused(
                     f"{self.__supply.role}: its {what} level reads back as {got:.4g} after "
                     f"{want:.4g} was set; nothing is switched on without it"

@@ -22,6 +22,7 @@ from instruments.errors import (
     WrongInstrument,
 )
 from instruments.simulated.child import start_child
+from procedures.commands import batch_lot, verify_board
 from procedures.verify import Done
 from tests.simulated_bench import failure, measure, workshop
 
@@ -130,6 +131,34 @@ def test_an_output_that_stays_on_is_exit_4(fault: str, words: str, tmp_path: Pat
     assert words in str(error)
     assert "by hand" in str(error)
     assert "off" not in kinds(done)[kinds(done).index("not-confirmed-off") :]
+
+
+def test_exit_4_comes_before_anything_that_could_hide_it(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def no_report(*_: object) -> None:
+        raise RuntimeError("the report cannot be drawn")
+
+    monkeypatch.setattr("procedures.commands.write_report", no_report)
+    folder = workshop(tmp_path / "w", faults=[f"stuck-output:supply@{AT_S}"])
+    with pytest.raises(NotConfirmedOff):
+        verify_board(
+            folder / "stage.toml",
+            folder / "bench.toml",
+            "TG-0101",
+            folder / "o",
+            dry_run=False,
+            as_json=False,
+        )
+    with pytest.raises(NotConfirmedOff):
+        batch_lot(
+            folder / "lot.toml",
+            folder / "bench.toml",
+            folder / "lot",
+            resume=False,
+            dry_run=False,
+            as_json=True,
+        )
 
 
 def test_a_lost_sensor_trips(tmp_path: Path) -> None:
