@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import multiprocessing
 import signal
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import BrokenExecutor, Future, ProcessPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
@@ -135,22 +135,27 @@ def run_lot(
     return None
 
 
-def measured(lot: Lot) -> list[tuple[str, Record, Evaluation]]:
-    """Every board that stands, judged from its record, in the lot's order."""
+def measured(lot: Lot, known: Mapping[str, Evaluation]) -> list[tuple[str, Record, Evaluation]]:
+    """Every board that stands, judged from its record, in the lot's order.
+
+    ``known`` holds those that this process has judged from their records already.
+    """
     found = []
     for serial in lot.serials:
         folder = lot.board(serial)
         if folder.exists() and _stands(folder):
             record = read_record(folder)
-            found.append((serial, record, evaluate(record, serial)))
+            found.append((serial, record, known.get(serial) or evaluate(record, serial)))
     return found
 
 
-def conclude(lot: Lot) -> tuple[dict[str, object], Verdict]:
-    """Write ``lot.json`` and ``lot.html`` from the records alone."""
+def conclude(
+    lot: Lot, known: Mapping[str, Evaluation] | None = None
+) -> tuple[dict[str, object], Verdict]:
+    """Write ``lot.json`` and ``lot.html`` from the records alone (``known``: see ``measured``)."""
     from benchkit.reports.lot import lot_report
 
-    boards = measured(lot)
+    boards = measured(lot, known or {})
     verdicts: dict[str, Verdict] = {serial: e.result.verdict for serial, _, e in boards}
     missing = [serial for serial in lot.serials if serial not in verdicts]
     owed: list[Verdict] = ["undecided" for _ in missing]

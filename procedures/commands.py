@@ -9,6 +9,7 @@ from contextlib import contextmanager
 from pathlib import Path
 
 from benchkit.errors import BenchkitError, NotConfirmedOff
+from benchkit.evaluation.evaluate import Evaluation
 from benchkit.protocols import Operator
 from benchkit.reading import Reading
 from instruments.bench import Bench, open_bench
@@ -113,10 +114,16 @@ def measure_lot(
     """Measure what is still to do of a lot and conclude it; exit code and ``lot.json``."""
     todo = prepare(lot, resume=resume)
     ended: BenchkitError | None = None
+    known: dict[str, Evaluation] = {}
+
+    def told(done: Done) -> None:
+        known[done.evaluation.result.serial] = done.evaluation
+        _line(screen, done)
+
     if todo:
         with opened(inputs, screen) as bench:
-            ended = run_lot(bench, inputs.job, lot, todo, screen, lambda d: _line(screen, d))
-    document, verdict = conclude(lot)
+            ended = run_lot(bench, inputs.job, lot, todo, screen, told)
+    document, verdict = conclude(lot, known)
     if ended is not None:
         return report_error(ended), document
     return CODES[verdict], document

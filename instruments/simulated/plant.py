@@ -16,7 +16,7 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.circuit import GROUND, LimitedSource, Resistor, network, solve
+from benchkit.circuit import GROUND, Resistor, network, solve
 from benchkit.errors import InputError
 from benchkit.files import BenchFile
 from benchkit.topologies.base import EXPOSED, GUARDED
@@ -28,16 +28,20 @@ from instruments.simulated.timebase import Timebase
 Floats = NDArray[np.float64]
 
 SUPPLY_RISE_S = 0.004
-SUPPLY_FALL_S, FALL_STEP_S = 0.02, 0.01
+SUPPLY_FALL_S, FALL_STEP_S = 0.02, 0.04
 LOAD_LAG_S = 0.003
 LEAD_OHM = 0.018
+SUPPLY_OHM = 0.005
+PRELOAD_A, NARROW_A = 0.05, 0.01
 FADE_V = 0.05
 VOLT_MODE_OHM = 0.05
+BLEED_S = 5e-6
+"""What the load's input and the meter draw at any setting."""
 OFF_OHM = 50.0
 """What discharges the output of a supply that is off."""
 LAWS_END_C = 250.0
 """The laws of the parts are not valid beyond; a real part would soon be dead."""
-NEAR_K = 1.0
+NEAR_K = 2.0
 ROUNDING_S = 1e-6
 
 WIRING_FAULTS = {
@@ -72,8 +76,35 @@ class _Load:
             over = (across - self.value) / FADE_V
             current = np.logaddexp(0.0, over) * FADE_V / VOLT_MODE_OHM
             slope = 0.5 * (1 + np.tanh(0.5 * over)) / VOLT_MODE_OHM
+        current, slope = current + BLEED_S * across, slope + BLEED_S
         row = np.stack([slope, -slope], axis=1)
         return np.stack([current, -current], axis=1), np.stack([row, -row], axis=1)
+
+
+@dataclass(frozen=True)
+class _Supply:
+    """A bench supply: constant voltage up to its current limit, able to sink its own preload.
+
+    The preload keeps it linear around no load, where a supply that could not sink at all would
+    have a corner just where a run begins.
+    """
+
+    name: str
+    nodes: tuple[str, str]
+    emf_V: float
+    limit_A: float
+    ohms: float
+    """Its own, and those of the lead and the shunt up to the port."""
+
+    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+        """Smoothed at both ends (softplus), so that it can be solved."""
+        wide = 0.02 * self.limit_A + 0.005
+        asked = (self.emf_V - volts[:, 0] + volts[:, 1]) / self.ohms
+        low, high = (asked + PRELOAD_A) / NARROW_A, (asked - self.limit_A) / wide
+        given = NARROW_A * np.logaddexp(0.0, low) - PRELOAD_A - wide * np.logaddexp(0.0, high)
+        slope = 0.5 * (np.tanh(0.5 * low) - np.tanh(0.5 * high)) / self.ohms
+        row = np.stack([slope, -slope], axis=1)
+        return np.stack([-given, given], axis=1), np.stack([row, -row], axis=1)
 
 
 @dataclass(frozen=True)
@@ -328,43 +359,47 @@ class Plant:
         steps = np.array([amps, amps + step_A, amps])
         load_mode, load_value = (mode, value) if drawing and mode != "CURR" else ("CURR", steps)
         _, limit, on = self._command_supply
-        lead = LEAD_OHM + (self.active("lead-resistance") or 0.0)
+        lead = LEAD_OHM + self._shunt + (self.active("lead-resistance") or 0.0)
         stray = board.faults.get("dry-joint", 0.0)
         port = "port+" if stray else EXPOSED
         source = (
-            LimitedSource("supply", ("supply+", GROUND), self._emf, limit)
+            _Supply("supply", (port, GROUND), self._emf, limit, SUPPLY_OHM + lead)
             if on and self._emf > 0
-            else Resistor("supply", ("supply+", "idle"), OFF_OHM)
+            else Resistor("supply", (port, "idle"), OFF_OHM + lead)
         )
         circuit = network(
             [
                 source,
-                Resistor("lead", ("supply+", port), lead + self._shunt),
                 *([Resistor("joint", (port, EXPOSED), stray)] if stray else []),
                 *board.elements(junction),
                 _Load("load", (GUARDED, GROUND), load_mode, load_value),
-                Resistor("bleeder", (GUARDED, GROUND), 2e5),
             ],
             held={"idle": self._emf},
         )
-        # Near the last point when only the load moved; from scratch when the supply did.
-        source_now = (self._emf, on)
-        near = self._guess if self._guess_of == source_now else None
+        # Near the last point when only the load moved, or while the output runs down; from
+        # scratch when the supply was switched or set.
+        before = self._guess_of
+        near = (
+            self._guess
+            if before and before[1] == on and (not on or before[0] == self._emf)
+            else None
+        )
         level = self._emf if on else 0.0
-        fresh = dict.fromkeys(("supply+", port, EXPOSED, GUARDED), level)
+        fresh = dict.fromkeys((port, EXPOSED, GUARDED), level)
         solution = solve(circuit, 3, start=near or fresh)
         if near is not None and not solution.settled.all():
             solution = solve(circuit, 3, start=fresh)
-        self._guess_of = source_now
+        self._guess_of = (self._emf, on)
         if not solution.settled.all():
             raise ArithmeticError("the simulated circuit has no operating point")
         self._guess = {name: float(v[0]) for name, v in solution.volts.items()}
+        current = -solution.currents["supply"]
         quantities = {
-            "supply": solution.volts["supply+"],
+            "supply": solution.volts[port] + lead * current,
             "exposed_voltage": solution.volts[port],
             "guarded_voltage": solution.volts[GUARDED],
             "drop": solution.between(port, GUARDED),
-            "current": solution.currents["lead"],
+            "current": current,
             "load": solution.currents["load"],
         }
         quantities["loss"] = quantities["drop"] * quantities["current"]
