@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from typing import cast
 
 from benchkit.errors import InputError
-from benchkit.files.bench import BenchFile
+from benchkit.files.bench import BenchFile, Point, PointName, VoltageAccuracy
 from benchkit.metrology.accuracy import Accuracy
 from benchkit.reading import POINT_UNITS, Reading, Status
 from instruments.errors import NotANumber, Overload
@@ -51,7 +52,7 @@ class BenchPoints:
 
     def expect(self, point: str, largest: float) -> None:
         """Fix the smallest declared range that holds ``largest`` (the largest there is, else)."""
-        table = self._bench.points[point]  # type: ignore[index]  # names come from the bench file
+        table = self._table(point)
         volts = largest * (table.shunt_ohm or 1.0)
         declared = sorted(self._declared(table.instrument), key=lambda a: a.range_V)
         chosen = next((a for a in declared if a.range_V >= volts), declared[-1])
@@ -59,7 +60,7 @@ class BenchPoints:
 
     def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
         """One reading; overload and not-a-number become its status, never a value."""
-        table = self._bench.points[point]  # type: ignore[index]
+        table = self._table(point)
         if table.instrument in self._thermometers:
             return self._temperature(point, time_s)
         meter = self._meters[table.instrument]
@@ -93,11 +94,11 @@ class BenchPoints:
 
     def recover(self, point: str) -> None:
         """Bring the instrument that reads a point back into step, if it is out of it."""
-        name = self._bench.points[point].instrument  # type: ignore[index]
+        name = self._table(point).instrument
         (self._meters.get(name) or self._thermometers[name]).recover()
 
     def _temperature(self, point: str, time_s: float) -> Reading:
-        table = self._bench.points[point]  # type: ignore[index]
+        table = self._table(point)
         declared = self._bench.instruments[table.instrument].temperature
         assert declared is not None
         status: Status = "ok"
@@ -109,5 +110,8 @@ class BenchPoints:
         limits = Accuracy(100.0, declared.reading_percent, 0.0, declared.offset_K)
         return Reading(time_s, point, value, "C", limits.standard_uncertainty(value), 0.0, status)
 
-    def _declared(self, instrument: str) -> list:  # type: ignore[type-arg]
+    def _table(self, point: str) -> Point:
+        return self._bench.points[cast("PointName", point)]
+
+    def _declared(self, instrument: str) -> list[VoltageAccuracy]:
         return self._bench.instruments[instrument].voltage

@@ -132,6 +132,7 @@ def run_lot(
             told(board)
             if board.error is not None and not isinstance(board.error, Tripped):
                 return board.error
+        screen.advance(done, f"{lot.name}: reports")
     return None
 
 

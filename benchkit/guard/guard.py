@@ -17,7 +17,6 @@ from contextlib import AbstractContextManager, contextmanager, nullcontext
 
 from benchkit.errors import (
     BenchkitError,
-    InputError,
     LinkError,
     NotConfirmedOff,
     OperatorStopped,
@@ -25,24 +24,26 @@ from benchkit.errors import (
     Tripped,
 )
 from benchkit.guard.envelope import Ceilings, Envelope
+from benchkit.guard.live import Live
+from benchkit.guard.permissives import (
+    RESIDUAL_V,
+    check_calibration,
+    check_dead,
+    check_mesh,
+    check_polarity,
+    check_sensors,
+)
 from benchkit.protocols import Clock, Journal, Load, Operator, Points, Protection, Supply
 from benchkit.reading import Reading
 
-RESIDUAL_V = 0.5
-"""Below this a port counts as dead."""
 DISCHARGE_S = 5.0
 """How long the output is given to fall below RESIDUAL_V."""
 PROOF_V, PROOF_A = 1.0, 0.05
 """Polarity is proved at this voltage and current limit before anything larger."""
-REST_K = 10.0
-"""Case and ambient may differ by this much before a run (a board fresh from the hand)."""
-PLAUSIBLE_C = (-45.0, 90.0)
 LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
 """How far a read-back of a protection level may be from what was asked."""
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
-MESH_V = 0.03
-"""Exposed less guarded voltage must equal the drop within this and a share of a percent."""
 
 
 class Guard:
@@ -167,44 +168,15 @@ class Guard:
 
     def permit(self) -> None:
         """Check every permissive that needs no voltage. Refused names the one that is missing."""
-        self._check_calibration()
+        check_calibration(self._due, self._today)
         if found_on := self._switched_on():
             self._off = False
             self._journal.event("found-on", found_on, time_s=self.now())
             self.make_safe("found switched on")
         self.__load.release()
-        for point in ("exposed_voltage", "guarded_voltage"):
-            value = self._usable(point)
-            if abs(value) > RESIDUAL_V:
-                raise Refused(
-                    f"{point} is {value:.3g} V with everything off, above {RESIDUAL_V} V: "
-                    "something still feeds or charges it; disconnect and discharge it first"
-                )
-        self._check_sensors()
+        check_dead(self._usable)
+        check_sensors(self._usable)
         self._journal.event("permitted", "every permissive holds", time_s=self.now())
-
-    def _check_calibration(self) -> None:
-        late = [f"{role} ({due})" for role, due in self._due.items() if due < self._today]
-        if late:
-            raise Refused(
-                f"calibration is out of date: {', '.join(late)}; calibrate, or correct "
-                "calibration_due in the bench file"
-            )
-
-    def _check_sensors(self) -> None:
-        temps = {point: self._usable(point) for point in ("case", "ambient")}
-        low, high = PLAUSIBLE_C
-        for point, value in temps.items():
-            if not low <= value <= high:
-                raise Refused(
-                    f"{point} reads {value:.1f} C at rest, outside {low:g} to {high:g} C: check "
-                    "the sensor"
-                )
-        if abs(temps["case"] - temps["ambient"]) > REST_K:
-            raise Refused(
-                f"case reads {temps['case']:.1f} C and ambient {temps['ambient']:.1f} C at rest, "
-                f"more than {REST_K:g} K apart: let the board settle, or check the sensors"
-            )
 
     def _usable(self, point: str) -> float:
         reading = self.read(point)
@@ -231,26 +203,8 @@ class Guard:
         with self.energised(envelope) as live:
             live.wait(0.05)
             exposed = self._usable("exposed_voltage")
-            if abs(exposed - PROOF_V) > 0.2:
-                hint = (
-                    "the leads are crossed"
-                    if exposed < -RESIDUAL_V
-                    else "the exposed port is shorted, loaded, or not connected"
-                )
-                raise Refused(
-                    f"with {PROOF_V:g} V set, exposed_voltage reads {exposed:.3g} V: {hint}; "
-                    "nothing larger is applied"
-                )
-            self._check_mesh(exposed)
-
-    def _check_mesh(self, exposed: float) -> None:
-        guarded, drop = self._usable("guarded_voltage"), self._usable("drop")
-        left = exposed - guarded - drop
-        if abs(left) > MESH_V + 0.005 * abs(exposed):
-            raise Refused(
-                f"exposed {exposed:.4g} V less guarded {guarded:.4g} V less drop {drop:.4g} V "
-                f"leaves {left:.3g} V, which must be near zero: a measuring lead is off or crossed"
-            )
+            check_polarity(exposed, PROOF_V)
+            check_mesh(exposed, self._usable("guarded_voltage"), self._usable("drop"))
 
     # during
 
@@ -284,7 +238,7 @@ class Guard:
                 time_s=self.now(),
                 blind_s=self.blind_s,
             )
-            live = self._live = Live(self, self.__supply, self.__load, envelope)
+            live = self._live = Live(self, self.__load, envelope)
             self.__supply.enable()
             yield live
         except BaseException as error:
@@ -446,65 +400,3 @@ def _say(error: BaseException) -> str:
     if isinstance(error, (BenchkitError, KeyboardInterrupt)) and str(error):
         return str(error)
     return f"{type(error).__name__}: {error}".rstrip(": ")
-
-
-class Live:
-    """What a procedure can do while something is energised. Made by ``Guard.energised`` only."""
-
-    def __init__(self, guard: Guard, supply: Supply, load: Load, envelope: Envelope) -> None:
-        self._guard, self.__supply, self.__load = guard, supply, load
-        self.envelope = envelope
-        self._began_s = self._looked_s = guard.now()
-
-    def draw(self, current_A: float) -> None:
-        """Set the load, never above the envelope's current limit (InputError)."""
-        if not 0 <= current_A < self.envelope.current_limit_A:
-            raise InputError(
-                f"{self.envelope.name}: a load of {current_A:g} A is not inside its limit of "
-                f"{self.envelope.current_limit_A:.3g} A"
-            )
-        self._guard._look_when_due()
-        self.__load.draw(current_A)
-
-    def rest(self) -> None:
-        """Draw nothing, keep the supply on.
-
-        Not by releasing the load: what that does to be certain may take long with a load that
-        does not answer, and the supply would be on and unwatched meanwhile.
-        """
-        self.draw(0.0)
-
-    def look(self) -> float:
-        """Look now, whatever the polling interval; returns the time of the look."""
-        self._looked_s = self._guard.look(self.envelope, self._began_s)
-        return self._looked_s
-
-    @property
-    def looked_s(self) -> float:
-        """When the guard looked last."""
-        return self._looked_s
-
-    def wait(self, seconds: float) -> float:
-        """Look, then let ``seconds`` pass, looking again every polling interval.
-
-        Returns the time at the end.
-        """
-        now = self.look()
-        until = now + seconds
-        poll_s = self._guard.ceilings.poll_s
-        while (left := until - now) > 1e-6:
-            due = self._looked_s + poll_s - now
-            # A clock that was set back must not lengthen the time to the next look.
-            now = self._guard._sleep(min(left, due)) if 0 < due <= poll_s else self.look()
-        return now
-
-    def read(self, point: str) -> Reading:
-        """A recorded reading (see ``Guard.read``); overload or a lost sensor trips."""
-        reading = self._guard.read(point)
-        if not reading.usable:
-            self._guard._trip(point, f"gives no usable reading ({reading.status})", reading.time_s)
-        return reading
-
-    def check_loss(self, drop_V: float, current_A: float) -> None:
-        """Trip when the stage burns more than the envelope allows."""
-        self._guard.check_loss(self.envelope, drop_V, current_A)

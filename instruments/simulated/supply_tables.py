@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from collections.abc import Callable, Sequence
 
 from instruments.simulated.errors import ScpiError
@@ -21,8 +22,9 @@ class _Speaking(Supply):
 
     channel_parameters: tuple[Parameter, ...] = ()
 
+    @abstractmethod
     def _pick(self, channels: Sequence[int] | None) -> list[Output]:
-        raise NotImplementedError
+        """The outputs that channel numbers mean."""
 
     def _setting(self, pattern: str, name: str, high: float, unit: str, default: float) -> list[
         Entry

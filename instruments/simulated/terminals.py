@@ -1,0 +1,69 @@
+"""What the supply and the load are to the circuit: elements of the plant's network."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+
+SUPPLY_OHM = 0.005
+PRELOAD_A, NARROW_A = 0.05, 0.01
+FADE_V = 0.05
+VOLT_MODE_OHM = 0.05
+BLEED_S = 5e-6
+"""What the load's input and the meter draw at any setting."""
+
+
+@dataclass(frozen=True)
+class LoadInput:
+    """An electronic load: its current falls away as the voltage across it does."""
+
+    name: str
+    nodes: tuple[str, str]
+    mode: str
+    value: Floats | float
+
+    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+        """Constant current, resistance, or voltage (behind VOLT_MODE_OHM)."""
+        across = volts[:, 0] - volts[:, 1]
+        if self.mode == "CURR":
+            share = np.tanh(across / FADE_V)
+            current, slope = self.value * share, self.value * (1 - share**2) / FADE_V
+        elif self.mode == "RES":
+            current, slope = across / self.value, np.full_like(across, 1 / np.max(self.value))
+        else:
+            over = (across - self.value) / FADE_V
+            current = np.logaddexp(0.0, over) * FADE_V / VOLT_MODE_OHM
+            slope = 0.5 * (1 + np.tanh(0.5 * over)) / VOLT_MODE_OHM
+        current, slope = current + BLEED_S * across, slope + BLEED_S
+        row = np.stack([slope, -slope], axis=1)
+        return np.stack([current, -current], axis=1), np.stack([row, -row], axis=1)
+
+
+@dataclass(frozen=True)
+class SupplyOutput:
+    """A bench supply: constant voltage up to its current limit, able to sink its own preload.
+
+    The preload keeps it linear around no load, where a supply that could not sink at all would
+    have a corner just where a run begins.
+    """
+
+    name: str
+    nodes: tuple[str, str]
+    emf_V: float
+    limit_A: float
+    ohms: float
+    """Its own, and those of the lead and the shunt up to the port."""
+
+    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+        """Smoothed at both ends (softplus), so that it can be solved."""
+        wide = 0.02 * self.limit_A + 0.005
+        asked = (self.emf_V - volts[:, 0] + volts[:, 1]) / self.ohms
+        low, high = (asked + PRELOAD_A) / NARROW_A, (asked - self.limit_A) / wide
+        given = NARROW_A * np.logaddexp(0.0, low) - PRELOAD_A - wide * np.logaddexp(0.0, high)
+        slope = 0.5 * (np.tanh(0.5 * low) - np.tanh(0.5 * high)) / self.ohms
+        row = np.stack([slope, -slope], axis=1)
+        return np.stack([-given, given], axis=1), np.stack([row, -row], axis=1)
