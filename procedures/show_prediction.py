@@ -81,11 +81,20 @@ def _show_scenario(console: Console, scenario: Scenario) -> None:
     for r in scenario.ratings:
         state = "holds" if r.holds else "DOES NOT HOLD"
         console.print(
-            f"  {r.part} {r.rating}: {r.value:.4g} of {r.limit:.4g} {r.unit}, {state}",
+            f"  {r.part} {r.rating}: {_plain(r.value)} of {r.limit:.4g} {_unit(r.unit)}, {state}",
             markup=False,
         )
     for note in scenario.notes:
         console.print(f"  {note}", markup=False)
+
+
+def _plain(value: float) -> str:
+    """Four digits; what is less than a millionth of a millionth is nothing."""
+    return f"{value:.4g}" if abs(value) >= 1e-12 else "0"
+
+
+def _unit(unit: str) -> str:
+    return "°C" if unit == "C" else unit
 
 
 def _finite(value: object) -> object:

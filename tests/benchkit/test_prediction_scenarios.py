@@ -77,3 +77,14 @@ def test_parts_burn_what_the_stage_loses() -> None:
 def test_unknown_scenario() -> None:
     with pytest.raises(ValueError, match="'sideways' is not a scenario: one of right-way"):
         answer(PMOS, "sideways")
+
+
+def test_a_current_at_its_very_rating_holds() -> None:
+    """What the solver leaves over, parts in a thousand million, must not make it fail."""
+    found = answer(
+        SCHOTTKY, "right-way", ("average_current_max_A = 3", "average_current_max_A = 2")
+    )
+    value, limit, holds = rating(found, "average forward current")
+    assert value == pytest.approx(limit, rel=1e-6)
+    assert holds
+    assert found.notes == []
