@@ -224,3 +224,16 @@ def test_a_signal_switches_off_first_and_is_exit_3(name: str, folder: Path) -> N
     assert "stopped" in kinds
     result = json.loads((folder / "o" / GOOD / "result.json").read_text("utf-8"))
     assert result["verdict"] == "undecided"
+
+
+def test_two_simulated_benches_can_be_served_at_once(served: Path) -> None:
+    second = start("simulate", "bench.toml", cwd=served)
+    try:
+        assert second.stdout is not None
+        lines = [second.stdout.readline() for _ in range(6)]
+        assert lines[-1].startswith("in real time")
+        first = (served / "real.toml").read_text()
+        assert not any(line.split()[1] in first for line in lines[:4])
+    finally:
+        second.kill()
+        second.communicate()
