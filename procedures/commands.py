@@ -15,7 +15,7 @@ from benchkit.reading import Reading
 from instruments.bench import Bench, open_bench
 from procedures.batch import Lot, conclude, prepare, run_lot
 from procedures.exits import report_error
-from procedures.inputs import BoardInputs, read_board, read_lot, read_serial
+from procedures.inputs import BoardInputs, check_writable, read_board, read_lot, read_serial
 from procedures.interrupts import Interrupts
 from procedures.operators import ConsoleOperator, SimulatedOperator, check_somebody_is_there
 from procedures.plan import Plan
@@ -71,6 +71,7 @@ def verify_board(
     screen = Screen(quiet=as_json)
     if dry_run:
         return _show_plan(inputs.job.plan, as_json=as_json)
+    check_writable(out or Path("runs"))
     folder = free_folder(out or Path("runs"), serial)
     with opened(inputs, screen) as bench:
         done = run_board(bench, inputs.job, serial, folder, screen)
@@ -112,6 +113,7 @@ def measure_lot(
     inputs: BoardInputs, lot: Lot, screen: Screen, *, resume: bool
 ) -> tuple[int, dict[str, object]]:
     """Measure what is still to do of a lot and conclude it; exit code and ``lot.json``."""
+    check_writable(lot.folder)
     todo = prepare(lot, resume=resume)
     ended: BenchkitError | None = None
     known: dict[str, Evaluation] = {}

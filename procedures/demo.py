@@ -9,7 +9,7 @@ from rich.console import Console
 from benchkit.errors import InputError
 from procedures.batch import Lot
 from procedures.commands import measure_lot, opened
-from procedures.inputs import read_board, read_lot
+from procedures.inputs import check_writable, read_board, read_lot
 from procedures.screen import Screen
 from procedures.starters import place_starters
 from procedures.tell import tell_board, tell_lot
@@ -20,6 +20,7 @@ DIODE_SERIAL = "TG-0042"
 
 def run_demo(out: Path, seed: int | None) -> int:
     """Measure an invented lot of MOSFET stages and one diode stage; 0 when it could be done."""
+    check_writable(out)
     if out.exists() and any(out.iterdir()):
         raise InputError(f"{out}: is there already and not empty; give another with --out")
     files = out / "files"

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import difflib
+import tempfile
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -9,6 +11,9 @@ from benchkit.errors import InputError
 from benchkit.files import BenchFile, LotFile, StageFile, load
 from benchkit.files.lot import check_serial
 from benchkit.stage import build_stage
+from instruments.bench import DIALECTS
+from instruments.dialects import load_dialect, shipped_dialects
+from instruments.simulated.board import parse_faults
 from procedures.plan import plan_board
 from procedures.verify import Job
 
@@ -38,6 +43,7 @@ def read_board(
         mistakes.append(str(error))
     if stage_file is None or bench is None:
         raise InputError("\n".join(mistakes))
+    _check_instruments(bench, bench_path)
     stage = build_stage(stage_file, str(stage_path))
     try:
         plan = plan_board(stage, bench)
@@ -56,6 +62,57 @@ def read_lot(lot_path: Path, bench_path: Path) -> tuple[LotFile, BoardInputs]:
             f"{lot_path}: lot.stage is {lot.lot.stage!r}, but there is no file {stage_path}"
         )
     return lot, read_board(stage_path, bench_path, {"lot.toml": lot_path})
+
+
+def _check_instruments(bench: BenchFile, path: Path) -> None:
+    """InputError for what would only come out once the bench is opened."""
+    mistakes = []
+    for name, item in bench.instruments.items():
+        shipped = item.dialect in shipped_dialects()
+        if not shipped and not item.dialect.endswith(".toml"):
+            near = difflib.get_close_matches(item.dialect, shipped_dialects(), 1)
+            mistakes.append(
+                f"instruments.{name}.dialect is {item.dialect!r}, it must be one of "
+                f"{', '.join(shipped_dialects())}, or a path ending in .toml"
+                + (f"; the nearest is {near[0]}" if near else "")
+            )
+            continue
+        try:
+            load_dialect(
+                item.dialect if shipped else path.parent / item.dialect, DIALECTS[item.kind]
+            )
+        except InputError as error:
+            mistakes.append(f"instruments.{name}.dialect is {item.dialect!r}: {error}")
+    if bench.simulated is not None:
+        for serial, spelled in bench.simulated.boards.items():
+            try:
+                parse_faults(spelled)
+            except ValueError as error:
+                mistakes.append(f"simulated.boards.{serial}: {error}")
+        stage = bench.simulated.stage
+        if stage is not None and not (path.parent / stage).is_file():
+            mistakes.append(
+                f"simulated.stage is {stage!r}, but there is no file {path.parent / stage}"
+            )
+    if mistakes:
+        raise InputError("\n".join(f"{path}: {mistake}" for mistake in mistakes))
+
+
+def check_writable(folder: Path) -> None:
+    """InputError when results cannot go to ``folder``, which need not exist yet."""
+    there = folder.absolute()
+    while not there.exists():
+        there = there.parent
+    if not there.is_dir():
+        raise InputError(f"--out is {folder}, but {there} is a file: give a folder")
+    try:
+        with tempfile.TemporaryFile(dir=there):
+            pass
+    except OSError as error:
+        raise InputError(
+            f"--out is {folder}, but nothing can be written in {there}: {error.strerror}; give "
+            "another folder"
+        ) from None
 
 
 def read_serial(serial: str) -> str:

@@ -35,11 +35,12 @@ class ConsoleOperator:
         return answer.strip().lower() in ("", "yes", "done")
 
     def _ask(self, prompt: str) -> str:
-        self._screen.console.print(prompt, end="", markup=False)
-        try:
-            return input()
-        except EOFError:
-            return "stop"
+        with self._screen.still():
+            self._screen.console.print(prompt, end="", markup=False)
+            try:
+                return input()
+            except EOFError:
+                return "stop"
 
 
 class SimulatedOperator:

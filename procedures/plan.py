@@ -10,6 +10,7 @@ import numpy as np
 from benchkit.files import BenchFile
 from benchkit.guard import Ceilings, Envelope
 from benchkit.prediction.heat import working_point
+from benchkit.prediction.scenarios import scenario
 from benchkit.stage import Stage
 
 ZEROS = 8
@@ -134,6 +135,14 @@ def plan_board(stage: Stage, bench: BenchFile) -> Plan:
             )
         )
     what = f"{supply:g} V at up to {top:g} A"
+    right_way = scenario(stage, stage.corner(1), "right-way")
+    beyond = [
+        f"{r.part} {r.rating} {r.value:.3g} of {r.limit:g} {r.unit}"
+        for r in right_way.ratings
+        if not r.holds
+    ]
+    if beyond:
+        what += f" (BEYOND A DATASHEET RATING at the highest supply voltage: {', '.join(beyond)})"
     return Plan(
         tuple(steps), sweep, soak, 1.3 * worst_drop, case_max - 5.0, (CAUTION.format(what=what),)
     )

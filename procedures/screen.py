@@ -36,6 +36,19 @@ class Screen:
         self.console.print(f"CAUTION  {text}", style="bold", markup=False)
 
     @contextmanager
+    def still(self) -> Iterator[None]:
+        """No bar while a question stands on the screen: it would be drawn over the answer."""
+        bar = self._progress
+        if bar is None:
+            yield
+            return
+        bar.stop()
+        try:
+            yield
+        finally:
+            bar.start()
+
+    @contextmanager
     def progress(self, label: str, total: float) -> Iterator[None]:
         """A bar around something that takes its time; see ``advance``."""
         if self.quiet or self._progress is not None or not self.console.is_terminal:

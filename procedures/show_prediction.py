@@ -14,6 +14,7 @@ from benchkit.files import StageFile, load
 from benchkit.prediction.predict import Prediction, predict
 from benchkit.prediction.scenarios import Scenario
 from benchkit.stage import build_stage
+from procedures.tell import print_table
 
 
 def show_prediction(path: Path, *, as_json: bool) -> int:
@@ -50,7 +51,7 @@ def _show(p: Prediction) -> None:
             f"{r.loss_W:.3f}",
             f"{r.junction_C:.1f}",
         )
-    console.print(table)
+    print_table(console, table)
     if p.runs_away:
         console.print("hottest enclosure, highest current: RUNS AWAY", style="bold", markup=False)
     else:

@@ -12,6 +12,8 @@ from benchkit.records.result import Measurand, Result
 from procedures.batch import Lot
 from procedures.verify import Done
 
+WIDTH = 80
+"""What the tables need."""
 MARKS = {"pass": "pass", "fail": "FAIL", "undecided": "undecided", None: ""}
 
 
@@ -28,15 +30,20 @@ def tell_board(done: Done) -> None:
     for sentence in result.why:
         console.print(f"  - {sentence}", markup=False)
     if result.measurands:
-        console.print(figures(result))
+        print_table(console, figures(result))
     console.print(f"record  {done.folder}", markup=False, soft_wrap=True)
     console.print(f"report  {done.folder / 'report.html'}", markup=False, soft_wrap=True)
+
+
+def print_table(console: Console, table: Table) -> None:
+    """A table, whole: on a narrow screen its lines run over, for half a number is a wrong one."""
+    console.print(table, width=max(console.width, WIDTH), crop=False, soft_wrap=True)
 
 
 def figures(result: Result) -> Table:
     """The measurands as a table, their conditions shortened: the report has them whole."""
     table = Table(box=None, padding=(0, 1), header_style="bold")
-    table.add_column("figure")
+    table.add_column("figure", min_width=12)
     for head in ("measured", "± U", "promised", "limit"):
         table.add_column(head, justify="right", no_wrap=True)
     table.add_column("unit", no_wrap=True)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import re
 import tomllib
 import typing
 from collections.abc import Iterator, Mapping
@@ -30,11 +31,19 @@ def load(model: type[Model], path: Path) -> Model:
     right; the first line counts them when there are several.
     """
     try:
-        text = path.read_text(encoding="utf-8")
+        # Some Windows editors put a byte-order mark first: it is no mistake.
+        text = path.read_text(encoding="utf-8-sig")
     except FileNotFoundError:
         raise InputError(f"{path}: there is no such file") from None
-    except (OSError, UnicodeDecodeError) as error:
-        raise InputError(f"{path}: cannot be read as UTF-8 text: {error}") from None
+    except IsADirectoryError:
+        raise InputError(f"{path}: is a directory; give the file in it") from None
+    except UnicodeDecodeError as error:
+        line = bytes(error.object[: error.start]).count(b"\n") + 1
+        raise InputError(
+            f"{path}: line {line} is not UTF-8 text: save the file as UTF-8 in your editor"
+        ) from None
+    except OSError as error:
+        raise InputError(f"{path}: cannot be read: {error.strerror}") from None
     return parse(model, text, str(path))
 
 
@@ -43,7 +52,10 @@ def parse(model: type[Model], text: str, name: str) -> Model:
     try:
         data = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
-        raise InputError(f"{name}: is not valid TOML: {error}") from None
+        raise InputError(f"{name}: is not valid TOML: {error}{_quoted(text, error)}") from None
+    except RecursionError:
+        raise InputError(f"{name}: is not valid TOML: brackets within brackets, too deep") from None
+    _check_kind(model, data, name)
     try:
         return model.model_validate(data, context={"file": name})
     except ValidationError as error:
@@ -52,6 +64,30 @@ def parse(model: type[Model], text: str, name: str) -> Model:
     if len(lines) > 1:
         lines.insert(0, f"{name}: {len(mistakes)} mistakes")
     raise InputError("\n".join(lines)) from None
+
+
+def _quoted(text: str, error: tomllib.TOMLDecodeError) -> str:
+    """The line that the parser stumbled over: its own words do not say which key it is."""
+    place = re.search(r"at line (\d+)", str(error))
+    if place is None:
+        return ""
+    line = text.split("\n")[int(place[1]) - 1].strip()
+    hint = "; a number stands without a unit, with a point" if NO_NUMBER.search(line) else ""
+    return f": {_short(line)}{hint}" if line else ""
+
+
+NO_NUMBER = re.compile(r"=\s*[+-]?\d+([.]\d+)?\s*(,\s*\d|[A-Za-z%°µ])")
+"""Such as ``= 12V`` or ``= 12,5``."""
+
+
+def _check_kind(model: type[BaseModel], data: Mapping[str, Any], name: str) -> None:
+    """InputError for a file of another kind, in one sentence instead of a list of all its keys."""
+    wanted = [key for key, field in model.model_fields.items() if field.is_required()]
+    if data and not set(data) & set(model.model_fields):
+        raise InputError(
+            f"{name}: has [{'], ['.join(map(str, list(data)[:4]))}]: this is another kind of file; "
+            f"here one with [{'], ['.join(wanted)}] is needed"
+        )
 
 
 WANTED = {
@@ -82,6 +118,13 @@ def _mistakes(error: ValidationError, model: type[BaseModel], data: object) -> I
         elif kind == "union_tag_invalid":
             right = context["expected_tags"]
             yield f"{key}.kind is {context['tag']!r}, it must be one of {right}"
+        elif kind == "literal_error" and item["loc"][-1] == "[key]":
+            yield f"{key} cannot stand here: it must be {context['expected']}"
+        elif kind == "too_short":
+            there, least = context["actual_length"], context["min_length"]
+            yield f"{key} is too short: it holds {there}, and at least {least} are needed"
+        elif kind == "string_too_long":
+            yield f"{key} is longer than {context['max_length']} characters"
         elif kind == "literal_error":
             yield f"{key} is {item['input']!r}, it must be {context['expected']}"
         elif kind == "value_error":

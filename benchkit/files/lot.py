@@ -39,6 +39,14 @@ class Lot(FileModel):
         twice = [serial for serial, count in Counter(serials).items() if count > 1]
         if twice:
             raise ValueError(f"{', '.join(twice)} stands there more than once")
+        folded: dict[str, str] = {}
+        for serial in serials:
+            other = folded.setdefault(serial.lower(), serial)
+            if other != serial:
+                raise ValueError(
+                    f"{other} and {serial} differ in capitals only: some computers would put them "
+                    "into one folder"
+                )
         return serials
 
 

@@ -138,7 +138,12 @@ class StageFile(FileModel):
                 f"soak.current_A is {self.soak.current_A:g}: it must not be above "
                 f"stage.current_max_A {most:g}"
             )
-        for limit in self.limits.drop:
+        for number, limit in enumerate(self.limits.drop, start=1):
+            if limit.max_V >= self.stage.supply_min_V:
+                raise ValueError(
+                    f"limits.drop[{number}].max_V is {limit.max_V:g}: it must be below "
+                    f"stage.supply_min_V {self.stage.supply_min_V:g}; volts, not millivolts"
+                )
             if not any(abs(limit.current_A / a - 1) < 1e-6 for a in self.sweep.currents_A):
                 raise ValueError(
                     f"limits.drop has a limit at {limit.current_A:g} A, which is not one of "

@@ -228,10 +228,13 @@ class Guard:
         try:
             self._off = False
             self.__load.release()
-            # The limit first: on supplies whose over-current level is their current limit, the
-            # level read back is that of the limit then in force.
-            self.__supply.program(envelope.voltage_V, envelope.current_limit_A)
+            # Zero volts first: a supply may refuse a protection level below its set voltage, and a
+            # voltage above its protection level, so neither may be in the other's way. The current
+            # limit before the levels: on supplies whose over-current level is their current limit,
+            # the level read back is that of the limit then in force.
+            self.__supply.program(0.0, envelope.current_limit_A)
             self._protect(envelope)
+            self.__supply.program(envelope.voltage_V, envelope.current_limit_A)
             self._journal.event(
                 "on",
                 f"{envelope.name}: {envelope.sentence()}",

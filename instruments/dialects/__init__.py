@@ -73,8 +73,8 @@ def load_dialect(name_or_path: str | Path, kind: type[D]) -> D:
             close = difflib.get_close_matches(name, shipped_dialects(), 1)
             guess = f"; did you mean {close[0]!r}?" if close else ""
             raise InputError(
-                f"there is no dialect {name!r}{guess} Shipped are {', '.join(shipped_dialects())}; "
-                "your own file is named by its path, ending in '.toml'"
+                f"there is no dialect {name!r}{guess}. Shipped are "
+                f"{', '.join(shipped_dialects())}; your own file is named by its path, ending in '.toml'"
             )
         text = resources.files(__name__).joinpath(file).read_text(encoding="utf-8")
     try:

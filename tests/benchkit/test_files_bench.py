@@ -101,7 +101,7 @@ def test_a_good_bench() -> None:
          'only load, meter, thermometer has the resource "simulated": a bench is simulated as a '
          "whole or not at all"),
         (("[points]\n", '[points]\nrise = { instrument = "meter" }\n'),
-         "points.rise is 'rise', it must be 'drop', 'exposed_voltage', 'guarded_voltage', "
+         "points.rise cannot stand here: it must be 'drop', 'exposed_voltage', 'guarded_voltage', "
          "'exposed_current', 'case' or 'ambient'"),
     ],
 )  # fmt: skip

@@ -31,5 +31,5 @@ def test_a_serial_stands_there_once() -> None:
 
 
 def test_no_boards() -> None:
-    with pytest.raises(InputError, match=r"lot\.serials is \[\], "):
+    with pytest.raises(InputError, match=r"lot\.serials is too short"):
         lot("[]")
