@@ -12,7 +12,7 @@ from benchkit.records.result import Measurand, Result
 from procedures.batch import Lot
 from procedures.verify import Done
 
-WIDTH = 80
+WIDTH = 92
 """What the tables need."""
 MARKS = {"pass": "pass", "fail": "FAIL", "undecided": "undecided", None: ""}
 
@@ -37,7 +37,8 @@ def tell_board(done: Done) -> None:
 
 def print_table(console: Console, table: Table) -> None:
     """A table, whole: on a narrow screen its lines run over, for half a number is a wrong one."""
-    console.print(table, width=max(console.width, WIDTH), crop=False, soft_wrap=True)
+    wide = Console(file=console.file, width=max(console.width, WIDTH), highlight=False)
+    wide.print(table)
 
 
 def figures(result: Result) -> Table:

@@ -49,6 +49,15 @@ class Instrument(FileModel):
     voltage: list[VoltageAccuracy] = Field(default_factory=list)
     temperature: TemperatureAccuracy | None = None
 
+    @field_validator("resource")
+    @classmethod
+    def _spelled(cls, resource: str) -> str:
+        if resource != "simulated" and "::" not in resource:
+            raise ValueError(
+                f"{resource!r} must be a VISA resource such as TCPIP::192.0.2.10::5025::SOCKET"
+            )
+        return resource
+
     @model_validator(mode="after")
     def _accuracy(self) -> Instrument:
         if self.kind == "meter" and not self.voltage:

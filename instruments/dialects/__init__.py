@@ -74,7 +74,8 @@ def load_dialect(name_or_path: str | Path, kind: type[D]) -> D:
             guess = f"; did you mean {close[0]!r}?" if close else ""
             raise InputError(
                 f"there is no dialect {name!r}{guess}. Shipped are "
-                f"{', '.join(shipped_dialects())}; your own file is named by its path, ending in '.toml'"
+                f"{', '.join(shipped_dialects())}; your own file is named by its path, ending in "
+                "'.toml'"
             )
         text = resources.files(__name__).joinpath(file).read_text(encoding="utf-8")
     try:

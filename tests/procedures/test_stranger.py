@@ -70,6 +70,8 @@ def test_few_currents_a_wrong_point_and_a_limit_in_millivolts() -> None:
     assert "sweep.currents_A is too short: it holds 2, and at least 4 are needed" in few
     point = said("bench.toml", ("[points.ambient]", "[points.ambiant]"))
     assert "points.ambiant cannot stand here: it must be 'drop'" in point
+    address = said("bench.toml", ('resource = "simulated"', 'resource = "192.0.2.10:5025"'))
+    assert "instruments.supply.resource: '192.0.2.10:5025' must be a VISA resource such" in address
     limit = said("stage.toml", ("max_V = 0.078", "max_V = 78.0"))
     assert "limits.drop[1].max_V is 78: it must be below stage.supply_min_V 9" in limit
 
