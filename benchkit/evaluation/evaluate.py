@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 
 import numpy as np
 
@@ -44,7 +44,7 @@ def evaluate(record: Record, serial: str) -> Evaluation:
         *_drops(promise, drops),
         *_thermal(promise, soak if usable else None, extreme),
     ]
-    remarks = remarks_of(record, stage, sweep, drops, soak, extreme)
+    remarks = remarks_of(record, stage, promise.scenarios, sweep, drops, soak, extreme)
     verdict, why = summary(measurands, remarks, stopped)
     result = Result(
         serial,
@@ -55,6 +55,7 @@ def evaluate(record: Record, serial: str) -> Evaluation:
         measurands,
         [remark.text for remark in remarks],
         _not_tested(record),
+        [{"scenario": s.name, **asdict(r)} for s in promise.scenarios for r in s.ratings],
     )
     return Evaluation(result, stage, sweep, drops, soak, extreme)
 

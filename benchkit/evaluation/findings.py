@@ -16,6 +16,7 @@ from benchkit.evaluation.sweep import DropAt, Sweep, junctions_C
 from benchkit.fits.drop import diagnose
 from benchkit.metrology import Accuracy
 from benchkit.prediction.forward import forward
+from benchkit.prediction.scenarios import Scenario
 from benchkit.records.record import Record
 from benchkit.stage import Stage
 
@@ -44,6 +45,7 @@ class Remark:
 def remarks_of(
     record: Record,
     stage: Stage,
+    scenarios: Sequence[Scenario],
     sweep: Sweep | None,
     drops: Sequence[DropAt],
     soak: Soak | None,
@@ -52,6 +54,7 @@ def remarks_of(
     """What a run's data mean, the gravest first; empty when there is nothing to remark."""
     kinds = ("found-on", "sweep-cut", "soak-skipped")
     told = [Remark("note", text) for kind in kinds for text in record.said(kind)]
+    told += _of_ratings(scenarios, measured_heat=extreme is not None)
     if sweep is not None:
         told += _of_sweep(record, stage, sweep)
         told += _of_band(stage, drops)
@@ -74,6 +77,24 @@ def remarks_of(
             )
     order: list[Weight] = ["fault", "doubt", "note"]
     return sorted(told, key=lambda remark: order.index(remark.weight))
+
+
+def _of_ratings(scenarios: Sequence[Scenario], *, measured_heat: bool) -> list[Remark]:
+    """A stage that takes a part beyond its sheet is not passed by measuring how well it works.
+
+    The junction's temperature is left to the measured one where there is one.
+    """
+    return [
+        Remark(
+            "doubt",
+            f"{r.part}: its {r.rating} can reach {r.value:.4g} {r.unit} ({found.name}), beyond its "
+            f"rating of {r.limit:.4g} {r.unit}: the stage as its file describes it does not keep "
+            "its parts inside their datasheets",
+        )
+        for found in scenarios
+        for r in found.ratings
+        if not r.holds and not (measured_heat and r.rating == "junction temperature")
+    ]
 
 
 def _of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:

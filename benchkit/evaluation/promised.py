@@ -13,6 +13,7 @@ from benchkit.files import StageFile
 from benchkit.prediction.forward import forward
 from benchkit.prediction.heat import working_point
 from benchkit.prediction.predict import BAND_PERCENT, SAMPLES, SEED
+from benchkit.prediction.scenarios import SCENARIOS, Scenario, scenario
 from benchkit.records.record import Record
 from benchkit.stage import Sample, Stage, build_stage
 
@@ -29,6 +30,8 @@ class Promised:
     drawn: Sample
     case_hottest: Promise | None
     junction_margin: Promise | None
+    scenarios: tuple[Scenario, ...]
+    """Every rating at the worst supply voltage, current and tolerance."""
 
     def drops(self, current_A: Floats, junction_C: Floats) -> list[Promise]:
         """Drop at currents of the stage file and any junction temperature, nominal supply.
@@ -87,6 +90,7 @@ def _promised(text: str) -> Promised:
         drawn,
         _promise(many.case_C, one.case_C),
         _promise(top - many.junction_C, top - one.junction_C),
+        tuple(scenario(stage, drawn, name) for name in SCENARIOS),
     )
 
 

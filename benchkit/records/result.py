@@ -53,6 +53,9 @@ class Result:
     measurands: list[Measurand]
     findings: list[str]
     not_tested: list[str]
+    ratings: list[dict[str, object]] = field(default_factory=list)
+    """Predicted, at the worst of tolerance and supply: scenario, part, rating, unit, value,
+    limit, margin, holds."""
 
     def document(self) -> dict[str, object]:
         """JSON-ready, with the contract's keys first."""
@@ -66,4 +69,5 @@ class Result:
             "why": self.why,
             "findings": self.findings,
             "not_tested": self.not_tested,
+            "ratings": self.ratings,
         }

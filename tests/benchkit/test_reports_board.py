@@ -256,7 +256,7 @@ def test_what_is_not_on_the_front_page_is_behind_it(tmp_path: Path) -> None:
     stage = CHANNEL.replace("[0.1, 0.2, 0.5, 1.0, 2.0, 3.0, 4.0, 5.0]", f"[{currents}]")
     record, evaluation = run(tmp_path / "run", Board(stage=stage))
     html = board_report(record, evaluation, MANIFEST)
-    every = html[html.index('id="figures"') : html.index('id="budgets"')]
+    every = html[html.index('id="figures"') : html.index('id="ratings"')]
     rows = re.findall(r'<tr><td class="b">', every)
     assert len(rows) == len(evaluation.result.measurands) == 55
 

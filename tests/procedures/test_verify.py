@@ -185,3 +185,20 @@ def test_a_good_diode_passes(tmp_path: Path) -> None:
     done, _ = measure(workshop(tmp_path / "w"), "TG-0042", "stage-diode.toml")
     assert done.error is None
     assert done.evaluation.result.verdict == "pass"
+
+
+def test_a_part_beyond_its_rating_keeps_a_board_from_passing(tmp_path: Path) -> None:
+    """The gate of this stage sees the whole supply: at 15 V it needs more than 12 V of rating."""
+    folder = workshop(tmp_path / "w")
+    stage = folder / "stage.toml"
+    stage.write_text(
+        stage.read_text().replace("gate_source_max_V = 20.0", "gate_source_max_V = 12.0")
+    )
+    done, _ = measure(folder)
+    assert done.error is None
+    result = done.evaluation.result
+    assert result.verdict == "undecided"
+    assert any("Q1: its gate-source voltage can reach 14.9" in line for line in result.why)
+    row = next(r for r in result.ratings if r["rating"] == "gate-source voltage")
+    assert row["holds"] is False
+    assert "DOES NOT HOLD" in (done.folder / "report.html").read_text("utf-8")
