@@ -112,7 +112,7 @@ class _Speaking(Supply):
 class PlainSupply(_Speaking):
     """``supply-plain``: one output, no channel anywhere; both protections are always on."""
 
-    def _pick(self, channels: Sequence[int] | None) -> list[Output]:  # noqa: ARG002
+    def _pick(self, channels: Sequence[int] | None) -> list[Output]:  # noqa: ARG002  it has one
         return [self.outputs[self.wired]]
 
     def table(self) -> list[Entry]:
@@ -159,7 +159,7 @@ class SelectSupply(_Speaking):
 
     protections_always_on = False
 
-    def _pick(self, channels: Sequence[int] | None) -> list[Output]:  # noqa: ARG002
+    def _pick(self, channels: Sequence[int] | None) -> list[Output]:  # noqa: ARG002  the selected one
         return [self.outputs[self._selected]]
 
     def reset(self) -> None:
