@@ -9,7 +9,7 @@ from itertools import pairwise
 import numpy as np
 
 from benchkit.errors import InputError
-from benchkit.files.parts import Diode, ForwardPoint, LeakagePoint
+from benchkit.files.parts.junctions import Diode, ForwardPoint, LeakagePoint
 from benchkit.parts.diode import (
     BOLTZMANN_OVER_CHARGE,
     LEAST_SERIES_OHM,
@@ -42,14 +42,19 @@ def diode_model(reference: str, part: Diode) -> DiodeModel:
     if not part.leakage:
         note = f"{reference}: no leakage points are given, so only its saturation current leaks"
         return DiodeModel(model.typical, model.worst, (*model.notes, note))
-    leaking, notes = _with_leakage(reference, part.leakage, model.typical)
-    most = max((p.max_A or p.typ_A) / p.typ_A for p in part.leakage)
+    return with_leakage(reference, part.leakage, model)
+
+
+def with_leakage(reference: str, points: Sequence[LeakagePoint], model: DiodeModel) -> DiodeModel:
+    """The model with its leakage fitted to points (at least one), and its maxima."""
+    leaking, notes = _leakage(reference, points, model.typical)
+    most = max((p.max_A or p.typ_A) / p.typ_A for p in points)
     worst = replace(
         model.worst,
         leakage_A=float(leaking.leakage_A) * most, leakage_V=leaking.leakage_V,
         leakage_power=leaking.leakage_power, leakage_doubles_K=leaking.leakage_doubles_K,
     )  # fmt: skip
-    return DiodeModel(leaking, worst, (*model.notes, *notes))
+    return replace(model, typical=leaking, worst=worst, notes=(*model.notes, *notes))
 
 
 def junction_model(
@@ -192,7 +197,7 @@ def _bandgap(name: str, law: DiodeLaw, hot: Sequence[ForwardPoint]) -> float:
     return bandgap
 
 
-def _with_leakage(
+def _leakage(
     reference: str, points: Sequence[LeakagePoint], law: DiodeLaw
 ) -> tuple[DiodeLaw, list[str]]:
     """The law with its leakage, and notes on what the points left open."""

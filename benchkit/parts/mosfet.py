@@ -25,10 +25,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from benchkit.errors import InputError
-from benchkit.files.parts import OnResistancePoint, PMosfet
-from benchkit.parts.diode import REFERENCE_C, ZERO_C, DiodeLaw, DiodeModel
+from benchkit.files.parts.mosfets import Mosfet, OnResistancePoint
+from benchkit.parts.diode import REFERENCE_C, ZERO_C, DiodeAt, DiodeLaw, DiodeModel
 from benchkit.parts.diode import thermal_voltage as _vt
-from benchkit.parts.diode_points import junction_model
+from benchkit.parts.diode_points import junction_model, with_leakage
 from benchkit.parts.tolerance import between
 
 Floats = NDArray[np.float64]
@@ -42,6 +42,55 @@ for holes in pure silicon (Sze); it makes an on-resistance of 1.6 times at 125 C
 EXPONENTS = (0.3, 4.0)
 """What a printed hot on-resistance may ask for and still be believed."""
 LEAST_SERIES_OHM = 1e-7
+
+
+@dataclass(frozen=True)
+class ChannelAt:
+    """A channel at its junction temperature; its fields are numbers or arrays (batch,).
+
+    unit_A: 2 n b Vt^2. twice_vt_V: 2 Vt.
+    """
+
+    unit_A: Floats | float
+    threshold_V: Floats | float
+    twice_vt_V: Floats | float
+
+    def current(self, gate_V: Floats, drain_V: Floats) -> tuple[Floats, Floats, Floats]:
+        """Drain current of the bare channel (without series resistance) and its slopes.
+
+        gate_V and drain_V are measured from the source, shape (batch,). Returns (amperes, dI/dVg,
+        dI/dVd).
+        """
+        forward = (gate_V - self.threshold_V) / (SLOPE_FACTOR * self.twice_vt_V)
+        f, f_slope = _softplus(forward)
+        r, r_slope = _softplus(forward - drain_V / self.twice_vt_V)
+        unit = 2 * self.unit_A / self.twice_vt_V
+        f_slope *= f
+        r_slope *= r
+        amps = self.unit_A * ((f - r) * (f + r))
+        return amps, (unit / SLOPE_FACTOR) * (f_slope - r_slope), unit * r_slope
+
+
+@dataclass(frozen=True)
+class MosfetAt:
+    """A MOSFET at its junction temperature: channel behind series resistance, and body diode."""
+
+    channel: ChannelAt
+    series_ohm: Floats | float
+    body: DiodeAt
+
+
+@dataclass(frozen=True)
+class MosfetLaws:
+    """Channel and body diode of one part."""
+
+    channel: ChannelLaw
+    body: DiodeLaw
+
+    def at(self, junction_C: Floats | float) -> MosfetAt:
+        """The laws at junction temperatures, shape (batch,) or one number."""
+        channel, body = self.channel.at(junction_C), self.body.at(junction_C)
+        return MosfetAt(channel, self.channel.series(junction_C), body)
 
 
 @dataclass(frozen=True)
@@ -59,25 +108,15 @@ class ChannelLaw:
         ohms: Floats = np.asarray(self.series_ohm) * ratio**self.exponent
         return ohms
 
-    def current(
-        self, gate_V: Floats, drain_V: Floats, junction_C: Floats | float
-    ) -> tuple[Floats, Floats, Floats]:
-        """Drain current of the bare channel (without series resistance) and its slopes.
-
-        gate_V and drain_V are measured from the source. Returns (amperes, dI/dVg, dI/dVd).
-        """
-        vt, n = _vt(junction_C), SLOPE_FACTOR
+    def at(self, junction_C: Floats | float) -> ChannelAt:
+        """The law at junction temperatures, shape (batch,) or one number."""
+        vt = _vt(junction_C)
         ratio = (np.asarray(junction_C, dtype=float) + ZERO_C) / (REFERENCE_C + ZERO_C)
-        unit = 2 * n * np.asarray(self.gain_A_per_V2) * ratio**-self.exponent * vt**2
         threshold = self.threshold_V - THRESHOLD_FALL_V_PER_K * (
             np.asarray(junction_C, dtype=float) - REFERENCE_C
         )
-        forward = (gate_V - threshold) / n / (2 * vt)
-        backward = forward - drain_V / (2 * vt)
-        f, r = np.logaddexp(0.0, forward), np.logaddexp(0.0, backward)
-        f_slope = 2 * f * _logistic(forward) / (2 * vt)
-        r_slope = 2 * r * _logistic(backward) / (2 * vt)
-        return unit * (f * f - r * r), unit * (f_slope - r_slope) / n, unit * r_slope
+        unit = 2 * SLOPE_FACTOR * np.asarray(self.gain_A_per_V2) * ratio**-self.exponent * vt**2
+        return ChannelAt(unit, threshold, 2 * vt)
 
     def on_resistance(
         self, gate_V: float, current_A: float, junction_C: float = REFERENCE_C
@@ -85,8 +124,9 @@ class ChannelLaw:
         """Drop over current, in ohms, of channel and series resistance at ``current_A``."""
         drain = np.full(np.shape(self.gain_A_per_V2), 1e-3)
         gate = np.full_like(drain, gate_V)
+        channel = self.at(junction_C)
         for _ in range(60):
-            amps, _, slope = self.current(gate, drain, junction_C)
+            amps, _, slope = channel.current(gate, drain)
             step = np.clip((current_A - amps) / np.maximum(slope, 1e-12), -0.5, 0.5)
             drain = np.clip(drain + step, 0.0, 100.0)
             if np.all(np.abs(step) < 1e-12):
@@ -106,23 +146,23 @@ class MosfetModel:
     body: DiodeModel
     notes: tuple[str, ...]
 
-    def sample(self, resistance_score: Floats, threshold_score: Floats) -> ChannelLaw:
-        """Sampled channels: the whole on-resistance scales by one score, threshold by another."""
+    def sample(self, a: Floats, b: Floats, c: Floats) -> MosfetLaws:
+        """Sampled parts: scores of 0 are typical, -3 and +3 the sheet's limits.
+
+        a: the whole on-resistance. b: threshold. c: the body diode, drop and leakage together.
+        """
         log_ratio = float(np.log(self.resistance_ratio))
-        scale = np.exp(between(resistance_score, -log_ratio, 0.0, log_ratio))
+        scale = np.exp(between(a, -log_ratio, 0.0, log_ratio))
         middle = float(self.typical.threshold_V)
-        threshold = between(threshold_score, self.threshold_min_V, middle, self.threshold_max_V)
-        return ChannelLaw(
+        threshold = between(b, self.threshold_min_V, middle, self.threshold_max_V)
+        channel = ChannelLaw(
             self.typical.gain_A_per_V2 / scale, threshold,
             self.typical.series_ohm * scale, self.typical.exponent,
         )  # fmt: skip
-
-    def body_law(self, score: Floats) -> DiodeLaw:
-        """Sampled body diodes."""
-        return self.body.sample(score, np.zeros_like(score))
+        return MosfetLaws(channel, self.body.sample(c, c, c))
 
 
-def mosfet_model(reference: str, part: PMosfet) -> MosfetModel:
+def mosfet_model(reference: str, part: Mosfet) -> MosfetModel:
     """Fit channel, spread and body diode to a sheet's points.
 
     Raises InputError naming ``parts.<reference>`` when the points contradict each other.
@@ -166,13 +206,15 @@ def mosfet_model(reference: str, part: PMosfet) -> MosfetModel:
         notes.append(f"{reference}: no maximum on-resistance is printed; its spread is not known")
     shift = extrapolated - part.threshold.middle_V
     body = junction_model(reference, part.body_diode, "silicon", "body_diode")
+    if part.leakage:
+        body = with_leakage(reference, part.leakage, body)
     return MosfetModel(
         law, max(ratios, default=1.0), part.threshold.min_V + shift,
         part.threshold.max_V + shift, body, (*notes, *body.notes),
     )  # fmt: skip
 
 
-def _fit_cold(cold: Sequence[OnResistancePoint], part: PMosfet) -> tuple[float, float, float]:
+def _fit_cold(cold: Sequence[OnResistancePoint], part: Mosfet) -> tuple[float, float, float]:
     """Gain, extrapolated threshold and series resistance, by fixed-point iteration.
 
     The printed threshold is where a few hundred microamperes flow, below the extrapolated
@@ -227,6 +269,8 @@ def _fit_hot(name: str, law: ChannelLaw, points: Sequence[OnResistancePoint]) ->
     return replace(law, exponent=float(np.mean(found)))
 
 
-def _logistic(x: Floats) -> Floats:
-    """1 / (1 + exp(-x)), to full relative precision in both tails, where slopes live."""
-    return np.exp(-np.logaddexp(0.0, -x))
+def _softplus(x: Floats) -> tuple[Floats, Floats]:
+    """ln(1 + exp(x)) and its derivative, to full relative precision in both tails."""
+    small = np.exp(-np.abs(x))
+    value = np.maximum(x, 0.0) + np.log1p(small)
+    return value, np.where(x >= 0, 1.0, small) / (1 + small)
