@@ -1,8 +1,11 @@
 """A network of parts and the one solver that finds its operating point."""
 
 from benchkit.circuit.elements import (
+    Bipolar,
     Channel,
     CurrentLoad,
+    Emf,
+    FuseLink,
     Junction,
     LimitedSource,
     Resistor,
@@ -11,6 +14,6 @@ from benchkit.circuit.network import GROUND, Network, network
 from benchkit.circuit.solver import Solution, solve
 
 __all__ = [
-    "GROUND", "Channel", "CurrentLoad", "Junction", "LimitedSource", "Network", "Resistor",
-    "Solution", "network", "solve",
+    "GROUND", "Bipolar", "Channel", "CurrentLoad", "Emf", "FuseLink", "Junction", "LimitedSource",
+    "Network", "Resistor", "Solution", "network", "solve",
 ]  # fmt: skip

@@ -1,7 +1,7 @@
 """The elements a network can hold, each a law between its terminals.
 
-Parameters may be plain numbers or arrays over the batch. Positive current flows from a node into
-the element. Signs of a two-terminal element: from its first node to its second.
+Parameters may be plain numbers or arrays over the batch, shape (batch,). Positive current flows
+from a branch's first terminal through the element to its second.
 """
 
 from __future__ import annotations
@@ -11,21 +11,15 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.parts.diode import DiodeLaw
-from benchkit.parts.mosfet import ChannelLaw
+from benchkit.circuit.network import Branch
+from benchkit.parts.bipolar import BipolarAt
+from benchkit.parts.diode import DiodeAt
+from benchkit.parts.fuse import FuseAt
+from benchkit.parts.mosfet import ChannelAt
 
 Floats = NDArray[np.float64]
 
 CORNER_SHARE, CORNER_A = 0.02, 0.005
-
-
-ENDS = np.array([1.0, -1.0])
-BETWEEN = np.outer(ENDS, ENDS)
-
-
-def _branch(current: Floats, slope: Floats) -> tuple[Floats, Floats]:
-    """Terminal currents and Jacobian of a two-terminal element of V(first) - V(second)."""
-    return current[:, None] * ENDS, slope[:, None, None] * BETWEEN
 
 
 @dataclass(frozen=True)
@@ -36,10 +30,25 @@ class Resistor:
     nodes: tuple[str, str]
     ohms: Floats | float
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """Ohm's law."""
-        slope = np.broadcast_to(1 / np.asarray(self.ohms, dtype=float), volts.shape[:1])
-        return _branch((volts[:, 0] - volts[:, 1]) * slope, slope)
+        slope = 1 / np.asarray(self.ohms, dtype=float)
+        return [Branch(0, 1, (volts[0] - volts[1]) * slope, ((0, 1, slope),))]
+
+
+@dataclass(frozen=True)
+class Emf:
+    """A voltage behind a resistance: a battery, a charged capacitor, a stiff source."""
+
+    name: str
+    nodes: tuple[str, str]
+    emf_V: Floats | float
+    ohms: Floats | float
+
+    def branches(self, volts: Floats) -> list[Branch]:
+        """Ohm's law about the open-circuit voltage, plus pole first."""
+        slope = 1 / np.asarray(self.ohms, dtype=float)
+        return [Branch(0, 1, (volts[0] - volts[1] - self.emf_V) * slope, ((0, 1, slope),))]
 
 
 @dataclass(frozen=True)
@@ -57,15 +66,23 @@ class LimitedSource:
     limit_A: Floats | float
     ohms: Floats | float = 5e-3
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """Delivered current clipped smoothly to the quadrant it can work in."""
-        limit = np.broadcast_to(np.asarray(self.limit_A, dtype=float), volts.shape[:1])
-        asked = (self.emf_V - volts[:, 0] + volts[:, 1]) / self.ohms
-        width = CORNER_SHARE * limit + CORNER_A
-        low, high = asked / width, (asked - limit) / width
-        given = width * (np.logaddexp(0, low) - np.logaddexp(0, high))
-        slope = (_logistic(low) - _logistic(high)) / self.ohms
-        return _branch(-given, slope)
+        asked = (self.emf_V - volts[0] + volts[1]) / self.ohms
+        width = CORNER_SHARE * self.limit_A + CORNER_A
+        low, high = asked / width, (asked - self.limit_A) / width
+        # Softplus of low less softplus of high, as corners and their rounding: far beyond a corner
+        # the difference of two large numbers would lose a small limit.
+        low_tail, high_tail = np.exp(-np.abs(low)), np.exp(-np.abs(high))
+        corners = np.clip(asked, 0.0, self.limit_A)
+        given = corners + width * (np.log1p(low_tail) - np.log1p(high_tail))
+        # Both in [0, 1]; the difference keeps its precision in either tail of the quadrant.
+        low_part, high_part = low_tail / (1 + low_tail), high_tail / (1 + high_tail)
+        slope = np.where(
+            low < 0, low_part - high_part,
+            np.where(high < 0, 1 - low_part - high_part, high_part - low_part),
+        ) / self.ohms  # fmt: skip
+        return [Branch(0, 1, -given, ((0, 1, slope),))]
 
 
 @dataclass(frozen=True)
@@ -76,25 +93,37 @@ class CurrentLoad:
     nodes: tuple[str, str]
     amps: Floats | float
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """The same current at any voltage."""
-        current = np.broadcast_to(np.asarray(self.amps, dtype=float), volts.shape[:1])
-        return _branch(current, np.zeros_like(current))
+        return [Branch(0, 1, np.broadcast_to(np.asarray(self.amps, float), volts[0].shape), ())]
 
 
 @dataclass(frozen=True)
 class Junction:
-    """A diode from anode (first node) to cathode (second)."""
+    """A diode from anode (first node) to cathode (second), with its breakdown if it has one."""
 
     name: str
     nodes: tuple[str, str]
-    law: DiodeLaw
-    junction_C: Floats | float
+    law: DiodeAt
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """The junction law of ``benchkit.parts.diode``."""
-        current, slope = self.law.current(volts[:, 0] - volts[:, 1], self.junction_C)
-        return _branch(current, slope)
+        current, slope = self.law.current(volts[0] - volts[1])
+        return [Branch(0, 1, current, ((0, 1, slope),))]
+
+
+@dataclass(frozen=True)
+class FuseLink:
+    """A fuse that has not opened, warm as its current makes it."""
+
+    name: str
+    nodes: tuple[str, str]
+    law: FuseAt
+
+    def branches(self, volts: Floats) -> list[Branch]:
+        """The resistance law of ``benchkit.parts.fuse``."""
+        current, slope = self.law.current(volts[0] - volts[1])
+        return [Branch(0, 1, current, ((0, 1, slope),))]
 
 
 @dataclass(frozen=True)
@@ -103,20 +132,36 @@ class Channel:
 
     name: str
     nodes: tuple[str, str, str]
-    law: ChannelLaw
-    junction_C: Floats | float
+    law: ChannelAt
     polarity: int
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """The channel law of ``benchkit.parts.mosfet``, mirrored for a P-channel."""
-        drain, gate, source = (self.polarity * volts[:, k] for k in range(3))
-        amps, by_gate, by_drain = self.law.current(gate - source, drain - source, self.junction_C)
-        none = np.zeros_like(amps)
-        currents = self.polarity * np.stack([amps, none, -amps], axis=1)
-        row = np.stack([by_drain, by_gate, -by_drain - by_gate], axis=1)
-        return currents, np.stack([row, np.zeros_like(row), -row], axis=1)
+        drain, gate, source = volts
+        amps, by_gate, by_drain = self.law.current(
+            self.polarity * (gate - source), self.polarity * (drain - source)
+        )
+        inner = np.abs(self.law.threshold_V) + self.law.twice_vt_V
+        slopes = ((1, 2, by_gate), (0, 2, by_drain))
+        return [Branch(0, 2, self.polarity * amps, slopes, inner)]
 
 
-def _logistic(x: Floats) -> Floats:
-    """1 / (1 + exp(-x)), to full relative precision in both tails, where slopes live."""
-    return np.exp(-np.logaddexp(0.0, -x))
+@dataclass(frozen=True)
+class Bipolar:
+    """A bipolar transistor: collector, base, emitter. ``polarity`` +1 for NPN, -1 for PNP."""
+
+    name: str
+    nodes: tuple[str, str, str]
+    law: BipolarAt
+    polarity: int
+
+    def branches(self, volts: Floats) -> list[Branch]:
+        """The law of ``benchkit.parts.bipolar``, mirrored for a PNP."""
+        collector, base, emitter = volts
+        ic, ib, ic_be, ic_bc, ib_be, ib_bc = self.law.current(
+            self.polarity * (base - emitter), self.polarity * (base - collector)
+        )
+        return [
+            Branch(0, 2, self.polarity * ic, ((1, 2, ic_be), (1, 0, ic_bc))),
+            Branch(1, 2, self.polarity * ib, ((1, 2, ib_be), (1, 0, ib_bc))),
+        ]

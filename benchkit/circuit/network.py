@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Protocol
+from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,12 +15,23 @@ GROUND = "0"
 """The reference node, at zero volts."""
 
 
-class Element(Protocol):
-    """A part of a network.
+class Branch(NamedTuple):
+    """One current through an element: from terminal ``first`` to terminal ``second``.
 
-    An element with n terminals takes their voltages, shape (batch, n), and gives the currents
-    that flow from the nodes into it, shape (batch, n), and their slopes, (batch, n, n).
+    slopes: (plus, minus, siemens) for each pair of terminals whose voltage controls it. inner_V:
+    a voltage inside the law, above those at its terminals, whose last bits are seen in the current
+    too. Arrays have shape (batch,) or broadcast to it.
     """
+
+    first: int
+    second: int
+    amps: Floats
+    slopes: tuple[tuple[int, int, Floats], ...]
+    inner_V: Floats | float = 0.0
+
+
+class Element(Protocol):
+    """A part of a network, a frozen dataclass whose arrays all run over the batch."""
 
     @property
     def name(self) -> str:
@@ -30,8 +41,8 @@ class Element(Protocol):
     def nodes(self) -> tuple[str, ...]:
         """Where its terminals are connected."""
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
-        """Currents into the element and their Jacobian."""
+    def branches(self, volts: Floats) -> list[Branch]:
+        """Its currents at terminal voltages of shape (terminals, batch)."""
 
 
 @dataclass(frozen=True)
@@ -60,3 +71,13 @@ def network(
     if twice:
         raise ValueError(f"two elements are called {', '.join(sorted(twice))}")
     return Network(tuple(elements), dict(held or {}))
+
+
+def terminal_currents(element: Element, volts: Mapping[str, Floats]) -> list[Floats]:
+    """Current into every terminal of an element, amperes, shape (batch,) each."""
+    at = np.stack([volts[node] for node in element.nodes])
+    into = [np.zeros(at.shape[1]) for _ in element.nodes]
+    for branch in element.branches(at):
+        into[branch.first] = into[branch.first] + branch.amps
+        into[branch.second] = into[branch.second] - branch.amps
+    return into

@@ -74,7 +74,7 @@ def test_series_diode(ngspice: str, tmp_path: Path, amps: float, temp: float) ->
     deck = f"V1 in 0 12\nD1 in out dx\nI1 out 0 {amps}\n{diode_model('dx', DIODE)}\n.temp {temp}"
     theirs = 12 - operating_point(ngspice, tmp_path, deck, "out")
     circuit = network([
-        Junction("D1", ("in", "out"), DIODE, temp), CurrentLoad("I1", ("out", GROUND), amps),
+        Junction("D1", ("in", "out"), DIODE.at(temp)), CurrentLoad("I1", ("out", GROUND), amps),
     ], held={"in": 12.0})  # fmt: skip
     ours = 12 - solve(circuit, 1).volts["out"][0]
     assert ours == pytest.approx(theirs, rel=3e-5)
@@ -101,8 +101,8 @@ I1 out 0 {amps}
     theirs = supply - operating_point(ngspice, tmp_path, deck, "out")
     circuit = network([
         Resistor("R1", ("in", "inside"), CHANNEL.series(temp)),
-        Channel("Q1", ("inside", "gate", "out"), CHANNEL, temp, -1),
-        Junction("D1", ("in", "out"), BODY, temp),
+        Channel("Q1", ("inside", "gate", "out"), CHANNEL.at(temp), -1),
+        Junction("D1", ("in", "out"), BODY.at(temp)),
         Resistor("R2", ("gate", GROUND), 100.0),
         CurrentLoad("I1", ("out", GROUND), amps),
     ], held={"in": supply})  # fmt: skip

@@ -13,6 +13,7 @@ from benchkit.circuit import (
     GROUND,
     Channel,
     CurrentLoad,
+    Emf,
     Junction,
     LimitedSource,
     Network,
@@ -21,15 +22,16 @@ from benchkit.circuit import (
     network,
     solve,
 )
-from benchkit.circuit.network import Element
-from benchkit.circuit.solver import TOLERANCE
+from benchkit.circuit.network import Branch, Element, terminal_currents
+from benchkit.circuit.solver import CHUNK, TOLERANCE
 from benchkit.parts.diode import DiodeLaw, thermal_voltage
-from benchkit.parts.mosfet import ChannelLaw
-from benchkit.topologies.base import EXPOSED, GUARDED, MosfetLaws
+from benchkit.parts.mosfet import ChannelLaw, MosfetLaws
+from benchkit.topologies.base import EXPOSED, GUARDED
 from tests.benchkit.example_stages import PMOS, SCHOTTKY, build
 
 Floats = NDArray[np.float64]
 
+CHANNEL = ChannelLaw(20.0, 1.8, 0.0)
 PLAIN_DIODE = DiodeLaw(1e-6, 1.05, 0.05, 0.69, 2.0)
 AT_C = 0.026977208077140147 / 1.05 / 8.617333262e-5 - 273.15
 """Where n k T / q is what pvlib was asked with."""
@@ -54,7 +56,7 @@ def test_junction_with_resistance_against_lambert_w() -> None:
     law = replace(PLAIN_DIODE, series_ohm=1e-6)
     saturation = float(np.exp(law.log_saturation(40.0)))
     circuit = network(
-        [Junction("D1", ("in", "mid"), law, 40.0), Resistor("R1", ("mid", GROUND), ohms)],
+        [Junction("D1", ("in", "mid"), law.at(40.0)), Resistor("R1", ("mid", GROUND), ohms)],
         held={"in": volts},
     )
     whole = ohms + 1e-6
@@ -73,7 +75,7 @@ def test_series_diode_against_pvlib() -> None:
     law = replace(PLAIN_DIODE, saturation_A=1e-6)
     law = replace(law, bandgap_V=0.0, exponent=0.0)  # the same Is at any temperature
     volts = np.array([0.3, 0.5, 0.1, 0.4, 0.8])
-    circuit = network([Junction("D1", ("in", GROUND), law, AT_C)], held={"in": volts})
+    circuit = network([Junction("D1", ("in", GROUND), law.at(AT_C))], held={"in": volts})
     amps = solve(circuit, volts.size).currents["D1"]
     assert amps[:2] == pytest.approx(list(recorded.values()), rel=1e-9)
     common = {
@@ -82,7 +84,7 @@ def test_series_diode_against_pvlib() -> None:
     }  # fmt: skip
     assert amps == pytest.approx(-i_from_v(volts, **common), rel=1e-9)
     driven = network([
-        CurrentLoad("I1", ("top", GROUND), -1.0), Junction("D1", ("top", GROUND), law, AT_C),
+        CurrentLoad("I1", ("top", GROUND), -1.0), Junction("D1", ("top", GROUND), law.at(AT_C)),
     ])  # fmt: skip
     drop = solve(driven, 1).volts["top"]
     assert drop == pytest.approx([0.4227039299913234], rel=1e-9)
@@ -98,11 +100,11 @@ def test_power_balances() -> None:
     solution = solve(circuit, 50)
     burnt, delivered = np.zeros(50), np.zeros(50)
     for element in circuit.elements:
-        volts = np.stack([solution.volts[node] for node in element.nodes], axis=1)
-        currents = element.currents(volts)[0]
-        burnt += (volts * currents).sum(axis=1)
-        for terminal, node in enumerate(element.nodes):
-            delivered += 12.0 * currents[:, terminal] * (node == EXPOSED)
+        for node, amps in zip(
+            element.nodes, terminal_currents(element, solution.volts), strict=True
+        ):
+            burnt += solution.volts[node] * amps
+            delivered += 12.0 * amps * (node == EXPOSED)
     assert solution.settled.all()
     assert burnt == pytest.approx(delivered, rel=1e-8)
 
@@ -112,7 +114,7 @@ def test_a_node_that_everything_left_has_a_voltage(ohms: float, share: float) ->
     """Only the shunt is left to hold it. Behind 1e-7 ohm double precision does not see the shunt:
     the Jacobian is singular in it, and any voltage is as good."""
     circuit = network([
-        Channel("Q1", ("d", "g", GROUND), ChannelLaw(20.0, 3.0, 0.0), 25.0, +1),
+        Channel("Q1", ("d", "g", GROUND), ChannelLaw(20.0, 3.0, 0.0).at(25.0), +1),
         Resistor("R1", ("g", GROUND), 100.0), Resistor("R2", ("d", "e"), ohms),
     ])  # fmt: skip
     solution = solve(circuit, 1, start={"d": 5.0, "e": 5.0})
@@ -127,12 +129,10 @@ class _NoWayOut:
     name: str = "X1"
     nodes: tuple[str, str] = ("a", GROUND)
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
-        across = volts[:, 0] - volts[:, 1]
+    def branches(self, volts: Floats) -> list[Branch]:
+        across = volts[0] - volts[1]
         root = np.sqrt(1e4 + across**2)
-        slope = across / root
-        currents = np.stack([root, -root], axis=1)
-        return currents, np.stack([np.stack([slope, -slope], axis=1)] * 2, axis=1)
+        return [Branch(0, 1, root, ((0, 1, across / root),))]
 
 
 def test_what_cannot_be_solved_is_said() -> None:
@@ -159,12 +159,12 @@ def test_an_entry_does_not_depend_on_its_neighbours() -> None:
     assert _bench(limits, 3).volts[GUARDED] == pytest.approx(alone, rel=1e-9, abs=1e-9)
 
 
-def _bench(limit_A: Floats | float, batch: int) -> Solution:
+def _bench(limit_A: Floats | float, batch: int, amps: Floats | float = 3.0) -> Solution:
     return solve(network([
         LimitedSource("V1", (EXPOSED, GROUND), 12.0, limit_A),
-        Junction("D1", (EXPOSED, GUARDED), PLAIN_DIODE, 25.0),
-        _Fading("L1", (GUARDED, GROUND), 3.0),
-    ]), batch, start={EXPOSED: 12.0, GUARDED: 12.0})  # fmt: skip
+        Junction("D1", (EXPOSED, GUARDED), PLAIN_DIODE.at(25.0)),
+        _Fading("L1", (GUARDED, GROUND), amps),
+    ]), max(batch, np.size(amps)), start={EXPOSED: 12.0, GUARDED: 12.0})  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -175,11 +175,9 @@ class _Fading:
     nodes: tuple[str, str]
     amps: Floats | float
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
-        share = np.tanh((volts[:, 0] - volts[:, 1]) / 0.05)
-        current, slope = self.amps * share, self.amps * (1 - share**2) / 0.05
-        row = np.stack([slope, -slope], axis=1)
-        return np.stack([current, -current], axis=1), np.stack([row, -row], axis=1)
+    def branches(self, volts: Floats) -> list[Branch]:
+        share = np.tanh((volts[0] - volts[1]) / 0.05)
+        return [Branch(0, 1, self.amps * share, ((0, 1, self.amps * (1 - share**2) / 0.05),))]
 
 
 def _random_bench(draw: np.random.Generator) -> tuple[Network, dict[str, float] | None]:
@@ -247,6 +245,35 @@ def test_the_common_case_needs_few_iterations() -> None:
     solution = solve(circuit, 400, start={GUARDED: 11.5})
     assert solution.settled.all()
     assert solution.iterations <= 9
+
+
+def test_chunks_do_not_show() -> None:
+    """More entries than one chunk holds, the hard ones gathered from all: each as if alone."""
+    amps = np.geomspace(1e-6, 5, CHUNK + 37)
+    whole = _bench(2.0, 1, amps)
+    assert whole.settled.all()
+    for entry in (0, CHUNK - 1, CHUNK, CHUNK + 36):
+        alone = _bench(2.0, 1, amps[[entry]])
+        assert whole.volts[GUARDED][entry] == pytest.approx(alone.volts[GUARDED][0], rel=1e-9)
+
+
+def test_a_circuit_that_swings_has_its_operating_point_found() -> None:
+    """Three inverting stages in a ring, each a channel on a resistor: it oscillates, so that no
+    transient settles. By symmetry all gates are at the voltage where one stage balances."""
+    law = replace(CHANNEL, gain_A_per_V2=0.5).at(25.0)
+    ring: list[Element] = [Emf("supply", ("rail", GROUND), 12.0, 0.1)]
+    for own, after in (("a", "b"), ("b", "c"), ("c", "a")):
+        ring += [
+            Resistor(f"R{after}", ("rail", after), 1e3),
+            Channel(f"Q{after}", (after, own, GROUND), law, 1),
+        ]  # fmt: skip
+    start = {"rail": 12.0, "a": 2.0, "b": 9.0, "c": 0.5}
+    solution = solve(network(ring), 1, start, follow=True)
+    assert solution.settled.all()
+    gate = solution.volts["a"]
+    assert [solution.volts[n][0] for n in "bc"] == pytest.approx([gate[0], gate[0]], rel=1e-9)
+    amps, _, _ = law.current(gate, gate)
+    assert amps == pytest.approx((solution.volts["rail"] - gate) / 1e3, rel=1e-8)
 
 
 def test_two_elements_of_one_name_are_refused() -> None:
