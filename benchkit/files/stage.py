@@ -10,16 +10,34 @@ from pydantic import Field, field_validator, model_validator
 
 from benchkit.files.loading import FileModel
 from benchkit.files.parts import Part
+from benchkit.files.surroundings import Battery, Equipment, NetworkPart, Source
 
 Positive = Annotated[float, Field(gt=0)]
 Celsius = Annotated[float, Field(ge=-80, le=250)]
+
+
+ScenarioName = Literal[
+    "right-way", "reversed-source", "reversed-source-charged", "reversed-battery-off",
+    "reversed-battery-on", "back-feed", "flat-battery", "open",
+]  # fmt: skip
 
 
 class Working(FileModel):
     """[stage]: what it is and the conditions it works in."""
 
     name: Annotated[str, Field(min_length=1, max_length=120)]
-    topology: Literal["series-diode", "pmos-pass"]
+    topology: Literal[
+        "clamp", "fused-clamp", "series-diode", "pmos-pass", "pmos-pass-zener", "pmos-sensed",
+        "nmos-pass", "nmos-pass-zener", "nmos-sensed", "network",
+    ]  # fmt: skip
+    guards: Literal["load", "supply"] | None = None
+    """What it protects: a load from its source, or a supply or charger from its battery; the
+    topology's usual one unless given."""
+    must_stand: list[ScenarioName] | None = None
+    """The scenarios in which every rating must hold; the usual ones for what it guards unless
+    given."""
+    main: str | None = None
+    """Of a network: the part that carries the working current, whose case is measured."""
     supply_min_V: Positive
     supply_nominal_V: Positive
     supply_max_V: Annotated[float, Field(gt=0, le=400)]
@@ -112,6 +130,10 @@ class StageFile(FileModel):
 
     stage: Working
     parts: Annotated[dict[str, Part], Field(min_length=1)]
+    network: list[NetworkPart] = Field(default_factory=list)
+    source: Source = Source()
+    battery: Battery = Battery()
+    equipment: Equipment = Equipment()
     heat: Heat
     sweep: Sweep
     soak: Soak | None = None
@@ -124,6 +146,28 @@ class StageFile(FileModel):
             if not (name.isascii() and name.isalnum() and name[0].isalpha() and len(name) <= 12):
                 raise ValueError(f"{name!r} must be a reference such as D1 or Q2")
         return parts
+
+    @model_validator(mode="after")
+    def _wired(self) -> StageFile:
+        free = self.stage.topology == "network"
+        if free and not self.network:
+            raise ValueError(
+                'stage.topology is "network": [[network]] must say what each part is wired to'
+            )
+        if free and self.stage.main not in self.parts:
+            raise ValueError(
+                f"stage.main is {self.stage.main!r}: with a network it must be the part that "
+                f"carries the working current, one of {', '.join(self.parts)}"
+            )
+        if free and self.stage.guards is None:
+            raise ValueError('stage.guards is missing: with a network it is "load" or "supply"')
+        if not free and self.network:
+            raise ValueError(
+                f'[[network]] is for stage.topology "network"; here it is "{self.stage.topology}"'
+            )
+        if not free and self.stage.main is not None:
+            raise ValueError('stage.main is for stage.topology "network" only')
+        return self
 
     @model_validator(mode="after")
     def _consistent(self) -> StageFile:

@@ -1,82 +1,151 @@
-"""What a topology file gives: how its parts are wired between the exposed and the guarded port.
+"""What a topology file gives: which parts it has, and between which nodes each is wired.
 
-Every topology uses the same node names, so that sources, loads and meters know where to go:
-``exposed+``, ``exposed-``, ``guarded+`` and ``guarded-``. A topology that breaks only the plus
-lead makes both minus nodes ground.
+Every topology uses the same port names: ``exposed+``, ``exposed-``, ``guarded+`` and ``guarded-``.
+A P-channel topology breaks the plus lead, so its two minus terminals are one node, the reference;
+its N-channel mirror breaks the minus lead, and there the two plus terminals are the reference.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import Literal, Protocol
+from typing import Literal
 
-import numpy as np
-from numpy.typing import NDArray
-
-from benchkit.circuit import GROUND
-from benchkit.circuit.network import Element
-from benchkit.parts.diode import DiodeLaw
-from benchkit.parts.mosfet import ChannelLaw
-
-Floats = NDArray[np.float64]
+from benchkit.circuit.network import GROUND
 
 EXPOSED, GUARDED = "exposed+", "guarded+"
+PLUS, MINUS = (EXPOSED, GUARDED), ("exposed-", "guarded-")
+INNER = "inner"
+"""The broken lead behind fuse and lead resistance, where the device begins."""
+
+TERMINALS: Mapping[str, tuple[str, ...]] = {
+    "diode": ("anode", "cathode"),
+    "tvs": ("anode", "cathode"),
+    "zener": ("anode", "cathode"),
+    "p-mosfet": ("drain", "gate", "source"),
+    "n-mosfet": ("drain", "gate", "source"),
+    "npn": ("collector", "base", "emitter"),
+    "pnp": ("collector", "base", "emitter"),
+    "resistor": ("first", "second"),
+    "lead": ("first", "second"),
+    "fuse": ("first", "second"),
+}
+"""The terminals of each kind of part, in the order in which its nodes are given."""
+
+MIRROR = {"p-mosfet": "n-mosfet", "npn": "pnp"}
+POLAR = {"diode", "tvs", "zener"}
 
 
 @dataclass(frozen=True)
-class MosfetLaws:
-    """Channel and body diode of one part."""
+class Role:
+    """One part of a topology: the kinds it can be and its nodes, in the order of TERMINALS.
 
-    channel: ChannelLaw
-    body: DiodeLaw
+    absent: what stands there where the part is not fitted, or ``required``.
+    """
+
+    kinds: tuple[str, ...]
+    nodes: tuple[str, ...]
+    absent: Literal["required", "short", "open"] = "required"
 
 
-Law = DiodeLaw | MosfetLaws | Floats | float
-"""A diode's law, a MOSFET's laws, or a resistor's ohms."""
+@dataclass(frozen=True)
+class Topology:
+    """One way to wire a stage.
 
-
-class Topology(Protocol):
-    """One way to wire a stage."""
+    main: the role whose part carries the working current and gets warm, or is watched for
+    warmth. guards: what usually stands on the guarded side. conducts: what the forward drop of a
+    good board looks like; ``lead`` where the working current meets no semiconductor.
+    """
 
     name: str
-    kinds: Mapping[str, str]
-    """The kind of part each role needs."""
-    optional: Sequence[str]
-    """Roles that may be left out."""
+    roles: Mapping[str, Role]
     main: str
-    """The role whose part carries the working current and gets warm."""
-    conducts: Literal["junction", "channel"]
-    """What the drop of a good board looks like."""
-    control: tuple[str, str] | None
-    """Nodes between which the gate voltage stands, gate first, or None."""
-
-    def elements(
-        self, names: Mapping[str, str], laws: Mapping[str, Law], junction_C: Floats | float
-    ) -> list[Element]:
-        """The stage's elements; ``names`` gives the reference that fills each role."""
+    guards: Literal["load", "supply"]
+    conducts: Literal["junction", "channel", "lead"]
+    reference: Literal["minus", "plus"] = "minus"
 
 
-def mosfet(
-    reference: str, nodes: tuple[str, str, str], laws: MosfetLaws, junction_C: Floats | float,
-    polarity: int,
-) -> list[Element]:  # fmt: skip
-    """A MOSFET as its channel behind its series resistance, and its body diode.
+@dataclass(frozen=True)
+class Ports:
+    """The nodes of the four terminals; two of them may be one."""
 
-    nodes: drain, gate, source. The elements are called ``Q1``, ``Q1.series`` and ``Q1.body``.
-    """
-    from benchkit.circuit import Channel, Junction, Resistor
+    exposed_plus: str
+    exposed_minus: str
+    guarded_plus: str
+    guarded_minus: str
 
-    drain, gate, source = nodes
-    inside = f"{reference}.drain"
-    anode, cathode = (source, drain) if polarity > 0 else (drain, source)
-    return [
-        Channel(reference, (inside, gate, source), laws.channel, junction_C, polarity),
-        Resistor(f"{reference}.series", (drain, inside), laws.channel.series(junction_C)),
-        Junction(f"{reference}.body", (anode, cathode), laws.body, junction_C),
+
+@dataclass(frozen=True)
+class Wiring:
+    """Which part is between which nodes (by reference, in order), and where the ports are."""
+
+    parts: Mapping[str, tuple[str, ...]]
+    ports: Ports
+
+
+def in_lead(fuse: Literal["required", "short"] = "short") -> dict[str, Role]:
+    """Fuse and resistance in the plus lead, between the exposed terminal and the device."""
+    return {
+        "fuse": Role(("fuse",), ("exposed+", "fused"), fuse),
+        "lead": Role(("lead",), ("fused", INNER), "short"),
+    }
+
+
+def mirrored(topology: Topology, name: str) -> Topology:
+    """The same with every voltage and current turned round: N for P, minus lead for plus lead."""
+
+    def role(of: Role) -> Role:
+        nodes = tuple(node.replace("+", "-") for node in of.nodes)
+        if of.kinds[0] in POLAR:
+            nodes = nodes[::-1]
+        return Role(tuple(MIRROR.get(kind, kind) for kind in of.kinds), nodes, of.absent)
+
+    return Topology(
+        name, {key: role(of) for key, of in topology.roles.items()}, topology.main,
+        topology.guards, topology.conducts, "plus",
+    )  # fmt: skip
+
+
+def wire(topology: Topology, names: Mapping[str, str]) -> Wiring:
+    """Place the parts that fill the roles; ``names`` gives the reference in each filled role."""
+    same = [
+        (role.nodes[0], role.nodes[-1])
+        for key, role in topology.roles.items()
+        if key not in names and role.absent == "short"
     ]
+    straight = MINUS if topology.reference == "minus" else PLUS
+    same += [(GROUND, node) for node in straight]
+    parts = {names[key]: role.nodes for key, role in topology.roles.items() if key in names}
+    return _merged(parts, same)
 
 
-__all__ = [
-    "EXPOSED", "GROUND", "GUARDED", "Floats", "Law", "MosfetLaws", "Topology", "mosfet",
-]  # fmt: skip
+def wire_network(parts: Mapping[str, tuple[str, ...]], guards: Literal["load", "supply"]) -> Wiring:
+    """Anyone's own circuit; a port terminal that no part is wired to goes straight through.
+
+    The reference is the minus terminal of the port that is driven in normal use.
+    """
+    used = {node for nodes in parts.values() for node in nodes}
+    same = [pair for pair in (PLUS, MINUS) if not (pair[0] in used and pair[1] in used)]
+    return _merged(parts, [*same, (GROUND, MINUS[0] if guards == "load" else MINUS[1])])
+
+
+def _merged(parts: Mapping[str, tuple[str, ...]], same: Iterable[tuple[str, str]]) -> Wiring:
+    """Give nodes that are one the same name: the reference's, else a port's, else any."""
+    groups: list[set[str]] = []
+    for pair in same:
+        joined = set(pair)
+        for group in [g for g in groups if g & joined]:
+            groups.remove(group)
+            joined |= group
+        groups.append(joined)
+    order = [GROUND, *PLUS, *MINUS]
+    names = {node: min(g, key=lambda n: _rank(n, order)) for g in groups for node in g}
+    ports = (names.get(node, node) for node in (PLUS[0], MINUS[0], PLUS[1], MINUS[1]))
+    return Wiring(
+        {ref: tuple(names.get(node, node) for node in nodes) for ref, nodes in parts.items()},
+        Ports(*ports),
+    )
+
+
+def _rank(node: str, order: Sequence[str]) -> tuple[int, str]:
+    return (order.index(node) if node in order else len(order), node)

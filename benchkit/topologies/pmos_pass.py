@@ -1,49 +1,28 @@
 """``pmos-pass``: a P-channel MOSFET in the plus lead, gate tied to the minus lead.
 
-    exposed+ --- drain [P-channel] source --- guarded+      body diode from drain to source
-                          gate
-                           |
-                      (gate resistor)
-                           |
-    exposed- --------------+--------------- guarded-        the minus lead runs straight through
+    exposed+ --(fuse)--(lead)-- drain [P-channel] source --- guarded+    body diode: drain to source
+                                       gate
+                                        |
+                                   (gate resistor)
+                                        |
+    exposed- ---------------------------+------------------- guarded-
 
 Right way round the body diode conducts first; the source rises to the supply voltage less its
 drop, which drives the gate by that much, and the channel shorts the body diode out. The wrong way
 round the gate is above the source and the body diode blocks. The gate sees the whole supply
-voltage, so its rating bounds the supply.
+voltage, so its rating bounds the supply. While the guarded side holds a voltage of its own the
+channel stays on, whatever the exposed side does.
 """
 
-from __future__ import annotations
+from benchkit.circuit.network import GROUND
+from benchkit.topologies.base import INNER, Role, Topology, in_lead
 
-from collections.abc import Mapping, Sequence
-from typing import Literal
-
-from benchkit.circuit import GROUND, Resistor
-from benchkit.circuit.network import Element
-from benchkit.parts.diode import DiodeLaw
-from benchkit.topologies.base import EXPOSED, GUARDED, Floats, Law, MosfetLaws, mosfet
-
-
-class PmosPass:
-    """See the module."""
-
-    name = "pmos-pass"
-    kinds: Mapping[str, str] = {"pass": "p-mosfet", "gate": "resistor"}
-    optional: Sequence[str] = ("gate",)
-    main = "pass"
-    conducts: Literal["junction", "channel"] = "channel"
-    control: tuple[str, str] | None = ("gate", GUARDED)
-
-    def elements(
-        self, names: Mapping[str, str], laws: Mapping[str, Law], junction_C: Floats | float
-    ) -> list[Element]:
-        """The MOSFET and its gate resistor (100 ohm stands in where none is fitted)."""
-        reference = names["pass"]
-        law = laws[reference]
-        assert isinstance(law, MosfetLaws)
-        ohms = laws[names["gate"]] if "gate" in names else 100.0
-        assert not isinstance(ohms, MosfetLaws | DiodeLaw)
-        return [
-            *mosfet(reference, (EXPOSED, "gate", GUARDED), law, junction_C, polarity=-1),
-            Resistor(names.get("gate", "gate-lead"), ("gate", GROUND), ohms),
-        ]
+PMOS_PASS = Topology(
+    "pmos-pass",
+    {
+        "pass": Role(("p-mosfet",), (INNER, "gate", "guarded+")),
+        "gate": Role(("resistor",), ("gate", GROUND), "short"),
+        **in_lead(),
+    },
+    main="pass", guards="load", conducts="channel",
+)  # fmt: skip
