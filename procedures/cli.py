@@ -53,13 +53,35 @@ def new(directory: Annotated[Path, typer.Argument(help="Where the files go.")]) 
 
 @app.command()
 def predict(
-    stage: Annotated[Path, typer.Argument(help="The stage file.")], json: JsonOption = False
+    stage: Annotated[Path, typer.Argument(help="The stage file.")],
+    page: Annotated[
+        Path | None, typer.Option("--page", help="Also write it as a page to print: page.html.")
+    ] = None,
+    json: JsonOption = False,
 ) -> None:
     """Say what the datasheets promise: drop, loss, heat, gate voltage, ratings. No instrument."""
     from procedures.show_prediction import show_prediction
 
     with leaving():
-        raise typer.Exit(show_prediction(stage, as_json=json))
+        raise typer.Exit(show_prediction(stage, page, as_json=json))
+
+
+@app.command()
+def netlist(
+    stage: Annotated[Path, typer.Argument(help="The stage file.")],
+    scenario: Annotated[
+        str, typer.Option("--scenario", help="Which one, such as reversed-source; see predict.")
+    ],
+    ambient: Annotated[
+        float | None, typer.Option("--ambient", help="In C; the stage's nominal one otherwise.")
+    ] = None,
+    out: Annotated[Path | None, typer.Option("--out", help="A file: deck.cir.")] = None,
+) -> None:
+    """Write the stage in one of its scenarios as a SPICE deck, with the same laws."""
+    from procedures.show_netlist import show_netlist
+
+    with leaving():
+        raise typer.Exit(show_netlist(stage, scenario, ambient, out))
 
 
 @app.command()

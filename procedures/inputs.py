@@ -10,12 +10,15 @@ from pathlib import Path
 from benchkit.errors import InputError
 from benchkit.files import BenchFile, LotFile, StageFile, load
 from benchkit.files.lot import check_serial
-from benchkit.stage import build_stage
+from benchkit.stage import Stage, build_stage
 from instruments.bench import DIALECTS
 from instruments.dialects import load_dialect, shipped_dialects
 from instruments.simulated.board import parse_faults
 from procedures.plan import plan_board
 from procedures.verify import Job
+
+MEASURED = ("series-diode", "pmos-pass", "pmos-pass-zener")
+"""What the procedures of this package measure."""
 
 
 @dataclass(frozen=True)
@@ -45,6 +48,7 @@ def read_board(
         raise InputError("\n".join(mistakes))
     _check_instruments(bench, bench_path)
     stage = build_stage(stage_file, str(stage_path))
+    _check_measurable(stage, stage_path)
     try:
         plan = plan_board(stage, bench)
     except InputError as error:
@@ -62,6 +66,24 @@ def read_lot(lot_path: Path, bench_path: Path) -> tuple[LotFile, BoardInputs]:
             f"{lot_path}: lot.stage is {lot.lot.stage!r}, but there is no file {stage_path}"
         )
     return lot, read_board(stage_path, bench_path, {"lot.toml": lot_path})
+
+
+def _check_measurable(stage: Stage, path: Path) -> None:
+    """InputError for a stage that can be predicted, but that no procedure measures yet."""
+    working = stage.file.stage
+    if working.topology not in MEASURED or stage.guards != "load":
+        raise InputError(
+            f"{path}: stage.topology is {working.topology!r}, guarding a {stage.guards}: what is "
+            f"measured so far is {', '.join(MEASURED)} guarding a load; `benchkit predict` answers "
+            "for every topology"
+        )
+    between = [stage.names[role] for role in ("fuse", "lead") if role in stage.names]
+    if between:
+        raise InputError(
+            f"{path}: parts.{between[0]} is in the way of the current: its drop and heat would be "
+            f"taken for those of {stage.main}; put the drop point's taps across {stage.main} and "
+            f"measure with a file that leaves {' and '.join(between)} out"
+        )
 
 
 def _check_instruments(bench: BenchFile, path: Path) -> None:

@@ -9,6 +9,7 @@ import numpy as np
 
 from benchkit.files import BenchFile
 from benchkit.guard import Ceilings, Envelope
+from benchkit.prediction.connections import surroundings
 from benchkit.prediction.heat import working_point
 from benchkit.prediction.scenarios import scenario
 from benchkit.stage import Stage
@@ -79,7 +80,7 @@ def plan_board(stage: Stage, bench: BenchFile) -> Plan:
     # its limit at once.
     part = stage.main_part
     room = part.junction_max_C - working.ambient_nominal_C
-    loss_max = 0.5 * room / part.junction_to_case_K_per_W
+    loss_max = 0.5 * room / stage.junction_to_case_K_per_W
     case_max = min(ceilings.case_max_C, part.junction_max_C - 15.0)
     visits = 2 * len(file.sweep.currents_A) * file.sweep.repeats
     aperture = (
@@ -135,7 +136,7 @@ def plan_board(stage: Stage, bench: BenchFile) -> Plan:
             )
         )
     what = f"{supply:g} V at up to {top:g} A"
-    right_way = scenario(stage, stage.corner(1), "right-way")
+    right_way = scenario(stage, stage.corner(1), "right-way", surroundings(file))
     beyond = [
         f"{r.part} {r.rating} {r.value:.3g} of {r.limit:g} {r.unit}"
         for r in right_way.ratings

@@ -8,7 +8,10 @@ from pathlib import Path
 
 from benchkit.errors import InputError
 
-NAMES = ("bench.toml", "stage.toml", "stage-diode.toml", "lot.toml")
+NAMES = (
+    "bench.toml", "stage.toml", "stage-diode.toml", "stage-charger.toml", "stage-clamp.toml",
+    "stage-network.toml", "lot.toml",
+)  # fmt: skip
 
 
 def starter(name: str) -> str:

@@ -35,9 +35,9 @@ def tell_board(done: Done) -> None:
     console.print(f"report  {done.folder / 'report.html'}", markup=False, soft_wrap=True)
 
 
-def print_table(console: Console, table: Table) -> None:
+def print_table(console: Console, table: Table, least: int = WIDTH) -> None:
     """A table, whole: on a narrow screen its lines run over, for half a number is a wrong one."""
-    wide = Console(file=console.file, width=max(console.width, WIDTH), highlight=False)
+    wide = Console(file=console.file, width=max(console.width, least), highlight=False)
     wide.print(table)
 
 

@@ -94,7 +94,7 @@ def _drops(promise: Promised, drops: list[DropAt]) -> Iterator[Measurand]:
 
 
 def _lag(stage: Stage) -> float:
-    return stage.main_part.junction_to_case_K_per_W
+    return stage.junction_to_case_K_per_W
 
 
 def _thermal(promise: Promised, soak: Soak | None, extreme: Hottest | None) -> Iterator[Measurand]:

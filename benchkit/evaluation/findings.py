@@ -101,7 +101,7 @@ def _of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:
     """Is this the part that the stage file says? Limits alone cannot tell: a short across a diode
     meets every upper limit of its drop."""
     amps = np.array([d.current_A for d in drops])
-    junction = junctions_C(drops, stage.main_part.junction_to_case_K_per_W)
+    junction = junctions_C(drops, stage.junction_to_case_K_per_W)
     supply = stage.file.stage.supply_nominal_V
     least, most = (
         forward(stage, stage.corner(way), amps, supply, junction).drop_V[0] for way in (-1, 1)
@@ -144,7 +144,7 @@ def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[Remark]:
     current = accuracy_of(record.bench, "exposed_current", sweep.current_range_V)
     tolerance = record.bench.points["exposed_current"].shunt_tolerance_percent
     found = diagnose(
-        stage.topology.conducts,
+        "channel" if stage.conducts == "channel" else "junction",
         sweep.current_A,
         sweep.drop_V,
         junction_of(stage, sweep),
@@ -181,12 +181,12 @@ def _spread_share(sweep: Sweep) -> float:
 def junction_of(stage: Stage, sweep: Sweep) -> NDArray[np.float64]:
     """Junction temperature at each visit: left at the case's, its rise with the current would bend
     a channel's straight line into one with an intercept."""
-    return sweep.case_C + stage.main_part.junction_to_case_K_per_W * sweep.loss_W
+    return sweep.case_C + stage.junction_to_case_K_per_W * sweep.loss_W
 
 
 def temperature_coefficient(stage: Stage) -> float:
     """Relative rise of the drop per kelvin near 25 C, from the datasheet's law."""
-    if stage.topology.conducts != "channel":
+    if stage.conducts != "channel":
         return 0.0
     working = stage.file.stage
     drops = forward(

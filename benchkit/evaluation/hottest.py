@@ -77,7 +77,7 @@ class _Board:
         working = stage.file.stage
         self._soak, self._top, self._ambient = soak, top, working.ambient_max_C
         self._current = working.current_max_A
-        self._lag = stage.main_part.junction_to_case_K_per_W
+        self._lag = stage.junction_to_case_K_per_W
         measured_at = top.case_C + LAG_SHARE * self._lag * top.drop_V * top.current_A
         self._grid = np.linspace(-40.0, BEYOND_C, 69)
         there = forward(

@@ -10,10 +10,11 @@ from numpy.typing import NDArray
 
 from benchkit.evaluation.verdict import Promise
 from benchkit.files import StageFile
+from benchkit.prediction.connections import surroundings
 from benchkit.prediction.forward import forward
 from benchkit.prediction.heat import working_point
-from benchkit.prediction.predict import BAND_PERCENT, SAMPLES, SEED
-from benchkit.prediction.scenarios import SCENARIOS, Scenario, scenario
+from benchkit.prediction.predict import BAND_PERCENT, SAMPLES, SCENARIO_SAMPLES, SEED
+from benchkit.prediction.scenarios import Scenario, scenario
 from benchkit.records.record import Record
 from benchkit.stage import Sample, Stage, build_stage
 
@@ -31,7 +32,7 @@ class Promised:
     case_hottest: Promise | None
     junction_margin: Promise | None
     scenarios: tuple[Scenario, ...]
-    """Every rating at the worst supply voltage, current and tolerance."""
+    """Those that the stage must stand, each rating at the worst voltage, current and tolerance."""
 
     def drops(self, current_A: Floats, junction_C: Floats) -> list[Promise]:
         """Drop at currents of the stage file and any junction temperature, nominal supply.
@@ -85,12 +86,13 @@ def _promised(text: str) -> Promised:
     many = working_point(stage, drawn, *conditions)
     one = working_point(stage, stage.typical(), *conditions)
     top = stage.main_part.junction_max_C
+    around, few = surroundings(stage.file), stage.draw(SCENARIO_SAMPLES, SEED, corners=True)
     return Promised(
         stage,
         drawn,
         _promise(many.case_C, one.case_C),
         _promise(top - many.junction_C, top - one.junction_C),
-        tuple(scenario(stage, drawn, name) for name in SCENARIOS),
+        tuple(scenario(stage, few, name, around) for name in stage.must_stand),
     )
 
 

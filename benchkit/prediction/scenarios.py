@@ -1,34 +1,40 @@
 """Ways the exposed port can be connected, and what each part then stands.
 
-Each scenario is solved over the tolerance samples at its worst supply voltage and current, and
-every rating is compared with the worst sample.
+Each scenario is solved over the tolerance samples, at the lowest and at the highest voltage that
+can drive it and in the hottest ambient, and every rating is compared with the worst of them.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.circuit import GROUND, CurrentLoad, Network, Resistor, Solution, network, solve
-from benchkit.circuit.network import Element
-from benchkit.files.parts import Diode, PMosfet
-from benchkit.files.parts import Resistor as ResistorPart
-from benchkit.prediction.heat import BEYOND_C, working_point
+from benchkit.parts.fuse_points import FuseModel
+from benchkit.prediction.connections import Conditions, Connection, Surroundings, levels
+from benchkit.prediction.coordination import Coordination, worked_share
+from benchkit.prediction.fuse import fuse_of, opening
+from benchkit.prediction.heat import BEYOND_C, settled_junction
+from benchkit.prediction.operating_point import OperatingPoint, connected, other_points, reached
+from benchkit.prediction.part_state import own_elements
+from benchkit.prediction.ratings import Rating, part_ratings, rating
+from benchkit.prediction.sentences import protected, sentences
+from benchkit.prefixes import spoken
 from benchkit.stage import Sample, Stage
-from benchkit.topologies.base import EXPOSED, GUARDED
 
 Floats = NDArray[np.float64]
 
-SOLVED = 1e-6
-"""A figure at its rating holds: what the solver leaves over must not say otherwise."""
-SCENARIOS = ("right-way", "reversed-source")
+SOON_S = 1.0
+"""A fuse that clears within this spares the parts their ratings of continuous current."""
+NEGLIGIBLE_K = 0.05
+"""A junction that its own loss warms by less than this stays at ambient."""
 
 
 @dataclass(frozen=True)
 class PartState:
-    """What one part stands, the sample that stands most (magnitudes keep their sign)."""
+    """What one part stands: the sample furthest from zero of each, with its sign."""
 
     voltage_V: float
     current_A: float
@@ -36,153 +42,179 @@ class PartState:
 
 
 @dataclass(frozen=True)
-class Rating:
-    """One rating of one part against the worst that the scenario asks of it."""
-
-    part: str
-    rating: str
-    unit: str
-    value: float
-    limit: float
-    margin: float
-    holds: bool
-
-
-@dataclass(frozen=True)
 class Scenario:
-    """Answers for one way of connecting."""
+    """Answers for one way of connecting.
+
+    required: whether the stage must stand it. protected: the guarded side never sees more than a
+    forward drop in reverse (or what a clamp leaves), and keeps what it holds of its own.
+    junction_C: the main part's, hottest sample; None where a fuse ends it before that matters,
+    infinite where it runs away.
+    """
 
     name: str
+    required: bool
+    protected: bool
     exposed_current_A: float
     guarded_V: float
     parts: dict[str, PartState]
     ratings: list[Rating]
     notes: list[str]
+    junction_C: float | None
+    worst_residual: float
+    fuse: Coordination | None
+
+    @property
+    def stands(self) -> bool:
+        """Every rating holds, the guarded side is protected, and a fuse that has to open does."""
+        rated = all(one.holds for one in self.ratings)
+        return rated and self.protected and (self.fuse is None or self.fuse.coordinated)
 
     def document(self) -> dict[str, object]:
         """As JSON-ready values."""
-        return asdict(self)
+        own = {**vars(self), "stands": self.stands, "parts": {}, "ratings": [], "fuse": None}
+        return {
+            **own,
+            "parts": {reference: asdict(part) for reference, part in self.parts.items()},
+            "ratings": [asdict(one) for one in self.ratings],
+            "fuse": self.fuse.document() if self.fuse is not None else None,
+        }
 
 
-def scenario(stage: Stage, sample: Sample, name: str) -> Scenario:
+def scenario(stage: Stage, sample: Sample, name: str, around: Surroundings) -> Scenario:
     """Answer one scenario; ValueError for a name that is not in SCENARIOS."""
-    working = stage.file.stage
-    if name == "right-way":
-        # Both ends of the supply: a channel gets hottest where its gate is driven least.
-        ends = np.array([working.supply_min_V, working.supply_max_V])
-        point = working_point(stage, sample, working.current_max_A, ends, working.ambient_max_C)
-        junction = np.nan_to_num(point.junction_C, nan=BEYOND_C).max(axis=1)
-        load: list[Element] = [CurrentLoad("load", (GUARDED, GROUND), working.current_max_A)]
-        circuit = network([*stage.elements(sample, junction), *load],
-                          held={EXPOSED: working.supply_max_V})  # fmt: skip
-        solution = solve(circuit, sample.size, start={GUARDED: working.supply_max_V - 0.5})
-        extra = [_junction_rating(stage, junction)]
-    elif name == "reversed-source":
-        ohms = working.supply_nominal_V / working.current_nominal_A
-        load = [Resistor("load", (GUARDED, GROUND), ohms)]
-        circuit = network([*stage.elements(sample, working.ambient_max_C), *load],
-                          held={EXPOSED: -working.supply_max_V})  # fmt: skip
-        solution = solve(circuit, sample.size)
-        extra = []
-    else:
-        raise ValueError(f"{name!r} is not a scenario: one of {', '.join(SCENARIOS)}")
-    guarded = solution.volts[GUARDED]
-    current = _into(circuit, solution, EXPOSED)
-    parts = {ref: _worst(circuit, solution, ref) for ref in stage.models}
-    ratings = [r for ref in stage.models for r in _ratings(stage, circuit, solution, ref)] + extra
-    worst = int(np.argmax(np.abs(guarded))) if name == "reversed-source" else int(guarded.argmin())
+    at = conditions(stage, around, name, sample.size)
+    boards = sample.repeated(at.volts.size // sample.size)
+    steps = connected(stage, around, name, at)
+    point, junction, away = _warm(stage, boards, steps)
+    fuse = opening(stage, name, point)
+    lasts = fuse is None or not fuse.clears_in_s <= SOON_S
+    parts, ratings = {}, []
+    for reference, nodes in stage.wiring.parts.items():
+        states, part = point.part(reference), stage.file.parts[reference]
+        parts[reference] = PartState(
+            _furthest(states.voltage_V), _furthest(states.current_A), float(states.power_W.max())
+        )
+        own = own_elements(point.circuit.elements, reference)
+        ratings += part_ratings(
+            reference, part, nodes, states, own, point.solution.volts, lasts=lasts
+        )
+        own_rise = getattr(part, "junction_to_ambient_K_per_W", None)
+        if reference != stage.main and own_rise is not None and lasts:
+            warm = stage.file.stage.ambient_max_C + own_rise * states.power_W
+            limit = float(getattr(part, "junction_max_C"))  # noqa: B009
+            ratings.append(rating(reference, "junction temperature", "C", warm, limit))
+    if lasts:
+        limit = stage.main_part.junction_max_C
+        ratings.append(rating(stage.main, "junction temperature", "C", junction, limit))
+    ratings += _fuse_ratings(stage, parts, fuse)
+    notes = [one.sentence() for one in ratings if not one.holds and np.isfinite(one.value)]
+    if lasts and away.any():
+        notes.append(
+            f"{stage.main} has no steady temperature below {BEYOND_C:.0f} °C in some boards within "
+            "tolerance: it runs away or burns"
+        )
+    notes += fuse.notes if fuse is not None else ()
+    safe = protected(name, around, point)
+    outlived = all(one.holds for one in ratings) and (fuse is None or fuse.coordinated)
+    notes += sentences(around, name, point, fuse, outlived=outlived)
+    notes += _others(stage, around, name)
     return Scenario(
-        name, float(current[np.argmax(np.abs(current))]), float(guarded[worst]), parts, ratings,
-        _notes(name, ratings, float(guarded[worst])),
+        name, name in stage.must_stand, safe, _furthest(point.exposed_A), _guarded(name, point),
+        parts, ratings, notes, float(junction.max()) if lasts else None,
+        float(point.solution.residual.max()), fuse,
     )  # fmt: skip
 
 
-def _of(circuit: Network, reference: str) -> list[Element]:
-    return [
-        e for e in circuit.elements if e.name == reference or e.name.startswith(f"{reference}.")
-    ]
+def conditions(stage: Stage, around: Surroundings, name: str, boards: int) -> Conditions:
+    """Every voltage that drives a scenario, for each board in a row."""
+    volts = np.tile(np.array(levels(stage, around, name)), boards)
+    return Conditions(volts, np.full(volts.size, stage.file.stage.current_max_A))
 
 
-def _terminals(solution: Solution, element: Element) -> tuple[Floats, Floats]:
-    volts = np.stack([solution.volts[node] for node in element.nodes], axis=1)
-    return volts, element.currents(volts)[0]
+def _warm(
+    stage: Stage, boards: Sample, steps: Sequence[Connection]
+) -> tuple[OperatingPoint, Floats, NDArray[np.bool_]]:
+    """The operating point with its main part as warm as it makes itself."""
+    ambient = stage.file.stage.ambient_max_C
+    whole = boards.case_to_ambient_K_per_W + stage.junction_to_case_K_per_W
+    point = reached(stage, boards, steps, ambient, ambient)
+    rise = whole * point.part(stage.main).power_W
+    if rise.max() < NEGLIGIBLE_K:
+        return point, ambient + rise, np.zeros(rise.shape, dtype=bool)
+    volts = point.solution.volts
 
-
-def _into(circuit: Network, solution: Solution, node: str) -> Floats:
-    """Current that the elements draw from a node."""
-    total = np.zeros_like(solution.volts[node])
-    for element in circuit.elements:
-        _, currents = _terminals(solution, element)
-        for terminal, name in enumerate(element.nodes):
-            if name == node:
-                total = total + currents[:, terminal]
-    return total
-
-
-def _across(circuit: Network, solution: Solution, reference: str) -> tuple[Floats, Floats, Floats]:
-    """Voltage across a part, current through it, and power in it, for every sample."""
-    own = _of(circuit, reference)
-    power = np.zeros(solution.residual.shape)
-    for element in own:
-        volts, currents = _terminals(solution, element)
-        power = power + (volts * currents).sum(axis=1)
-    if len(own) > 1:
-        first, last = own[1].nodes[0], own[0].nodes[2]
-        outside = own[1:2]
-        through = _terminals(solution, outside[0])[1][:, 0]
-        body = _terminals(solution, own[2])[1][:, 0]
-        through = through + np.where(own[2].nodes[0] == first, body, -body)
-    else:
-        first, last = own[0].nodes[0], own[0].nodes[-1]
-        through = solution.currents[reference]
-    return solution.between(first, last), through, power
-
-
-def _worst(circuit: Network, solution: Solution, reference: str) -> PartState:
-    volts, amps, watts = _across(circuit, solution, reference)
-    k = int(np.argmax(np.abs(volts)))
-    return PartState(float(volts[k]), float(amps[k]), float(watts.max()))
-
-
-def _ratings(stage: Stage, circuit: Network, solution: Solution, reference: str) -> list[Rating]:
-    part = stage.file.parts[reference]
-    volts, amps, watts = _across(circuit, solution, reference)
-    if isinstance(part, Diode):
-        return [
-            _rating(reference, "reverse voltage", "V", -volts, part.reverse_voltage_max_V),
-            _rating(reference, "average forward current", "A", amps, part.average_current_max_A),
+    def loss(junction: Floats) -> Floats:
+        found = [
+            reached(stage, boards, steps, column, ambient, volts).part(stage.main).power_W
+            for column in junction.T
         ]
-    if isinstance(part, PMosfet):
-        gate = solution.between(*_of(circuit, reference)[0].nodes[1:3])
-        return [
-            _rating(reference, "drain-source voltage", "V", np.abs(volts), part.drain_source_max_V),
-            _rating(reference, "gate-source voltage", "V", np.abs(gate), part.gate_source_max_V),
-            _rating(reference, "drain current", "A", np.abs(amps), part.drain_current_max_A),
-        ]
-    assert isinstance(part, ResistorPart)
-    return [_rating(reference, "power", "W", watts, part.power_max_W)]
+        return np.stack(found, axis=1)
+
+    junction, away = settled_junction(loss, np.full((boards.size, 1), ambient), whole[:, None])
+    warm = junction[:, 0]
+    # What no part outlives is shown as it begins, before it has warmed.
+    lost = away[:, 0]
+    shown = np.where(lost | (warm > stage.main_part.junction_max_C), ambient, warm)
+    final = reached(stage, boards, steps, shown, ambient, volts)
+    return final, np.where(lost, np.inf, warm), lost
 
 
-def _rating(part: str, rating: str, unit: str, values: Floats, limit: float) -> Rating:
-    value = max(float(values.max()), 0.0)
-    return Rating(part, rating, unit, value, limit, limit - value, value <= limit * (1 + SOLVED))
-
-
-def _junction_rating(stage: Stage, junction: Floats) -> Rating:
-    limit = stage.main_part.junction_max_C
-    return _rating(stage.main, "junction temperature", "C", junction, limit)
-
-
-def _notes(name: str, ratings: list[Rating], guarded_V: float) -> list[str]:
-    notes = [
-        f"{r.part}: {r.rating} would be {r.value:.4g} {r.unit}, above its rating of "
-        f"{r.limit:.4g} {r.unit}"
-        for r in ratings
-        if not r.holds
+def _fuse_ratings(
+    stage: Stage, parts: dict[str, PartState], fuse: Coordination | None
+) -> list[Rating]:
+    """Its own ratings, and the clamp's surge where it opens."""
+    reference = fuse_of(stage)
+    if reference is None:
+        return []
+    model = stage.models[reference]
+    assert isinstance(model, FuseModel)
+    part = model.part
+    if fuse is None:
+        amps = abs(parts[reference].current_A)
+        most = part.rated_current_A * worked_share(model, stage.file.stage.ambient_max_C)
+        return [rating(reference, "continuous current", "A", amps, most)]
+    found = [
+        rating(reference, "voltage to break", "V", fuse.voltage_V, part.rated_voltage_V),
+        rating(reference, "breaking capacity", "A", fuse.prospective_A, part.breaking_A),
     ]
-    if name == "reversed-source":
-        if guarded_V > -0.5:
-            notes.append(f"the guarded side sees {guarded_V:.3g} V at most: it is protected")
-        else:
-            notes.append(f"the guarded side is pulled to {guarded_V:.3g} V: it is not protected")
-    return notes
+    if fuse.clamp_A2s is not None:
+        found.append(rating(stage.main, "surge I2t", "A2s", fuse.let_through_A2s, fuse.clamp_A2s))
+    return found
+
+
+def _guarded(name: str, point: OperatingPoint) -> float:
+    """The end of the range that matters: highest where a battery feeds back, else lowest."""
+    volts = point.guarded_V
+    return float(volts.max() if name == "back-feed" else volts.min())
+
+
+def _furthest(values: Floats) -> float:
+    return float(values[np.argmax(np.abs(values))])
+
+
+def _others(stage: Stage, around: Surroundings, name: str) -> list[str]:
+    """Say where a typical board has a further operating point."""
+    at = conditions(stage, around, name, 1)
+    boards = stage.typical().repeated(at.volts.size)
+    ambient = stage.file.stage.ambient_nominal_C
+    point = reached(stage, boards, connected(stage, around, name, at), ambient, ambient)
+    highest = max(float(at.volts.max()), around.set_V, around.hold_V)
+    return [_another(point, found) for found in other_points(point, highest)]
+
+
+def _another(point: OperatingPoint, found: OperatingPoint) -> str:
+    """Two operating points in a few words, at the voltage where they differ most."""
+    apart = [np.abs(point.solution.volts[n] - v) for n, v in found.solution.volts.items()]
+    at = int(np.argmax(np.max(apart, axis=0)))
+
+    def described(of: OperatingPoint) -> str:
+        amps, volts = spoken(float(of.exposed_A[at]), "A"), spoken(float(of.guarded_V[at]), "V")
+        return f"{amps} into the exposed port and the guarded side at {volts}"
+
+    return (
+        f"there is another operating point, with {described(found)}, instead of "
+        f"{described(point)}: a disturbance may leave the stage there"
+    )
+
+
+__all__ = ["BEYOND_C", "PartState", "Scenario", "conditions", "scenario"]

@@ -14,8 +14,11 @@ import numpy as np
 from benchkit.circuit.elements import Resistor
 from benchkit.circuit.network import Element
 from benchkit.files import StageFile, load
+from benchkit.parts.diode import DiodeLaw
+from benchkit.parts.mosfet import MosfetLaws
+from benchkit.placing import Law
 from benchkit.stage import Sample, Stage, build_stage
-from benchkit.topologies.base import EXPOSED, GUARDED, Law, MosfetLaws
+from benchkit.topologies.base import EXPOSED, GUARDED
 from instruments.simulated.heat import BoardHeat
 
 BOARD_FAULTS = {
@@ -91,7 +94,7 @@ def make_board(
     slow = stage.file.heat.time_constant_s * draw.uniform(0.85, 1.15)
     heat = BoardHeat(
         rca,
-        stage.main_part.junction_to_case_K_per_W * draw.uniform(0.8, 1.0),
+        stage.junction_to_case_K_per_W * draw.uniform(0.8, 1.0),
         slow,
         slow * draw.uniform(0.1, 0.2),
     )
@@ -121,9 +124,7 @@ def _faulty(stage: Stage, law: Law, faults: Mapping[str, float]) -> Law:
         if "gate-open" in faults:
             channel = dataclasses.replace(channel, gain_A_per_V2=channel.gain_A_per_V2 * 1e-12)
         return MosfetLaws(channel, law.body)
-    if isinstance(law, np.ndarray | float):
-        return law
-    if "drop-shift" in faults:
+    if isinstance(law, DiodeLaw) and "drop-shift" in faults:
         scale = float(law.ideality) * 0.02569
         law = dataclasses.replace(
             law, saturation_A=law.saturation_A * np.exp(-faults["drop-shift"] / scale)

@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from benchkit.circuit.network import Branch
+
 Floats = NDArray[np.float64]
 
 SUPPLY_OHM = 0.005
@@ -26,9 +28,9 @@ class LoadInput:
     mode: str
     value: Floats | float
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """Constant current, resistance, or voltage (behind VOLT_MODE_OHM)."""
-        across = volts[:, 0] - volts[:, 1]
+        across = volts[0] - volts[1]
         if self.mode == "CURR":
             share = np.tanh(across / FADE_V)
             current, slope = self.value * share, self.value * (1 - share**2) / FADE_V
@@ -39,8 +41,7 @@ class LoadInput:
             current = np.logaddexp(0.0, over) * FADE_V / VOLT_MODE_OHM
             slope = 0.5 * (1 + np.tanh(0.5 * over)) / VOLT_MODE_OHM
         current, slope = current + BLEED_S * across, slope + BLEED_S
-        row = np.stack([slope, -slope], axis=1)
-        return np.stack([current, -current], axis=1), np.stack([row, -row], axis=1)
+        return [Branch(0, 1, current, ((0, 1, slope),))]
 
 
 @dataclass(frozen=True)
@@ -58,12 +59,11 @@ class SupplyOutput:
     ohms: float
     """Its own, and those of the lead and the shunt up to the port."""
 
-    def currents(self, volts: Floats) -> tuple[Floats, Floats]:
+    def branches(self, volts: Floats) -> list[Branch]:
         """Smoothed at both ends (softplus), so that it can be solved."""
         wide = 0.02 * self.limit_A + 0.005
-        asked = (self.emf_V - volts[:, 0] + volts[:, 1]) / self.ohms
+        asked = (self.emf_V - volts[0] + volts[1]) / self.ohms
         low, high = (asked + PRELOAD_A) / NARROW_A, (asked - self.limit_A) / wide
         given = NARROW_A * np.logaddexp(0.0, low) - PRELOAD_A - wide * np.logaddexp(0.0, high)
         slope = 0.5 * (np.tanh(0.5 * low) - np.tanh(0.5 * high)) / self.ohms
-        row = np.stack([slope, -slope], axis=1)
-        return np.stack([-given, given], axis=1), np.stack([row, -row], axis=1)
+        return [Branch(0, 1, -given, ((0, 1, slope),))]
