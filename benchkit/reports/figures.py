@@ -108,7 +108,7 @@ def as_svg(figure: Any, label: str) -> str:
 
 
 def _drop(top: Any, below: Any, evaluation: Evaluation, law: FittedLaw | str | None) -> None:
-    sweep, junction = evaluation.sweep, evaluation.stage.topology.conducts == "junction"
+    sweep, junction = evaluation.sweep, evaluation.stage.conducts == "junction"
     assert sweep is not None
     measured = _measured(evaluation)
     factor, unit = shown_in("V", measured)

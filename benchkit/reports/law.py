@@ -35,11 +35,11 @@ class FittedLaw:
 
 def fitted_law(record: Record, stage: Stage, sweep: Sweep) -> FittedLaw | str:
     """Fit the stage's law to every visit; a string says in words why none could be fitted."""
-    least = 3 if stage.topology.conducts == "channel" else 4
+    least = 3 if stage.conducts == "channel" else 4
     if len(sweep.targets) < least:
         return (
             f"No law could be fitted to the sweep: it has {len(sweep.targets)} currents, and the "
-            f"law of a {stage.topology.conducts} needs {least}."
+            f"law of a {stage.conducts} needs {least}."
         )
     amps, volts = sweep.current_A, sweep.drop_V
     drop, current = _accuracies(record, sweep)
@@ -51,7 +51,7 @@ def fitted_law(record: Record, stage: Stage, sweep: Sweep) -> FittedLaw | str:
     order = np.argsort(amps)
     grid = np.linspace(0, 1, 81)
     try:
-        if stage.topology.conducts == "channel":
+        if stage.conducts == "channel":
             alpha = temperature_coefficient(stage)
             found = fit_channel(
                 amps, volts, junction, alpha_per_K=alpha, u_noise_V=noise, scale_noise=True,
