@@ -72,12 +72,14 @@ def test_procedures_cannot_reach_a_raw_supply_or_load() -> None:
 
 PUBLIC = {
     "benchkit.circuit": {
-        "GROUND", "Channel", "CurrentLoad", "Junction", "LimitedSource", "Network", "Resistor",
-        "Solution", "network", "solve",
+        "GROUND", "Bipolar", "Channel", "CurrentLoad", "Emf", "FuseLink", "Junction",
+        "LimitedSource", "Network", "Resistor", "Solution", "network", "solve",
     },
     "benchkit.files": {"BenchFile", "LotFile", "StageFile", "load"},
     "benchkit.guard": {"Ceilings", "Envelope", "Guard", "Live"},
-    "benchkit.topologies": {"TOPOLOGIES", "Topology"},
+    "benchkit.topologies": {
+        "TOPOLOGIES", "Ports", "Topology", "Wiring", "wire", "wire_network",
+    },
 }  # fmt: skip
 
 

@@ -25,8 +25,9 @@ def linear(_: Stage, sample: Sample, amps: Floats, volts: Floats, junction_C: Fl
     loss = amps**2 * OHM * (1 + PER_KELVIN * (np.asarray(junction_C) - 25))
     del volts
     return SimpleNamespace(
-        loss_W=np.broadcast_to(loss, shape), drop_V=np.broadcast_to(loss / amps, shape)
-    )
+        loss_W=np.broadcast_to(loss, shape), main_W=np.broadcast_to(loss, shape),
+        drop_V=np.broadcast_to(loss / amps, shape), carried=np.ones(shape, dtype=bool),
+    )  # fmt: skip
 
 
 def test_fixed_point_of_a_linear_resistance(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -43,7 +44,7 @@ def test_fixed_point_of_a_linear_resistance(monkeypatch: pytest.MonkeyPatch) -> 
 
 
 def test_runs_away_where_the_slope_reaches_one(monkeypatch: pytest.MonkeyPatch) -> None:
-    """k a = 1 at I = 1 / sqrt(a R0 Rth) = 14.286 A; just below it the end is far above 300 C."""
+    """k a = 1 at I = 1 / sqrt(a R0 Rth) = 14.286 A; just below it the end is far above 250 C."""
     monkeypatch.setattr(heat, "forward", linear)
     stage = build(PMOS)
     critical = 1 / np.sqrt(PER_KELVIN * OHM * WHOLE)

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import pytest
 
+from benchkit.prediction.connections import surroundings
 from benchkit.prediction.scenarios import Scenario, scenario
 from tests.benchkit.example_stages import PMOS, SCHOTTKY, build
 
 
 def answer(text: str, name: str, *changes: tuple[str, str]) -> Scenario:
     stage = build(text, *changes)
-    return scenario(stage, stage.draw(100, 4), name)
+    return scenario(stage, stage.draw(100, 4, corners=True), name, surroundings(stage.file))
 
 
 def rating(found: Scenario, name: str) -> tuple[float, float, bool]:

@@ -222,7 +222,7 @@ def record(folder: Path, board: Board) -> Record:
     (inputs / "stage.toml").write_text(board.stage, encoding="utf-8")
     file = load(StageFile, inputs / "stage.toml")
     stage = build_stage(file, "stage.toml")
-    supply, ambient, lag = file.stage.supply_nominal_V, 23.8, stage.main_part
+    supply, ambient, lag = file.stage.supply_nominal_V, 23.8, stage.junction_to_case_K_per_W
     log = _Log(board.seed, "0.1" if file.stage.topology == "pmos-pass" else "1.0")
 
     soak_A = file.soak.current_A if file.soak is not None else 0.0
@@ -236,7 +236,7 @@ def record(folder: Path, board: Board) -> Record:
         """Measured drop: law at the junction's temperature, plus what the fixture adds."""
         volts = 0.0
         for _ in range(4):
-            junction = case_C + lag.junction_to_case_K_per_W * volts * current_A
+            junction = case_C + lag * volts * current_A
             volts = float(np.interp(junction, warmth, tables[current_A]))
         return volts + 0.0006 * current_A
 

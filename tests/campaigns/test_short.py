@@ -1,5 +1,6 @@
 """Short versions of the campaigns."""
 
+from tests.campaigns import solver
 from tests.campaigns.coverage import campaign
 
 
@@ -13,3 +14,19 @@ def test_intervals_hold_the_truth_of_a_few_boards() -> None:
     share = found["share"]
     assert isinstance(share, float)
     assert share >= 0.8
+
+
+def test_the_solver_finds_a_point_for_random_stages_or_says_that_there_is_none() -> None:
+    found = solver.campaign(160, seed=7)
+    stages, solutions, no_point = found["stages"], found["solutions"], found["no_point"]
+    worst = found["worst_residual"]
+    assert isinstance(stages, int)
+    assert isinstance(solutions, int)
+    assert isinstance(no_point, int)
+    assert isinstance(worst, float)
+    assert stages >= 160
+    assert solutions == 13 * stages
+    assert found["unsolved"] == 0
+    assert 0.0 < worst <= 1e-9
+    # Some stages block what is to be drawn through them, and most do not.
+    assert 0 < no_point < 0.2 * solutions

@@ -1,0 +1,114 @@
+"""What is measured so far is measured; the rest is refused before any bench is opened."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from typer.testing import CliRunner
+
+from benchkit.errors import InputError
+from benchkit.records.record import read_json
+from benchkit.records.run_folder import hashes
+from procedures import commands
+from procedures.cli import app
+from procedures.inputs import read_board
+from tests.benchkit.nine_stages import PARTS, STAGES, text
+from tests.simulated_bench import GOOD, measure, workshop
+
+MEASURED = "what is measured so far is series-diode, pmos-pass, pmos-pass-zener guarding a load"
+LEAD = 'kind = "lead"\nvalue_ohm = 0.01\n'
+LIMITS = """
+[soak]
+current_A = 2.0
+[limits]
+drop = [{ current_A = 2.0, max_V = 0.08 }, { current_A = 3.0, max_V = 0.12 }]
+case_max_C = 60
+junction_margin_min_K = 30
+"""
+
+
+@pytest.fixture
+def folder(tmp_path: Path) -> Path:
+    return workshop(tmp_path / "w")
+
+
+def refused(folder: Path, stage: str, monkeypatch: pytest.MonkeyPatch) -> str:
+    """The one sentence that `verify` refuses a stage with; a bench that is opened is an error."""
+
+    def no_bench(*_: object) -> None:
+        raise AssertionError("a bench was opened")
+
+    monkeypatch.setattr(commands, "opened", no_bench)
+    path = folder / "mine.toml"
+    path.write_text(stage, encoding="utf-8")
+    before = sorted(folder.iterdir())
+    ran = CliRunner().invoke(app, [
+        "verify", str(path), "--bench", str(folder / "bench.toml"), "--serial", GOOD,
+        "--out", str(folder / "out"),
+    ])  # fmt: skip
+    assert ran.exit_code == 2, ran.output
+    assert sorted(folder.iterdir()) == before
+    with pytest.raises(InputError) as caught:
+        read_board(path, folder / "bench.toml")
+    [line] = str(caught.value).splitlines()
+    assert line in " ".join(ran.stderr.split())
+    return line.removeprefix(f"{path}: ")
+
+
+@pytest.mark.parametrize(
+    ("topology", "guards"), [("pmos-sensed", "supply"), ("nmos-pass", "load"), ("clamp", "supply")]
+)
+def test_a_topology_that_is_not_measured_yet_is_refused(
+    topology: str, guards: str, folder: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    assert refused(folder, text(topology), monkeypatch) == (
+        f"stage.topology is {topology!r}, guarding a {guards}: {MEASURED}; `benchkit predict` "
+        "answers for every topology"
+    )
+
+
+def test_a_measured_topology_that_guards_a_supply_is_refused(
+    folder: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    said = refused(folder, text("pmos-pass", stage='guards = "supply"'), monkeypatch)
+    assert said.startswith(f"stage.topology is 'pmos-pass', guarding a supply: {MEASURED}")
+
+
+@pytest.mark.parametrize(
+    ("parts", "named", "left_out"),
+    [
+        ({"F1": PARTS["fuse"]}, "F1", "F1"),
+        ({"W1": LEAD}, "W1", "W1"),
+        ({"W1": LEAD, "F1": PARTS["fuse"]}, "F1", "F1 and W1"),
+    ],
+)
+def test_a_part_whose_drop_would_be_taken_for_the_main_part_s_is_refused(
+    parts: dict[str, str], named: str, left_out: str, folder: Path,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:  # fmt: skip
+    assert refused(folder, text("pmos-pass", **parts), monkeypatch) == (
+        f"parts.{named} is in the way of the current: its drop and heat would be taken for those "
+        "of Q1; put the drop point's taps across Q1 and measure with a file that leaves "
+        f"{left_out} out"
+    )
+
+
+@pytest.mark.parametrize("topology", ["series-diode", "pmos-pass", "pmos-pass-zener"])
+def test_what_is_measured_is_planned(topology: str, folder: Path) -> None:
+    path = folder / "mine.toml"
+    path.write_text(text(topology), encoding="utf-8")
+    assert read_board(path, folder / "bench.toml").job.plan.steps
+    assert topology in STAGES
+
+
+def test_a_switch_with_a_limited_gate_is_measured_and_passes(folder: Path) -> None:
+    (folder / "mine.toml").write_text(text("pmos-pass-zener") + LIMITS, encoding="utf-8")
+    done, _ = measure(folder, stage="mine.toml")
+    assert done.error is None
+    result = done.evaluation.result
+    assert result.verdict == "pass", result.why
+    judged = [row.name for row in result.measurands if row.verdict]
+    assert judged == ["drop", "drop", "warm_drop", "case_hottest", "junction_margin"]
+    assert {row["part"] for row in result.ratings} >= {"Q1", "R1", "Z1"}
+    assert read_json(done.folder / "manifest.json")["sha256"] == hashes(done.folder)
