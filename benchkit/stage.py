@@ -18,7 +18,7 @@ from benchkit.files.stage import StageFile
 from benchkit.parts.fitted import AnyModel, part_model
 from benchkit.parts.tolerance import SIGMAS_TO_LIMIT, between, scores
 from benchkit.placing import Law, placed
-from benchkit.roles import fill_roles
+from benchkit.roles import fill_roles, with_article
 from benchkit.topologies import TOPOLOGIES, Ports, Topology, Wiring, wire, wire_network
 from benchkit.topologies.base import MINUS, PLUS, TERMINALS
 
@@ -199,8 +199,8 @@ def build_stage(file: StageFile, name: str) -> Stage:
 def _check_main(main: str, part: Part, mistakes: list[str]) -> None:
     if not isinstance(part, MainPart):
         mistakes.append(
-            f"stage.main is {main!r}, a {part.kind}: the part whose case is measured must be a "
-            "diode, a tvs or a MOSFET"
+            f"stage.main is {main!r}, {with_article(part.kind)}: the part whose case is measured "
+            "must be a diode, a tvs or a MOSFET"
         )
     elif part.junction_to_case_K_per_W is None:
         mistakes.append(
@@ -229,8 +229,8 @@ def _network(file: StageFile, mistakes: list[str]) -> Wiring:
         terminals, nodes = TERMINALS[part.kind], entry.nodes()
         if set(nodes) != set(terminals):
             mistakes.append(
-                f"{key} wires {_list(nodes) or 'nothing'} of {entry.part}, a {part.kind}: it must "
-                f"wire {_list(terminals)}"
+                f"{key} wires {_list(nodes) or 'nothing'} of {entry.part}, "
+                f"{with_article(part.kind)}: it must wire {_list(terminals)}"
             )
             continue
         odd = [node for node in nodes.values() if node == "0" or "." in node or not node.strip()]

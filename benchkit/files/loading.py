@@ -191,10 +191,10 @@ def _nearest(path: list[int | str], model: type[BaseModel], data: object) -> str
 def _fields_at(where: list[int | str], annotation: Any, data: Any) -> list[str]:
     """The keys that are right at a place of the file, found by walking the annotations."""
     models = _models(annotation)
+    tag = data.get("kind") if isinstance(data, Mapping) else None
+    models = [m for m in models if tag in _tags(m)] or models
     if not where:
-        tag = data.get("kind") if isinstance(data, Mapping) else None
-        tagged = [m for m in models if _tag(m) == tag] or models
-        return [name for m in tagged for name in m.model_fields]
+        return list(dict.fromkeys(name for m in models for name in m.model_fields))
     step, rest = where[0], where[1:]
     below = _below(data, step)
     for model in models:
@@ -206,9 +206,10 @@ def _fields_at(where: list[int | str], annotation: Any, data: Any) -> list[str]:
     return _fields_at(rest, arguments[-1], below) if arguments else []
 
 
-def _tag(model: type[BaseModel]) -> object:
+def _tags(model: type[BaseModel]) -> tuple[object, ...]:
+    """The values of ``kind`` that choose this model in a union."""
     field = model.model_fields.get("kind")
-    return typing.get_args(field.annotation)[0] if field is not None else None
+    return typing.get_args(field.annotation) if field is not None else ()
 
 
 def _models(annotation: Any) -> list[type[BaseModel]]:

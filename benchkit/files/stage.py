@@ -156,8 +156,8 @@ class StageFile(FileModel):
             )
         if free and self.stage.main not in self.parts:
             raise ValueError(
-                f"stage.main is {self.stage.main!r}: with a network it must be the part that "
-                f"carries the working current, one of {', '.join(self.parts)}"
+                f"stage.main is {self.stage.main or 'missing'}: with a network it must be the part "
+                f"that carries the working current, one of {', '.join(self.parts)}"
             )
         if free and self.stage.guards is None:
             raise ValueError('stage.guards is missing: with a network it is "load" or "supply"')

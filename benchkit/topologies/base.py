@@ -130,7 +130,7 @@ def wire_network(parts: Mapping[str, tuple[str, ...]], guards: Literal["load", "
 
 
 def _merged(parts: Mapping[str, tuple[str, ...]], same: Iterable[tuple[str, str]]) -> Wiring:
-    """Give nodes that are one the same name: the reference's, else a port's, else any."""
+    """Give nodes that are one the same name: the reference's, else a port's, else the gate's, else any."""
     groups: list[set[str]] = []
     for pair in same:
         joined = set(pair)
@@ -138,7 +138,7 @@ def _merged(parts: Mapping[str, tuple[str, ...]], same: Iterable[tuple[str, str]
             groups.remove(group)
             joined |= group
         groups.append(joined)
-    order = [GROUND, *PLUS, *MINUS]
+    order = [GROUND, *PLUS, *MINUS, "gate"]
     names = {node: min(g, key=lambda n: _rank(n, order)) for g in groups for node in g}
     ports = (names.get(node, node) for node in (PLUS[0], MINUS[0], PLUS[1], MINUS[1]))
     return Wiring(

@@ -8,6 +8,8 @@ import pytest
 
 from benchkit.errors import InputError
 from benchkit.files import BenchFile, LotFile, StageFile, load
+from benchkit.files.parts import Bipolar
+from tests.benchkit import nine_stages
 from tests.benchkit.example_stages import PMOS, SCHOTTKY, stage_file
 
 
@@ -35,7 +37,8 @@ def complaint(text: str, *changes: tuple[str, str]) -> str:
         ),
         (
             ("[heat]", "[bonus]\nx = 1\n[heat]"),
-            "bonus is not a key here; the keys here are heat, limits, parts, soak, stage, sweep",
+            "bonus is not a key here; the keys here are battery, equipment, heat, limits, network, "
+            "parts, soak, source, stage, sweep",
         ),
         # wrong units: a key with another unit is an unknown key
         (
@@ -68,9 +71,12 @@ def complaint(text: str, *changes: tuple[str, str]) -> str:
         (("junction_max_C = 150", "junction_max_C = 1500"),
          "parts.Q1.junction_max_C is 1500, it must be less than or equal to 250"),
         (('topology = "pmos-pass"', 'topology = "pmos"'),
-         "stage.topology is 'pmos', it must be 'series-diode' or 'pmos-pass'"),
+         "stage.topology is 'pmos', it must be 'clamp', 'fused-clamp', 'series-diode', "
+         "'pmos-pass', 'pmos-pass-zener', 'pmos-sensed', 'nmos-pass', 'nmos-pass-zener', "
+         "'nmos-sensed' or 'network'"),
         (('kind = "p-mosfet"', 'kind = "pmos"'),
-         "parts.Q1.kind is 'pmos', it must be one of 'diode', 'p-mosfet', 'resistor'"),
+         "parts.Q1.kind is 'pmos', it must be one of 'diode', 'zener', 'tvs', 'p-mosfet', "
+         "'n-mosfet', 'npn', 'pnp', 'resistor', 'lead', 'fuse'"),
         # values that do not go together
         (("supply_min_V = 9.0", "supply_min_V = 13"),
          "stage: supply_min_V 13, supply_nominal_V 12 and supply_max_V 15 must rise in that order"),
@@ -109,14 +115,47 @@ def test_all_mistakes_are_said_at_once() -> None:
         ("min_V = 1.0,", ""), ("junction_to_case_K_per_W = 4", "junction_to_case = 4"),
     )  # fmt: skip
     assert text.splitlines() == [
-        "stage.toml: 5 mistakes",
+        "stage.toml: 4 mistakes",
         "stage.toml: stage.supply_min_V is -9, it must be greater than 0",
         "stage.toml: parts.Q1.threshold.min_V is missing",
-        "stage.toml: parts.Q1.junction_to_case_K_per_W is missing",
         "stage.toml: parts.Q1.junction_to_case is not a key here; the nearest right one is "
         "junction_to_case_K_per_W",
         "stage.toml: heat.time_constant_s is missing",
     ]
+
+
+@pytest.mark.parametrize("kind", ["npn", "pnp"])
+def test_hints_are_those_of_the_part_s_own_kind(kind: str) -> None:
+    text = nine_stages.text("pmos-sensed" if kind == "npn" else "nmos-sensed")
+    kinds = f'kind = "{kind}"'
+    allowed = ", ".join(sorted(Bipolar.model_fields))
+    assert complaint(text, (kinds, f"{kinds}\nzzz = 1")) == (
+        f"stage.toml: parts.Q2.zzz is not a key here; the keys here are {allowed}"
+    )
+    assert "on_resistance" not in allowed
+
+
+@pytest.mark.parametrize(
+    ("line", "keys"),
+    [
+        # both names are also those of a table of another kind of part, with other keys
+        ("breakdown = { typ_V = 7.2, current_A = 10e-6, zzz = 1 }", "current_A, typ_V"),
+        ("leakage = { collector_base_V = 20, typ_A = 1e-9, zzz = 1 }",
+         "collector_base_V, junction_C, max_A, typ_A"),
+    ],
+)  # fmt: skip
+def test_hints_within_a_table_are_those_of_the_part_s_own_kind(line: str, keys: str) -> None:
+    where = line.split(" ", maxsplit=1)[0]
+    there = "breakdown = { typ_V = 7.2, current_A = 10e-6 }"
+    new = line if where == "breakdown" else f"{there}\n{line}"
+    assert complaint(nine_stages.text("nmos-sensed"), (there, new)) == (
+        f"stage.toml: parts.Q2.{where}.zzz is not a key here; the keys here are {keys}"
+    )
+
+
+def test_a_kind_that_is_unknown_leaves_the_keys_open() -> None:
+    """Only the kind is wrong then: which keys are right nobody knows."""
+    assert complaint(PMOS, ('kind = "p-mosfet"', 'kind = "mosfet"\nzzz = 1')).count("\n") == 0
 
 
 def test_surge_width_is_that_of_a_mains_half_sine() -> None:

@@ -97,10 +97,10 @@ def test_starters_build(name: str, topology: str, main: str, guards: str) -> Non
          "network[4].frist is not a key here; the nearest right one is first"),
         # [stage] of a network
         (('main = "Q1"', ""),
-         "stage.main is None: with a network it must be the part that carries the working "
+         "stage.main is missing: with a network it must be the part that carries the working "
          "current, one of Q1, Q2, Z1, R1, R2"),
         (('main = "Q1"', 'main = "Q9"'),
-         "stage.main is 'Q9': with a network it must be the part that carries the working "
+         "stage.main is Q9: with a network it must be the part that carries the working "
          "current, one of Q1, Q2, Z1, R1, R2"),
         (('main = "Q1"', 'main = "R1"'),
          "stage.main is 'R1', a resistor: the part whose case is measured must be a diode, a tvs "
@@ -135,6 +135,12 @@ def test_a_scenario_that_there_is_not() -> None:
     assert said.startswith("stage.must_stand[2] is 'upside', it must be 'right-way', 'reversed-")
     given = build(NETWORK, ('guards = "load"', 'guards = "load"\nmust_stand = ["back-feed"]'))
     assert given.must_stand == ("back-feed",)
+
+
+def test_kinds_are_named_with_their_article() -> None:
+    assert complaint(('kind = "p-mosfet"', 'kind = "n-mosfet"'), ('gate = "gate"\n', "")) == [
+        "network[1] wires drain, source of Q1, an n-mosfet: it must wire drain, gate, source"
+    ]
 
 
 def test_mistakes_in_several_entries_are_said_at_once() -> None:

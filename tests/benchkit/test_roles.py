@@ -13,7 +13,7 @@ FITS = "its parts are pass (p-mosfet), gate (resistor), fuse (fuse), lead (lead)
 
 def complaint(topology: str, **parts: str | None) -> list[str]:
     with pytest.raises(InputError) as caught:
-        made(topology, **parts)
+        made(topology, "", "", **parts)
     assert caught.value.exit_code == 2
     lines = str(caught.value).splitlines()
     assert all(line.startswith("stage.toml: ") for line in lines)

@@ -4,11 +4,14 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from numpy.typing import NDArray
 
 from benchkit.errors import InputError
 from benchkit.parts.diode import DiodeLaw
+from benchkit.parts.mosfet import MosfetLaws
+from benchkit.parts.resistor import ResistorLaw
 from benchkit.prediction.forward import forward
-from benchkit.topologies.base import MosfetLaws
+from benchkit.stage import Sample
 from tests.benchkit.example_stages import PMOS, SCHOTTKY, build
 
 RESISTOR = (
@@ -20,19 +23,28 @@ def test_roles_are_filled_by_kind() -> None:
     stage = build(PMOS, ("[heat]", f"{RESISTOR}[heat]"))
     assert stage.names == {"pass": "Q1", "gate": "R1"}
     assert stage.main == "Q1"
-    assert stage.main_part.junction_to_case_K_per_W == 4
+    assert stage.junction_to_case_K_per_W == 4
 
 
 def test_every_wrong_part_is_named_at_once() -> None:
     with pytest.raises(InputError) as caught:
         build(SCHOTTKY, ('topology = "series-diode"', 'topology = "pmos-pass"'),
               ("[heat]", f"{RESISTOR}{RESISTOR.replace('R1', 'R2')}[heat]"))  # fmt: skip
-    places = "its parts are p-mosfet, resistor, one of each"
     assert str(caught.value).splitlines() == [
-        "stage.toml: topology pmos-pass needs a part of kind 'p-mosfet'",
-        f"stage.toml: parts.D1 is a diode that topology pmos-pass has no place for; {places}",
-        f"stage.toml: parts.R2 is a resistor that topology pmos-pass has no place for; {places}",
+        "stage.toml: parts.D1 is a diode, which topology pmos-pass has no place for; its parts are "
+        "pass (p-mosfet), gate (resistor), fuse (fuse), lead (lead)",
+        "stage.toml: parts.R1 and parts.R2 are each a resistor, which is too many: topology "
+        "pmos-pass takes no more than one as its 'gate'",
+        "stage.toml: topology pmos-pass needs a p-mosfet as its 'pass', and none of the parts is "
+        "that",
     ]
+
+
+def resistance(sample: Sample) -> NDArray[np.float64]:
+    law = sample.laws["R1"]
+    assert isinstance(law, ResistorLaw)
+    assert isinstance(law.ohms, np.ndarray)
+    return law.ohms
 
 
 def test_draws_are_reproducible_and_stay_within_the_limits() -> None:
@@ -41,13 +53,11 @@ def test_draws_are_reproducible_and_stay_within_the_limits() -> None:
     assert np.array_equal(one.case_to_ambient_K_per_W, again.case_to_ambient_K_per_W)
     assert one.case_to_ambient_K_per_W.max() <= 60
     assert one.case_to_ambient_K_per_W.min() >= 45 * 45 / 60
-    ohms = one.laws["R1"]
-    assert isinstance(ohms, np.ndarray)
+    ohms = resistance(one)
+    assert np.array_equal(ohms, resistance(again))
     assert 95 <= ohms.min() < 97
     assert 103 < ohms.max() <= 105
-    others = stage.draw(500, 12).laws["R1"]
-    assert isinstance(others, np.ndarray)
-    assert not np.array_equal(ohms, others)
+    assert not np.array_equal(ohms, resistance(stage.draw(500, 12)))
 
 
 @pytest.mark.parametrize("text", [PMOS, SCHOTTKY])

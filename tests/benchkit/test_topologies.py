@@ -1,4 +1,4 @@
-"""The two circuits, right way round and wrong way round, against what the trade expects of them."""
+"""The first two circuits, both ways round, against what the trade expects of them."""
 
 from __future__ import annotations
 
@@ -9,17 +9,46 @@ import pytest
 
 from benchkit.circuit import GROUND, CurrentLoad, Resistor, Solution, network, solve
 from benchkit.files.stage import Working
+from benchkit.parts.mosfet import MosfetLaws
 from benchkit.prediction.forward import forward
 from benchkit.stage import Sample, Stage
 from benchkit.topologies import TOPOLOGIES
-from benchkit.topologies.base import EXPOSED, GUARDED, MosfetLaws
+from benchkit.topologies.base import EXPOSED, GUARDED, TERMINALS
+from tests.benchkit import nine_stages
 from tests.benchkit.example_stages import PMOS, SCHOTTKY, build
 
 
 def test_every_topology_can_be_named_in_a_stage_file() -> None:
     allowed = Working.model_fields["topology"].annotation
-    assert set(TOPOLOGIES) == set(allowed.__args__)  # type: ignore[union-attr]
+    named = set(allowed.__args__)  # type: ignore[union-attr]
+    assert {*TOPOLOGIES, "network"} == named
     assert all(name == topology.name for name, topology in TOPOLOGIES.items())
+
+
+@pytest.mark.parametrize("name", TOPOLOGIES)
+def test_every_topology_is_a_whole_circuit(name: str) -> None:
+    """Its roles have a node for each terminal, and each part alone can be placed."""
+    topology = TOPOLOGIES[name]
+    assert topology.roles[topology.main].absent == "required"
+    for role in topology.roles.values():
+        assert {len(TERMINALS[kind]) for kind in role.kinds} == {len(role.nodes)}
+    stage = nine_stages.made(name)
+    assert stage.main == stage.names[topology.main]
+    assert set(stage.wiring.parts) == set(stage.file.parts)
+
+
+@pytest.mark.parametrize("name", TOPOLOGIES)
+def test_the_unbroken_lead_is_the_reference(name: str) -> None:
+    """A P-channel breaks the plus lead, an N-channel the minus lead (common practice, no
+    source); the other lead runs straight through."""
+    ports = nine_stages.made(name).ports
+    plus, minus = (ports.exposed_plus, ports.guarded_plus), (
+        ports.exposed_minus, ports.guarded_minus)  # fmt: skip
+    straight, broken = (plus, minus) if name.startswith("nmos") else (minus, plus)
+    assert straight == (GROUND, GROUND)
+    assert GROUND not in broken
+    # A clamp without a lead resistance breaks neither.
+    assert (broken[0] == broken[1]) is (name == "clamp")
 
 
 def body_only(stage: Stage) -> Sample:
@@ -92,10 +121,18 @@ def test_a_held_guarded_side_keeps_the_pmos_on_when_reversed() -> None:
 
 
 def test_gate_resistor_of_the_file_is_used() -> None:
+    """Without one the gate is tied to the minus lead itself."""
     resistor = (
         "[heat]",
         '[parts.R1]\nkind = "resistor"\nvalue_ohm = 10000\npower_max_W = 0.1\n[heat]',
     )
-    stage = build(PMOS, resistor)
-    assert [e.name for e in stage.elements(stage.typical(), 25.0)][-1] == "R1"
-    assert [e.name for e in build(PMOS).elements(build(PMOS).typical(), 25.0)][-1] == "gate-lead"
+    with_one, without = build(PMOS, resistor), build(PMOS)
+    assert with_one.gate_nodes == ("gate", GUARDED)
+    placed = {e.name: e for e in with_one.elements(with_one.typical(), 25.0)}
+    gate = placed["R1"]
+    assert isinstance(gate, Resistor)
+    assert gate.nodes == ("gate", GROUND)
+    assert gate.ohms == pytest.approx(10000)
+    assert without.gate_nodes == (GROUND, GUARDED)
+    names = [e.name for e in without.elements(without.typical(), 25.0)]
+    assert names == ["Q1", "Q1.series", "Q1.body"]
