@@ -118,8 +118,8 @@ class FuseModel:
         """
         amps = np.asarray(current_A, dtype=float)
         reach = self.points_A[0]
-        seconds = np.maximum(self._melt_s(amps), np.where(amps < reach, self._gated_s(amps), 0.0))
-        return seconds
+        gated = np.where(amps < reach, self._gated_s(amps), 0.0)
+        return np.asarray(np.maximum(self._melt_s(amps), gated))
 
     def _melt_s(self, amps: Floats) -> Floats:
         later = np.interp(np.log(amps), np.log(self.points_A), self.later)

@@ -80,7 +80,7 @@ def prediction_page(stage: Stage, prediction: Prediction) -> str:
 
     drawn = curves(stage, prediction.highest_gate_supply_V)
     found = panels(stage, prediction, drawn)
-    rows = [_scenario(stage, one) for one in prediction.scenarios]
+    rows = [_scenario(one) for one in prediction.scenarios]
     asked = [row for row in rows if row.required]
     wrong = [row for row in asked if row.breaches]
     working = stage.file.stage
@@ -109,7 +109,7 @@ def prediction_page(stage: Stage, prediction: Prediction) -> str:
     )  # fmt: skip
 
 
-def _scenario(stage: Stage, one: Scenario) -> ScenarioRow:
+def _scenario(one: Scenario) -> ScenarioRow:
     tightest = min(one.ratings, key=_share_left, default=None)
     return ScenarioRow(
         one.name, SCENARIOS[one.name], one.required, quantity(one.exposed_current_A, "A"),
@@ -206,8 +206,9 @@ def _expected(stage: Stage, p: Prediction, drawn: Curves) -> Iterator[tuple[str,
         yield (
             "Hottest",
             (
-                f"{stage.main} case {quantity(p.case_C, 'C')}, junction {quantity(p.junction_C, 'C')} "
-                f"of {quantity(stage.main_part.junction_max_C, 'C')}; {worst}; "
+                f"{stage.main} case {quantity(p.case_C, 'C')}, junction "
+                f"{quantity(p.junction_C, 'C')} of "
+                f"{quantity(stage.main_part.junction_max_C, 'C')}; {worst}; "
                 "97.5 % of boards are cooler"
             ),
         )
@@ -215,8 +216,8 @@ def _expected(stage: Stage, p: Prediction, drawn: Curves) -> Iterator[tuple[str,
         yield (
             "Lowest useful supply",
             (
-                f"{p.lowest_useful_supply_V:.1f} V for every board within tolerance: below it the drop "
-                "has grown by half"
+                f"{p.lowest_useful_supply_V:.1f} V for every board within tolerance: below it the "
+                "drop has grown by half"
             ),
         )
     if p.highest_gate_supply_V is not None:

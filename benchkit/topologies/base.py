@@ -130,7 +130,7 @@ def wire_network(parts: Mapping[str, tuple[str, ...]], guards: Literal["load", "
 
 
 def _merged(parts: Mapping[str, tuple[str, ...]], same: Iterable[tuple[str, str]]) -> Wiring:
-    """Give nodes that are one the same name: the reference's, else a port's, else the gate's, else any."""
+    """Give nodes that are one the same name: reference, else port, else gate, else any."""
     groups: list[set[str]] = []
     for pair in same:
         joined = set(pair)
