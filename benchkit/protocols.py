@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Protocol
 
+from benchkit.harness import Harness
 from benchkit.reading import Reading
 
 
@@ -84,6 +85,14 @@ class Points(Protocol):
 
     def recover(self, point: str) -> None:
         """After a LinkError: make the instrument that reads a point usable again, if it can be."""
+
+
+class Wiring(Protocol):
+    """The leads between instruments and stage: a person, a relay, or the simulated bench."""
+
+    def arrange(self, harness: Harness) -> None:
+        """Connect as told, with everything off; OperatorStopped when that is declined. What was
+        done is proved by measurement afterwards."""
 
 
 class Clock(Protocol):

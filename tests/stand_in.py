@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 
 from benchkit.errors import LinkError
 from benchkit.guard import Ceilings, Guard
+from benchkit.harness import Harness
 from benchkit.protocols import Protection, SupplyState
 from benchkit.reading import POINT_UNITS, Reading, Status
 
@@ -35,6 +36,10 @@ class World:
     wrong_levels: bool = False
     tripped: bool = False
     polarity: int = 1
+    crossing_stuck: bool = False
+    conducts_reversed: bool = False
+    """Whether the stage carries current in reverse, up to the supply's limit."""
+    wired: list[Harness] = field(default_factory=list)
     residual_V: float = 0.0
     sensor_lost: bool = False
     lead_off: bool = False
@@ -44,8 +49,19 @@ class World:
     broken: dict[str, Exception] = field(default_factory=dict)
     """What the supply, the load or the meter raises, by what is asked of it."""
 
+    def limits(self) -> bool:
+        shorted = self.on and self.polarity < 0 and self.conducts_reversed
+        return shorted or self.load_A > self.limit_A
+
     def port_V(self) -> float:
-        return self.polarity * self.volts if self.on else self.residual_V
+        if not self.on:
+            return self.residual_V
+        return self.polarity * (0.02 if self.limits() else self.volts)
+
+    def guarded_V(self) -> float:
+        if self.port_V() < 0 and not self.conducts_reversed:
+            return 0.0
+        return self.port_V() - 0.02 * self.load_A
 
     def break_at(self, what: str) -> None:
         if what in self.broken:
@@ -95,8 +111,8 @@ class StandInSupply:
     def state(self) -> SupplyState:
         self._heard("state")
         w = self.world
-        amps = min(w.load_A, w.limit_A) if w.on else 0.0
-        return SupplyState(w.on, w.volts if w.on else 0.0, amps, w.load_A > w.limit_A, w.tripped)
+        amps = (w.limit_A if w.limits() else w.load_A) if w.on else 0.0
+        return SupplyState(w.on, abs(w.port_V()) if w.on else 0.0, amps, w.limits(), w.tripped)
 
 
 @dataclass
@@ -142,14 +158,24 @@ class StandInPoints:
             raise LinkError("meter: connection closed")
         values = {
             "exposed_voltage": w.port_V(),
-            "guarded_voltage": w.port_V() - 0.02 * w.load_A,
-            "drop": 0.4 if w.lead_off else 0.02 * w.load_A,
-            "exposed_current": w.load_A,
+            "guarded_voltage": w.guarded_V(),
+            "drop": 0.4 if w.lead_off else w.port_V() - w.guarded_V(),
+            "exposed_current": w.polarity * (w.limit_A if w.on and w.limits() else w.load_A),
             "case": w.case_C,
             "ambient": w.ambient_C,
         }
         status: Status = "invalid" if w.sensor_lost and point == "case" else "ok"
         return Reading(time_s, point, values[point], POINT_UNITS[point], 0.001, 10.0, status)
+
+
+@dataclass
+class StandInWiring:
+    world: World
+
+    def arrange(self, harness: Harness) -> None:
+        self.world.wired.append(harness)
+        if not self.world.crossing_stuck:
+            self.world.polarity = harness.sign
 
 
 @dataclass
@@ -216,6 +242,7 @@ def guard_of(
         {"meter": due},
         TODAY,
         waits_s=waits_s,
+        wiring=StandInWiring(world),
         shield=shield,
         watcher=watcher,
     )

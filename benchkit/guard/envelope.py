@@ -2,10 +2,17 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 from benchkit.errors import InputError
 from benchkit.files.bench import BenchLimits
+
+GUARDED_MIN_V = -0.6
+"""The guarded port may not be driven the wrong way: what equipment stands for sure is no more than
+a forward drop (common practice, no source)."""
+CASE_RISE_MAX_K_PER_S = 8.0
+"""A case that is sound warms over tens of seconds; faster, something burns (judgement)."""
 
 
 @dataclass(frozen=True)
@@ -36,7 +43,8 @@ class Envelope:
 
     voltage_V and current_limit_A are programmed; over_voltage_V and over_current_A are the
     supply's own protection, programmed and read back before the output goes on. case_max_C,
-    loss_max_W and longest_s trip the run.
+    case_rise_max_K_per_s, loss_max_W, guarded_min_V, energy_max_J and longest_s trip the run.
+    may_limit: the supply is expected to limit its current.
     """
 
     name: str
@@ -47,6 +55,10 @@ class Envelope:
     case_max_C: float
     loss_max_W: float
     longest_s: float
+    may_limit: bool = False
+    guarded_min_V: float = GUARDED_MIN_V
+    case_rise_max_K_per_s: float = CASE_RISE_MAX_K_PER_S
+    energy_max_J: float = math.inf
 
     @classmethod
     def around(
@@ -76,6 +88,7 @@ class Envelope:
             min(case_max_C, ceilings.case_max_C),
             loss_max_W,
             longest_s,
+            energy_max_J=voltage_V * limit * longest_s,
         )
         envelope.check(ceilings)
         return envelope
@@ -101,8 +114,9 @@ class Envelope:
         return (
             f"{self.voltage_V:g} V, current limit {self.current_limit_A:.3g} A; the supply trips "
             f"above {self.over_voltage_V:.3g} V or {self.over_current_A:.3g} A, the guard above "
-            f"{self.case_max_C:.4g} C at the case, {self.loss_max_W:.3g} W of loss or "
-            f"{self.longest_s:.0f} s"
+            f"{self.case_max_C:.4g} C at the case or {self.case_rise_max_K_per_s:g} K/s of its "
+            f"rise, {self.loss_max_W:.3g} W of loss, {self.guarded_min_V:g} V at the guarded port, "
+            f"{self.energy_max_J:.3g} J or {self.longest_s:.0f} s"
         )
 
 

@@ -29,11 +29,24 @@ from benchkit.guard.permissives import (
     RESIDUAL_V,
     check_calibration,
     check_dead,
+    check_direction,
     check_mesh,
     check_polarity,
     check_sensors,
 )
-from benchkit.protocols import Clock, Journal, Load, Operator, Points, Protection, Supply
+from benchkit.guard.watch import Watch
+from benchkit.harness import DRAWING, Harness
+from benchkit.protocols import (
+    Clock,
+    Journal,
+    Load,
+    Operator,
+    Points,
+    Protection,
+    Supply,
+    SupplyState,
+    Wiring,
+)
 from benchkit.reading import Reading
 
 DISCHARGE_S = 5.0
@@ -42,6 +55,8 @@ PROOF_V, PROOF_A = 1.0, 0.05
 """Polarity is proved at this voltage and current limit before anything larger."""
 LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
 """How far a read-back of a protection level may be from what was asked."""
+APART_V, APART_SHARE = 0.5, 0.05
+"""How far the supply's own voltage may be from the meter's at the exposed port: leads drop some."""
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
 
@@ -62,6 +77,7 @@ class Guard:
         today: dt.date,
         *,
         waits_s: float = 0.0,
+        wiring: Wiring | None = None,
         shield: Callable[[], AbstractContextManager[None]] = nullcontext,
         watcher: Callable[[Reading], None] | None = None,
     ) -> None:
@@ -74,7 +90,10 @@ class Guard:
         self._start_s = clock.now()
         self._step = "start"
         self._case_C = math.nan
+        self._watch = Watch(0.0)
         self._live: Live | None = None
+        self._wiring, self._harness = wiring, DRAWING
+        self._proved: bool | None = None
         self._off = False
         self._found_on = ""
         self._unwritten: Exception | None = None
@@ -97,6 +116,7 @@ class Guard:
         """Begin a run: time 0, a new journal, and nothing remembered of the run before."""
         self._journal, self._start_s, self._step = journal, self._clock.now(), "start"
         self._case_C = math.nan
+        self._harness, self._proved = DRAWING, False
         self._points.forget()
         if self._found_on:
             self._journal.event("found-on", self._found_on, time_s=self.now())
@@ -184,27 +204,63 @@ class Guard:
             raise Refused(f"{point} gives no usable reading ({reading.status}): check its leads")
         return reading.value
 
-    def prove_polarity(self) -> None:
-        """At a volt and milliamperes, see that plus is plus and that the meters agree.
+    @property
+    def harness(self) -> Harness:
+        """How the leads are, as far as anyone was told."""
+        return self._harness
 
-        Polarity is never taken from a relay or a person. Refused when it is wrong.
+    def arrange(self, harness: Harness) -> None:
+        """Have the leads connected otherwise: never hot, and unproved until ``prove_polarity``.
+
+        Refused while something is energised, not confirmed off, or while a port still holds more
+        than RESIDUAL_V.
         """
+        self._require_rest("no lead is touched")
+        if not self._off:
+            raise Refused("no lead is touched before the outputs are confirmed off")
+        if self._wiring is None:
+            raise Refused("this bench cannot be wired otherwise")
+        check_dead(self._usable)
+        self._harness, self._proved = harness, False
+        self._journal.event("harness", harness.sentence(), time_s=self.now())
+        self._wiring.arrange(harness)
+
+    def prove_polarity(self) -> bool:
+        """At a volt and milliamperes, see which way round the leads are, and that the meters agree.
+
+        Polarity is never taken from a relay or a person. Refused when it is not as the harness
+        says. Returns whether the stage stood the volt; False where, with the leads crossed, it
+        conducts all that the supply gives.
+        """
+        crossed = self._harness.crossed
         envelope = Envelope(
             "polarity",
             PROOF_V,
             PROOF_A,
             PROOF_V * 1.1 + 0.5,
-            PROOF_A,
+            # Over-current at the limit itself would trip where the supply is meant to limit.
+            2 * PROOF_A if crossed else PROOF_A,
             self.ceilings.case_max_C,
             1.0,
             30.0,
+            may_limit=crossed,
+            guarded_min_V=-1.2 * PROOF_V,
         )
-        self.step("polarity")
+        self.step("polarity" if not crossed else "polarity/reversed")
         with self.energised(envelope) as live:
             live.wait(0.05)
-            exposed = self._usable("exposed_voltage")
-            check_polarity(exposed, PROOF_V)
+            exposed, blocks = self._usable("exposed_voltage"), True
+            if crossed and self.__supply.state().constant_current:
+                check_direction(self._usable("exposed_current"), PROOF_A, self._harness.sign)
+                blocks = False
+            else:
+                check_polarity(exposed, PROOF_V, self._harness.sign)
             check_mesh(exposed, self._usable("guarded_voltage"), self._usable("drop"))
+        self._proved = True
+        self._journal.event(
+            "polarity", "as it should be, proved by measurement", time_s=self.now(), blocks=blocks
+        )
+        return blocks
 
     # during
 
@@ -217,6 +273,11 @@ class Guard:
         """
         self._require_rest(f"{envelope.name} cannot begin")
         envelope.check(self.ceilings)
+        harmless = envelope.voltage_V <= PROOF_V and envelope.current_limit_A <= PROOF_A
+        if self._proved is False and not harmless:
+            raise Refused(
+                f"{envelope.name} cannot begin: which way round the leads are has not been proved"
+            )
         if caution is not None:
             caution += (
                 f" The guard looks every {self.ceilings.poll_s:g} s; when instruments fail it may "
@@ -241,6 +302,7 @@ class Guard:
                 time_s=self.now(),
                 blind_s=self.blind_s,
             )
+            self._watch = Watch(self.blind_s)
             live = self._live = Live(self, self.__load, envelope)
             self.__supply.enable()
             yield live
@@ -291,7 +353,7 @@ class Guard:
             self._trip("the supply's own protection", "has tripped", now)
         if not state.output_on:
             self._trip("the supply's output", "went off by itself", now)
-        if state.constant_current:
+        if state.constant_current and not envelope.may_limit:
             self._trip(
                 "the supply",
                 f"limits its current at {state.current_A:.3g} A, which the step does not expect",
@@ -303,8 +365,29 @@ class Guard:
         if not case.usable:
             self._trip("case", f"gives no usable reading ({case.status})", now)
         self._compare("case", case.value, envelope.case_max_C, "C", now)
+        for what, value, threshold, unit in self._watch.trips(envelope, state, case.value, now):
+            self._compare(what, value, threshold, unit, now)
+        if envelope.voltage_V > PROOF_V:
+            self._look_at_a_voltage(envelope, state, now)
         self._compare("time", now - began_s, envelope.longest_s, "s", now)
         return now
+
+    def _look_at_a_voltage(self, envelope: Envelope, state: SupplyState, now: float) -> None:
+        """By turns the guarded port's sign, and the supply's own voltage against the meter's."""
+        point = self._watch.voltage_due(now, self.ceilings.poll_s)
+        if point is None:
+            return
+        reading = self._read(point, now, quick=True)
+        if not reading.usable:
+            self._trip(point, f"gives no usable reading ({reading.status})", now)
+        if point == "guarded_voltage":
+            low, least = reading.value, envelope.guarded_min_V
+            if not low >= least:
+                self._trip(point, f"is {low:.4g} V, below {least:.4g} V", now)
+        elif not state.constant_current:
+            apart = abs(self._harness.sign * reading.value - state.voltage_V)
+            most = APART_V + APART_SHARE * envelope.voltage_V
+            self._compare("supply_voltage against exposed_voltage", apart, most, "V", now)
 
     def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
         """Trip on the stage's own loss."""

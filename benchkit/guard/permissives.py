@@ -61,17 +61,26 @@ def check_sensors(read: Read) -> None:
         )
 
 
-def check_polarity(exposed_V: float, set_V: float) -> None:
-    """What was set arrives at the exposed port, right way round."""
-    if not abs(exposed_V - set_V) <= PROOF_SHARE * set_V:
-        hint = (
-            "the leads are crossed"
-            if exposed_V < -RESIDUAL_V
-            else "the exposed port is shorted, loaded, or not connected"
-        )
+def check_polarity(exposed_V: float, set_V: float, sign: int = 1) -> None:
+    """What was set arrives at the exposed port, the way round that the harness says (``sign``)."""
+    if abs(exposed_V - sign * set_V) <= PROOF_SHARE * set_V:
+        return
+    if -sign * exposed_V > RESIDUAL_V:
+        hint = "the leads are crossed" if sign > 0 else "the leads are not crossed"
+    else:
+        hint = "the exposed port is shorted, loaded, or not connected"
+    raise Refused(
+        f"with {set_V:g} V set, exposed_voltage reads {exposed_V:.3g} V: {hint}; nothing "
+        "larger is applied"
+    )
+
+
+def check_direction(exposed_A: float, limit_A: float, sign: int) -> None:
+    """Where the stage conducts, so that the voltage proves nothing, the current does."""
+    if not sign * exposed_A >= 0.5 * limit_A:
         raise Refused(
-            f"with {set_V:g} V set, exposed_voltage reads {exposed_V:.3g} V: {hint}; nothing "
-            "larger is applied"
+            f"the supply limits its current at {limit_A:g} A, but exposed_current reads "
+            f"{exposed_A:.3g} A: neither voltage nor current proves which way round the leads are"
         )
 
 

@@ -149,7 +149,7 @@ def looks(notes: Notes) -> list[float]:
 def test_slow_readings_do_not_add_up() -> None:
     """Each takes four seconds (a hundred power line cycles, twice): never two without a look."""
     world, notes = World(reading_s=4.0), Notes()
-    guard = guard_of(world, notes, waits_s=8.0)
+    guard = guard_of(world, notes, waits_s=12.0)
     with guard.energised(replace(STEP, longest_s=1e3)) as live:
         for _ in range(5):
             guard.read("drop")

@@ -1,0 +1,69 @@
+"""What one look alone cannot see: how fast, how much in all, and whether anything moves at all."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+
+from benchkit.guard.envelope import Envelope
+from benchkit.protocols import SupplyState
+
+LEAST_S = 1.0
+"""A rate is taken over this time at least: over less, a thermometer's noise would trip."""
+FROZEN_LOOKS, FROZEN_S, FROZEN_W = 60, 300.0, 1.0
+"""A sensor that reads the very same through so many looks and seconds, while the supply gives more
+than this, is taken to be dead: a live one has noise, and ambient drifts (judgement)."""
+
+Trip = tuple[str, float, float, str]
+
+
+class Watch:
+    """Follows one energised step from look to look. blind_s: see ``Guard.blind_s``."""
+
+    def __init__(self, blind_s: float) -> None:
+        self._blind_s = blind_s
+        self._looked_s = self._compared_s = math.nan
+        self._power_W = self._energy_J = 0.0
+        self._turn = False
+        self._from: tuple[float, float] | None = None
+        self._same = math.nan
+        self._same_since_s, self._same_looks = math.nan, 0
+
+    def trips(
+        self, envelope: Envelope, state: SupplyState, case_C: float, now_s: float
+    ) -> Iterator[Trip]:
+        """What is to be compared with its threshold: (name, value, threshold, unit)."""
+        power = abs(state.voltage_V * state.current_A)
+        since = now_s - self._looked_s
+        if since > 0:
+            self._energy_J += since * max(power, self._power_W)
+            yield "time since the last look", since, max(self._blind_s, LEAST_S), "s"
+        self._looked_s, self._power_W = now_s, power
+        yield "energy", self._energy_J, envelope.energy_max_J, "J"
+        yield from self._rate(envelope, case_C, now_s)
+        yield from self._frozen(case_C, power, now_s)
+
+    def voltage_due(self, now_s: float, poll_s: float) -> str | None:
+        """Which voltage is to be looked at, if any: each every two polling intervals, by turns."""
+        if now_s - self._compared_s < poll_s * (1 - 1e-6):
+            return None
+        self._compared_s, self._turn = now_s, not self._turn
+        return "guarded_voltage" if self._turn else "exposed_voltage"
+
+    def _rate(self, envelope: Envelope, case_C: float, now_s: float) -> Iterator[Trip]:
+        if self._from is None:
+            self._from = now_s, case_C
+            return
+        then_s, then_C = self._from
+        if now_s - then_s >= LEAST_S:
+            rate = (case_C - then_C) / (now_s - then_s)
+            self._from = now_s, case_C
+            yield "rise of the case", rate, envelope.case_rise_max_K_per_s, "K/s"
+
+    def _frozen(self, case_C: float, power_W: float, now_s: float) -> Iterator[Trip]:
+        if case_C != self._same or power_W < FROZEN_W:
+            self._same, self._same_since_s, self._same_looks = case_C, now_s, 0
+            return
+        self._same_looks += 1
+        if self._same_looks >= FROZEN_LOOKS:
+            yield "time the case has not moved", now_s - self._same_since_s, FROZEN_S, "s"
