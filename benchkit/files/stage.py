@@ -109,6 +109,28 @@ class Soak(FileModel):
     the report warns that natural convection changes with rise."""
 
 
+AUTOMOTIVE_DWELL_S = 60.0
+"""Reversed voltage for 60 s: ISO 16750-2, -14 V in 12 V systems and -28 V in 24 V ones (from
+memory: look the clause up before quoting it)."""
+
+
+class Reverse(FileModel):
+    """[reverse]: the trial in the wrong direction, supply leads crossed at the exposed port."""
+
+    voltage_V: Positive | None = None
+    """The full reverse voltage; the stage's highest supply voltage unless given."""
+    steps: Annotated[int, Field(ge=1, le=20)] = 4
+    """Rungs of the ladder up to it."""
+    current_limit_A: Annotated[float, Field(gt=0, le=1)] = 0.1
+    dwell_s: Annotated[float, Field(ge=0, le=600)] | Literal["automotive"] = 5.0
+    """How long the full reverse voltage stays; "automotive" is AUTOMOTIVE_DWELL_S."""
+
+    @property
+    def dwell(self) -> float:
+        """In seconds."""
+        return AUTOMOTIVE_DWELL_S if self.dwell_s == "automotive" else float(self.dwell_s)
+
+
 class DropLimit(FileModel):
     """One line of limits.drop: the most the stage may drop at a current."""
 
@@ -122,6 +144,10 @@ class Limits(FileModel):
     drop: list[DropLimit] = Field(default_factory=list)
     case_max_C: Celsius | None = None
     junction_margin_min_K: Annotated[float, Field(ge=0)] | None = None
+    leakage_max_A: Positive | None = None
+    """Into the exposed port at the full reverse voltage."""
+    guarded_reverse_max_V: Positive | None = None
+    """How far below zero the guarded port may be, at the full reverse voltage."""
     rule: Literal["guarded", "simple"] = "guarded"
 
 
@@ -137,6 +163,7 @@ class StageFile(FileModel):
     heat: Heat
     sweep: Sweep
     soak: Soak | None = None
+    reverse: Reverse | None = None
     limits: Limits = Limits()
 
     @field_validator("parts")
@@ -155,18 +182,23 @@ class StageFile(FileModel):
                 'stage.topology is "network": [[network]] must say what each part is wired to'
             )
         if free and self.stage.main not in self.parts:
+            given = "missing" if self.stage.main is None else repr(self.stage.main)
             raise ValueError(
-                f"stage.main is {self.stage.main or 'missing'}: with a network it must be the part "
-                f"that carries the working current, one of {', '.join(self.parts)}"
+                f"stage.main is {given}: with a network it must be the part that carries the "
+                f"working current, one of {', '.join(self.parts)}"
             )
         if free and self.stage.guards is None:
             raise ValueError('stage.guards is missing: with a network it is "load" or "supply"')
         if not free and self.network:
             raise ValueError(
-                f'[[network]] is for stage.topology "network"; here it is "{self.stage.topology}"'
+                f'[[network]] is for stage.topology "network"; here it is "{self.stage.topology}": '
+                "leave the table out, or change the topology"
             )
         if not free and self.stage.main is not None:
-            raise ValueError('stage.main is for stage.topology "network" only')
+            raise ValueError(
+                f'stage.main is {self.stage.main!r}, which is for stage.topology "network" only: '
+                f'leave it out, here it is "{self.stage.topology}"'
+            )
         return self
 
     @model_validator(mode="after")
@@ -195,6 +227,9 @@ class StageFile(FileModel):
                 )
         if self.limits.case_max_C is not None and self.soak is None:
             raise ValueError("limits.case_max_C needs a [soak] table, or it is never measured")
+        for key in ("leakage_max_A", "guarded_reverse_max_V"):
+            if getattr(self.limits, key) is not None and self.reverse is None:
+                raise ValueError(f"limits.{key} needs a [reverse] table, or it is never measured")
         if self.limits.junction_margin_min_K is not None and self.soak is None:
             raise ValueError(
                 "limits.junction_margin_min_K needs a [soak] table, or it is never measured"

@@ -100,7 +100,7 @@ def test_starters_build(name: str, topology: str, main: str, guards: str) -> Non
          "stage.main is missing: with a network it must be the part that carries the working "
          "current, one of Q1, Q2, Z1, R1, R2"),
         (('main = "Q1"', 'main = "Q9"'),
-         "stage.main is Q9: with a network it must be the part that carries the working "
+         "stage.main is 'Q9': with a network it must be the part that carries the working "
          "current, one of Q1, Q2, Z1, R1, R2"),
         (('main = "Q1"', 'main = "R1"'),
          "stage.main is 'R1', a resistor: the part whose case is measured must be a diode, a tvs "
@@ -110,7 +110,8 @@ def test_starters_build(name: str, topology: str, main: str, guards: str) -> Non
         (('guards = "load" ', ""),
          'stage.guards is missing: with a network it is "load" or "supply"'),
         (('topology = "network"', 'topology = "pmos-pass"'),
-         '[[network]] is for stage.topology "network"; here it is "pmos-pass"'),
+         '[[network]] is for stage.topology "network"; here it is "pmos-pass": leave the table '
+         "out, or change the topology"),
     ],
 )  # fmt: skip
 def test_one_mistake_is_one_sentence(change: tuple[str, str], message: str) -> None:
@@ -126,7 +127,8 @@ def test_a_network_without_entries() -> None:
 
 def test_main_is_for_a_network_only() -> None:
     assert complaint(('"pmos-pass"', '"pmos-pass"\nmain = "Q1"'), text=PMOS) == [
-        'stage.main is for stage.topology "network" only'
+        "stage.main is 'Q1', which is for stage.topology \"network\" only: leave it out, here it "
+        'is "pmos-pass"'
     ]
 
 
