@@ -37,6 +37,7 @@ class World:
     tripped: bool = False
     polarity: int = 1
     crossing_stuck: bool = False
+    trips_at_limit: bool = False
     conducts_reversed: bool = False
     """Whether the stage carries current in reverse, up to the supply's limit."""
     wired: list[Harness] = field(default_factory=list)
@@ -111,6 +112,8 @@ class StandInSupply:
     def state(self) -> SupplyState:
         self._heard("state")
         w = self.world
+        if w.trips_at_limit and w.on and w.limits():
+            w.on, w.tripped = False, True
         amps = (w.limit_A if w.limits() else w.load_A) if w.on else 0.0
         return SupplyState(w.on, abs(w.port_V()) if w.on else 0.0, amps, w.limits(), w.tripped)
 

@@ -57,6 +57,7 @@ LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
 """How far a read-back of a protection level may be from what was asked."""
 APART_V, APART_SHARE = 0.5, 0.05
 """How far the supply's own voltage may be from the meter's at the exposed port: leads drop some."""
+SUPPLY_TRIPPED = "the supply's own protection"
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
 
@@ -230,7 +231,8 @@ class Guard:
 
         Polarity is never taken from a relay or a person. Refused when it is not as the harness
         says. Returns whether the stage stood the volt; False where, with the leads crossed, it
-        conducts all that the supply gives.
+        conducts all that the supply gives. Where the supply's over-current protection ended that,
+        the current could not show its direction, and polarity stays unproved.
         """
         crossed = self._harness.crossed
         envelope = Envelope(
@@ -238,27 +240,34 @@ class Guard:
             PROOF_V,
             PROOF_A,
             PROOF_V * 1.1 + 0.5,
-            # Over-current at the limit itself would trip where the supply is meant to limit.
-            2 * PROOF_A if crossed else PROOF_A,
+            PROOF_A,
             self.ceilings.case_max_C,
             1.0,
             30.0,
             may_limit=crossed,
-            guarded_min_V=-1.2 * PROOF_V,
         )
-        self.step("polarity" if not crossed else "polarity/reversed")
-        with self.energised(envelope) as live:
-            live.wait(0.05)
-            exposed, blocks = self._usable("exposed_voltage"), True
-            if crossed and self.__supply.state().constant_current:
-                check_direction(self._usable("exposed_current"), PROOF_A, self._harness.sign)
-                blocks = False
-            else:
-                check_polarity(exposed, PROOF_V, self._harness.sign)
-            check_mesh(exposed, self._usable("guarded_voltage"), self._usable("drop"))
-        self._proved = True
+        self.step("polarity/reversed" if crossed else "polarity")
+        blocks, proved = True, True
+        try:
+            with self.energised(envelope) as live:
+                live.wait(0.05)
+                exposed = self._usable("exposed_voltage")
+                if crossed and self.__supply.state().constant_current:
+                    check_direction(self._usable("exposed_current"), PROOF_A, self._harness.sign)
+                    blocks = False
+                else:
+                    check_polarity(exposed, PROOF_V, self._harness.sign)
+                check_mesh(exposed, self._usable("guarded_voltage"), self._usable("drop"))
+        except Tripped as trip:
+            if not crossed or SUPPLY_TRIPPED not in str(trip):
+                raise
+            blocks = proved = False
+        self._proved = proved
         self._journal.event(
-            "polarity", "as it should be, proved by measurement", time_s=self.now(), blocks=blocks
+            "polarity",
+            "as it should be, proved by measurement" if proved else "not proved: it conducts",
+            time_s=self.now(),
+            blocks=blocks,
         )
         return blocks
 
@@ -350,7 +359,7 @@ class Guard:
         self._keep(Reading(now, "supply_voltage", state.voltage_V, "V", 0.0, 0.0))
         self._keep(Reading(now, "supply_current", state.current_A, "A", 0.0, 0.0))
         if state.tripped:
-            self._trip("the supply's own protection", "has tripped", now)
+            self._trip(SUPPLY_TRIPPED, "has tripped", now)
         if not state.output_on:
             self._trip("the supply's output", "went off by itself", now)
         if state.constant_current and not envelope.may_limit:

@@ -165,3 +165,14 @@ def test_sentences_say_which_lead_goes_where() -> None:
         "terminal and its minus to the guarded minus terminal"
     )
     assert "leave the exposed port open" in Harness("nothing", "load").sentence()
+
+
+def test_a_supply_that_trips_at_its_limit_proves_no_direction() -> None:
+    """Some supplies know no over-current level of their own: they trip at the limit."""
+    world = World(conducts_reversed=True, trips_at_limit=True)
+    guard = begun(world)
+    guard.arrange(REVERSED)
+    assert not guard.prove_polarity()
+    assert not world.on
+    with pytest.raises(Refused, match="has not been proved"), guard.energised(TRIAL):
+        pass
