@@ -13,7 +13,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from benchkit.errors import LinkError, NotConfirmedOff
-from benchkit.files.bench import BenchFile, Instrument
+from benchkit.files.bench import BenchFile, Instrument, PointName
 from benchkit.guard import Ceilings, Guard
 from benchkit.protocols import Clock, Journal, Operator
 from benchkit.reading import Reading
@@ -163,8 +163,9 @@ def open_bench(
             clock = _WholeExchanges(SimulatedClock(control), shield)
             fixture = SimulatedFixture(control)
         guard = _guard(
-            file, sessions, dialects, clock, operator, journal, shield=shield, watcher=watcher
-        )
+            file, sessions, dialects, clock, fixture, operator, journal,
+            shield=shield, watcher=watcher,
+        )  # fmt: skip
         identities = {name: session.identity for name, session in sessions.items()}
         try:
             guard.start_off()
@@ -225,9 +226,9 @@ def longest_waits_s(file: BenchFile, dialects: Mapping[str, Dialect]) -> float:
     is sent, in seconds: every answer comes at the end of its timeout.
 
     One operation of a procedure that had just begun (a point configured and read, or the load
-    set), then the look at supply and case, then a lost connection to the supply that is opened
-    again, twice, before output-off gets through. Emptying an error queue that an instrument has
-    filled counts as one answer.
+    set), then the look at supply, case and one voltage, then a lost connection to the supply that
+    is opened again, twice, before output-off gets through. Emptying an error queue that an
+    instrument has filled counts as one answer.
     """
 
     def allowed(name: str, *kinds: Kind) -> float:
@@ -244,6 +245,8 @@ def longest_waits_s(file: BenchFile, dialects: Mapping[str, Dialect]) -> float:
             operations.append(allowed(point.instrument, "read"))
     supply = file.only("supply")[0]
     look = allowed(supply, "read") + allowed(file.points["case"].instrument, "read")
+    voltages: tuple[PointName, ...] = ("guarded_voltage", "exposed_voltage")
+    look += max(allowed(file.points[p].instrument, "set", "read") for p in voltages)
     return max(operations) + look + 2 * dialects[supply].link.open_s
 
 
@@ -252,6 +255,7 @@ def _guard(
     sessions: dict[str, Session],
     dialects: dict[str, Dialect],
     clock: Clock,
+    fixture: Fixture,
     operator: Operator,
     journal: Journal,
     *,
@@ -280,6 +284,7 @@ def _guard(
         {name: item.calibration_due for name, item in file.instruments.items()},
         dt.datetime.now(dt.UTC).date(),
         waits_s=longest_waits_s(file, dialects),
+        wiring=fixture,
         shield=shield,
         watcher=watcher,
     )

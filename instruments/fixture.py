@@ -1,4 +1,5 @@
-"""Getting a board into the fixture: by hand, or in the simulated world by asking for it."""
+"""Getting a board into the fixture, and the leads to its ports: by hand, or in the simulated world
+by asking for it."""
 
 from __future__ import annotations
 
@@ -6,6 +7,7 @@ from pathlib import Path
 from typing import Protocol
 
 from benchkit.errors import InputError, OperatorStopped
+from benchkit.harness import Harness
 from benchkit.protocols import Operator
 from instruments.errors import InstrumentError
 from instruments.session import Session
@@ -15,7 +17,12 @@ class Fixture(Protocol):
     """Where the board under test sits."""
 
     def place(self, serial: str, stage_path: Path) -> None:
-        """Have board ``serial`` put in and connected; OperatorStopped when that is declined."""
+        """Have board ``serial`` put in and connected right way round; OperatorStopped when that is
+        declined."""
+
+    def arrange(self, harness: Harness) -> None:
+        """Have supply and load connected as told, with everything off; OperatorStopped when that
+        is declined. What was done is proved by measurement elsewhere."""
 
 
 class HandFixture:
@@ -33,6 +40,11 @@ class HandFixture:
         ):
             raise OperatorStopped(f"board {serial} was not put in")
 
+    def arrange(self, harness: Harness) -> None:
+        """Say which lead goes where, and wait for the answer."""
+        if not self._operator.instruct(f"With everything off: {harness.sentence()}"):
+            raise OperatorStopped(f"the leads were not moved: {harness.sentence()}")
+
 
 class SimulatedFixture:
     """The simulated bench draws the board from its stage's tolerances."""
@@ -49,3 +61,9 @@ class SimulatedFixture:
             raise InputError(
                 f"{stage_path}: the simulated bench cannot build board {serial}: {error}"
             ) from None
+
+    def arrange(self, harness: Harness) -> None:
+        """Ask the simulated bench for it, which does it even when something is on."""
+        self._session.set(
+            f':SIM:WIRE "{harness.exposed}","{harness.guarded}",{int(harness.crossed)}', "slow"
+        )

@@ -12,14 +12,21 @@ from pathlib import Path
 import numpy as np
 
 from benchkit.circuit.elements import Resistor
-from benchkit.circuit.network import Element
+from benchkit.circuit.network import GROUND, Element
 from benchkit.files import StageFile, load
 from benchkit.parts.diode import DiodeLaw
 from benchkit.parts.mosfet import MosfetLaws
 from benchkit.placing import Law
+from benchkit.prediction.part_state import own_elements
 from benchkit.stage import Sample, Stage, build_stage
-from benchkit.topologies.base import EXPOSED, GUARDED
+from benchkit.topologies.base import Ports, Wiring
 from instruments.simulated.heat import BoardHeat
+
+SHORT_OHM, OPEN_OHM = 4e-3, 1e8
+PIN, PIN_OHM = "pin", 1e6
+"""Node of a gate that nothing drives, and what holds it at the source."""
+JOINT = "joint"
+"""The exposed terminal of the broken lead, where a dry joint is between it and the rest."""
 
 BOARD_FAULTS = {
     "gate-open": "the gate is not driven: the channel stays off and the body diode carries all",
@@ -28,6 +35,8 @@ BOARD_FAULTS = {
     "dry-joint": "this many ohms stand in the current's way inside the stage",
     "short": "the part is shorted through a few milliohms",
     "open": "the part is open",
+    "leaky": "this many ohms lie across the part: it leaks backwards",
+    "wrong-way-round": "the part is fitted the other way: its first and last terminals are swapped",
     "heat-scale": "case-to-ambient thermal resistance is this many times the typical one",
 }
 """What can be wrong with a board itself, by name."""
@@ -56,9 +65,13 @@ def parse_faults(spelled: Sequence[str]) -> dict[str, float]:
 
 @dataclass
 class Board:
-    """One board's truth."""
+    """One board's truth.
+
+    stage: wired as this board is. behind_joint: the node that a dry joint leads to.
+    """
 
     stage: Stage
+    behind_joint: str
     sample: Sample
     faults: Mapping[str, float]
     heat: BoardHeat
@@ -66,15 +79,29 @@ class Board:
     ambient_swing_K: float
     ambient_phase: float
 
+    @property
+    def main_nodes(self) -> tuple[str, ...]:
+        """Of the main part, as it is fitted."""
+        return self.stage.wiring.parts[self.stage.main]
+
     def elements(self, junction_C: np.ndarray[tuple[int], np.dtype[np.float64]]) -> list[Element]:
-        """The stage with its faults, between ``exposed+`` and ``guarded+``."""
-        size = junction_C.size
+        """The stage with its faults; those of the main part are named as its own elements."""
+        size, main = junction_C.size, self.stage.main
         boards = self.sample if size == 1 else self.sample.repeated(size)
         inside = self.stage.elements(boards, junction_C)
+        ends = self.main_nodes[0], self.main_nodes[-1]
         if "open" in self.faults:
-            return [Resistor("fault", (EXPOSED, GUARDED), 1e8)]
+            own = {element.name for element in own_elements(inside, main)}
+            inside = [element for element in inside if element.name not in own]
+            inside.append(Resistor(f"{main}.open", ends, OPEN_OHM))
+        elif "gate-open" in self.faults and self.stage.gate_nodes is not None:
+            inside.append(Resistor(f"{main}.pin", self.stage.gate_nodes, PIN_OHM))
         if "short" in self.faults:
-            inside.append(Resistor("fault", (EXPOSED, GUARDED), 4e-3))
+            inside.append(Resistor(f"{main}.short", ends, SHORT_OHM))
+        if "leaky" in self.faults:
+            inside.append(Resistor(f"{main}.leak", ends, self.faults["leaky"]))
+        if "dry-joint" in self.faults:
+            inside.append(Resistor(JOINT, (JOINT, self.behind_joint), self.faults["dry-joint"]))
         return inside
 
 
@@ -98,8 +125,10 @@ def make_board(
         slow,
         slow * draw.uniform(0.1, 0.2),
     )
+    fitted, behind = _wired(stage, faults)
     return Board(
-        stage,
+        fitted,
+        behind,
         Sample(1, laws, sample.case_to_ambient_K_per_W),
         faults,
         heat,
@@ -107,6 +136,29 @@ def make_board(
         draw.uniform(0.05, 0.25),
         draw.uniform(0, 6.28),
     )
+
+
+def _wired(stage: Stage, faults: Mapping[str, float]) -> tuple[Stage, str]:
+    """The stage with the nodes of a faulty board, and the node behind a dry joint."""
+    parts, ports = dict(stage.wiring.parts), stage.ports
+    first, *gate, last = parts[stage.main]
+    if "wrong-way-round" in faults:
+        first, last = last, first
+    if gate and "gate-open" in faults and "open" not in faults:
+        gate = [PIN]
+    parts[stage.main] = (first, *gate, last)
+    at = "exposed_plus" if _breaks_plus(ports) else "exposed_minus"
+    behind = str(getattr(ports, at))
+    if "dry-joint" in faults:
+        ports = dataclasses.replace(ports, **{at: JOINT})
+    return dataclasses.replace(stage, wiring=Wiring(parts, ports)), behind
+
+
+def _breaks_plus(ports: Ports) -> bool:
+    """Whether the stage sits in the plus lead; where it breaks none, whether that is not ground."""
+    if ports.exposed_plus != ports.guarded_plus:
+        return True
+    return ports.exposed_minus == ports.guarded_minus and ports.exposed_plus != GROUND
 
 
 def _faulty(stage: Stage, law: Law, faults: Mapping[str, float]) -> Law:
@@ -121,8 +173,6 @@ def _faulty(stage: Stage, law: Law, faults: Mapping[str, float]) -> Law:
                 threshold_V=typical.channel.threshold_V,
                 series_ohm=typical.channel.series_ohm * faults["rds-on-scale"],
             )
-        if "gate-open" in faults:
-            channel = dataclasses.replace(channel, gain_A_per_V2=channel.gain_A_per_V2 * 1e-12)
         return MosfetLaws(channel, law.body)
     if isinstance(law, DiodeLaw) and "drop-shift" in faults:
         scale = float(law.ideality) * 0.02569

@@ -1,14 +1,18 @@
-"""The control port of the simulated bench: bench time, the fixture, faults and true values.
+"""The control port of the simulated bench: bench time, the fixture and its wiring, faults
+and true values.
 
 Sentences of the world about what cannot be done come back as -224 with the sentence behind ';'.
 """
 
 from __future__ import annotations
 
+from typing import get_args
+
 from benchkit.errors import InputError
+from benchkit.harness import At, Harness
 from instruments.simulated.core import Core
 from instruments.simulated.errors import ScpiError
-from instruments.simulated.parameters import Number, Text
+from instruments.simulated.parameters import Number, Switch, Text
 from instruments.simulated.scpi import Device
 from instruments.simulated.tree import Entry
 
@@ -33,6 +37,8 @@ class Control(Device):
                 self.core.elapse,
                 (Number(0.0, LONGEST_ADVANCE_S, unit="S"),),
             ),
+            Entry("SIMulation:WIRE", self._wire, (Text(), Text(), Switch())),
+            Entry("SIMulation:WIRE?", self._wired),
             Entry("SIMulation:INSert", self._insert, (Text(), Text())),
             Entry(
                 "SIMulation:FAULt",
@@ -48,6 +54,17 @@ class Control(Device):
             self.core.insert(serial, stage_path)
         except (ValueError, InputError) as error:
             raise ScpiError(-224, str(error)) from None
+
+    def _wire(self, exposed: str, guarded: str, crossed: bool) -> None:
+        try:
+            self.core.world.wire(Harness(_at("exposed", exposed), _at("guarded", guarded), crossed))
+        except ValueError as error:
+            raise ScpiError(-224, str(error)) from None
+        self.core.watch()
+
+    def _wired(self) -> str:
+        harness = self.core.world.harness
+        return f'"{harness.exposed}","{harness.guarded}",{int(harness.crossed)}'
 
     def _fault(self, name: str, at_s: float, value: float | None) -> None:
         try:
@@ -65,3 +82,12 @@ class Control(Device):
             return f"{self.core.world.truth(name):.12E}"
         except KeyError:
             raise ScpiError(-224, f"there is no true value named {name!r}") from None
+
+
+def _at(port: str, name: str) -> At:
+    """What somebody wants at a port; ValueError for anything that is not on the bench."""
+    known: tuple[At, ...] = get_args(At)
+    for at in known:
+        if at == name:
+            return at
+    raise ValueError(f"{name!r} cannot be at the {port} port: it must be {', '.join(known)}")

@@ -10,64 +10,32 @@ from __future__ import annotations
 
 import math
 import random
-from dataclasses import dataclass
 from pathlib import Path
 
-import numpy as np
-from numpy.typing import NDArray
-
-from benchkit.circuit import GROUND, Resistor, network, solve
 from benchkit.errors import InputError
 from benchkit.files import BenchFile
-from benchkit.topologies.base import EXPOSED, GUARDED
-from instruments.simulated import INSTRUMENT_FAULTS
+from benchkit.harness import DRAWING, Harness
+from instruments.simulated.armed import (
+    CONDUCTS_BACK,
+    CROSSING_STUCK,
+    LEAD_RESISTANCE,
+    ArmedFaults,
+)
 from instruments.simulated.board import Board, make_board, seed_of
+from instruments.simulated.circuit import Hookup, Moment, PortCircuit
 from instruments.simulated.heat import LONGEST_STEP_S
-from instruments.simulated.terminals import SUPPLY_OHM, LoadInput, SupplyOutput
+from instruments.simulated.output import RegulatedOutput
 from instruments.simulated.timebase import Timebase
 
-Floats = NDArray[np.float64]
-
-SUPPLY_RISE_S = 0.004
-SUPPLY_FALL_S, FALL_STEP_S = 0.02, 0.04
 LOAD_LAG_S = 0.003
 LEAD_OHM = 0.018
-OFF_OHM = 50.0
-"""What discharges the output of a supply that is off."""
 LAWS_END_C = 250.0
 """The laws of the parts are not valid beyond; a real part would soon be dead."""
 NEAR_K = 2.0
 ROUNDING_S = 1e-6
-
-WIRING_FAULTS = {
-    "lead-off:drop": "a Kelvin lead of this point is off: the meter floats",
-    "lead-off:exposed_voltage": "a lead of this point is off: the meter floats",
-    "lead-off:guarded_voltage": "a lead of this point is off: the meter floats",
-    "sensor-open:case": "the case sensor is open",
-    "sensor-open:ambient": "the ambient sensor is open",
-    "lead-resistance": "this many ohms more in the lead from the supply",
-}
-"""What can be wrong with the wiring, by name."""
-
-
-@dataclass(frozen=True)
-class _State:
-    """One solved operating point and how it moves with current and temperature."""
-
-    key: tuple[object, ...]
-    amps: float
-    junction_C: float
-    values: dict[str, float]
-    by_amp: dict[str, float]
-    by_kelvin: dict[str, float]
-
-    def at(self, name: str, amps: float, junction_C: float) -> float:
-        """A quantity near this point, to first order."""
-        return (
-            self.values[name]
-            + self.by_amp[name] * (amps - self.amps)
-            + self.by_kelvin[name] * (junction_C - self.junction_C)
-        )
+HOT_V = 0.5
+"""More than this at a port, and nobody should touch the leads."""
+FLOATING_V = 0.0137
 
 
 class Plant:
@@ -78,7 +46,6 @@ class Plant:
             raise InputError(f"{bench_path}: has no [simulated] table, so it cannot be simulated")
         self._time = timebase
         self._settings = bench.simulated
-        self._faults: list[tuple[str, float, float]] = []
         draw = random.Random(seed_of(self._settings.seed, "wiring"))
         current, drop = bench.points["exposed_current"], bench.points["drop"]
         share = current.shunt_tolerance_percent / 100
@@ -87,15 +54,17 @@ class Plant:
             0.0, drop.lead_ohm + draw.uniform(-drop.lead_tolerance_ohm, drop.lead_tolerance_ohm)
         )
         self._thermal_V_per_K = draw.uniform(-1, 1) * drop.thermoelectric_V_per_K
+        self._faults = ArmedFaults()
         self._board: Board | None = None
+        self._circuit: PortCircuit | None = None
         self._age_s = 0.0
         self._lived_until = timebase.now()
-        self._command_supply = (0.0, 0.0, False)
+        self._output = RegulatedOutput()
         self._command_load = ("CURR", 0.0, False)
-        self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
-        self._state: _State | None = None
-        self._guess: dict[str, float] = {}
-        self._guess_of: tuple[float, bool] | None = None
+        self._amps = 0.0
+        self._harness = DRAWING
+        self._hot_rewirings = 0
+        self._moment: Moment | None = None
 
     # World: time
 
@@ -130,21 +99,10 @@ class Plant:
         self._age_s += seconds
 
     def _live(self, seconds: float) -> None:
-        self._since_switch_s += seconds
-        self._emf = self._emf_now()
+        self._output.pass_time(seconds)
         self._amps = _towards(self._amps, self._target_amps(), seconds / LOAD_LAG_S)
         if self._board is not None:
             self._board.heat.pass_time(seconds, max(self._quantity("loss"), 0.0))
-
-    def _emf_now(self) -> float:
-        """Up after a dead time; down like a capacitor that discharges, in steps, because every
-        step is an operating point to solve."""
-        volts, _, on = self._command_supply
-        if on:
-            return volts if self._since_switch_s >= SUPPLY_RISE_S else self._emf
-        steps = math.floor(self._since_switch_s / FALL_STEP_S)
-        left = self._emf_at_switch * math.exp(-steps * FALL_STEP_S / SUPPLY_FALL_S)
-        return left if left > 1e-6 else 0.0
 
     def _target_amps(self) -> float:
         mode, value, drawing = self._command_load
@@ -155,17 +113,17 @@ class Plant:
     def command_supply(self, voltage_V: float, current_A: float, on: bool) -> None:
         """Take the supply's new set-points."""
         self._catch_up()
-        if on != self._command_supply[2]:
-            self._since_switch_s, self._emf_at_switch = 0.0, self._emf
-        self._command_supply = (voltage_V, current_A, on)
+        self._output.command(voltage_V, current_A, on)
 
     def command_load(self, mode: str, value: float, on: bool) -> None:
         """Take the load's new set-point."""
         self._catch_up()
         self._command_load = (mode, value, on)
 
+    # World: what a person does
+
     def insert(self, serial: str, stage_path: str) -> None:
-        """Put a board in; everything at ambient, board time 0."""
+        """Put a board in, right way round; everything at ambient, board time 0."""
         self._lived_until = self.now()
         try:
             self._board = make_board(
@@ -177,62 +135,64 @@ class Plant:
             )
         except InputError as error:
             raise ValueError(str(error)) from None
-        self._age_s = 0.0
-        self._emf = self._amps = self._emf_at_switch = self._since_switch_s = 0.0
-        self._state = None
-        self._guess_of = None
-        self._faults = []
-        for spelled in self._settings.faults:
-            what, _, at = spelled.partition("@")
-            name, _, value = what.partition("=")
-            self.fault(name, float(at or 0), float(value or 1))
+        self._circuit = PortCircuit(self._board)
+        self._age_s = self._amps = 0.0
+        self._output.restart()
+        self._harness = DRAWING
+        self._moment = None
+        self._faults.arm_spelled(self._settings.faults)
+
+    def wire(self, harness: Harness) -> None:
+        """Connect supply and load otherwise; done with anything hot it is counted."""
+        for name in ("supply", "load"):
+            if harness.exposed == harness.guarded == name:
+                raise ValueError(f"the {name} cannot be at both ports: the bench has one")
+        if harness == self._harness:
+            return
+        ports = [abs(self._read(f"{port}_voltage")) for port in ("exposed", "guarded")]
+        self._hot_rewirings += self._output.on or max(ports) > HOT_V
+        if self.active(CROSSING_STUCK) is None:
+            self._harness = harness
+
+    @property
+    def harness(self) -> Harness:
+        """What is connected where."""
+        return self._harness
 
     def fault(self, name: str, at_s: float, value: float) -> None:
         """Arm a fault of wiring, instrument or link."""
-        kinds = {known.partition(":")[0] for known in INSTRUMENT_FAULTS}
-        if name not in WIRING_FAULTS and name.partition(":")[0] not in kinds:
-            raise ValueError(
-                f"{name!r} is not a fault of the bench; they are "
-                f"{', '.join([*WIRING_FAULTS, *INSTRUMENT_FAULTS])}"
-            )
-        self._faults.append((name, at_s, value))
-        self._state = None
+        self._faults.arm(name, at_s, value)
 
     def clear_faults(self) -> None:
         """Take every armed fault away."""
-        self._faults = []
-        self._state = None
+        self._faults.clear()
 
     def active(self, name: str) -> float | None:
         """The value of a fault whose time has come, or None."""
-        if not self._faults:
-            return None
-        age = self._age_s
-        values = [value for known, at_s, value in self._faults if known == name and at_s <= age]
-        return values[-1] if values else None
+        return self._faults.active(name, self._age_s)
 
     # World: true quantities
 
     def supply_terminals(self) -> tuple[float, float, bool]:
         """True volts and amperes of the supply, and whether it limits its current."""
-        amps = self._read("current")
-        limit = self._command_supply[1]
-        return self._read("supply"), amps, self._command_supply[2] and amps >= 0.999 * limit
+        amps = self._read("supply_current")
+        limits = self._output.on and amps >= 0.999 * self._output.limit_A
+        return self._read("supply_voltage"), amps, limits
 
     def load_terminals(self) -> tuple[float, float]:
         """True volts and amperes of the load."""
-        return self._read("guarded_voltage"), self._read("load")
+        return self._read("load_voltage"), self._read("load_current")
 
     def voltage(self, probe: str) -> float:
         """True volts between the two wires of a meter channel."""
         if self.active(f"lead-off:{probe}") is not None:
-            return 0.0137
+            return FLOATING_V
         if probe == "exposed_current":
-            return self._read("current") * self._shunt
+            return self._read("exposed_current") * self._shunt
         if probe == "drop":
             board = self._board
             warm = board.heat.case_K if board else 0.0
-            fixture = self._fixture_ohm * self._read("current")
+            fixture = self._fixture_ohm * self._read("exposed_current")
             return self._read("drop") + fixture + self._thermal_V_per_K * warm
         return self._read(probe)
 
@@ -246,14 +206,16 @@ class Plant:
 
     def truth(self, name: str) -> float:
         """For campaigns: ``drop@3.0`` (V at 3 A, now), ``thermal_resistance@0.5`` (K/W at 0.5 W),
-        ``case_K``, ``junction_C``, or a quantity of the circuit such as ``current``."""
+        ``case_K``, ``junction_C``, ``hot_rewirings``, or a quantity of the circuit such as
+        ``loss`` or ``gate_voltage``."""
         what, _, at = name.partition("@")
-        board = self._board
-        if board is None:
+        board, circuit = self._board, self._circuit
+        if what == "hot_rewirings":
+            return float(self._hot_rewirings)
+        if board is None or circuit is None:
             raise KeyError(name)
-        if what == "drop":
-            junction = self._junction()
-            return self._solve(float(at), junction).values["drop"]
+        if what == "drop" and at:
+            return circuit.at(self._hookup(), float(at), self._junction()).values["drop"]
         if what == "thermal_resistance":
             loss = float(at)
             return board.heat.final_case_K(loss) / loss
@@ -278,82 +240,28 @@ class Plant:
         return self._quantity(name)
 
     def _quantity(self, name: str) -> float:
-        if self._board is None:
-            return self._emf if name in ("supply", "exposed_voltage") else 0.0
-        junction = self._junction()
-        state = self._state
-        if (
-            state is None
-            or state.key != (self._emf, self._command_supply[1:], self._command_load)
-            or abs(junction - state.junction_C) > NEAR_K
-        ):
+        if self._circuit is None:
+            return self._empty(name)
+        hookup, junction, moment = self._hookup(), self._junction(), self._moment
+        if moment is None or moment.hookup != hookup or abs(junction - moment.junction_C) > NEAR_K:
             # At the current the load is going to: on the way there the straight line serves.
-            state = self._state = self._solve(self._target_amps(), junction)
-        return state.at(name, self._amps, junction)
+            moment = self._moment = self._circuit.at(hookup, self._target_amps(), junction)
+        return moment.at(name, self._amps, junction)
 
-    def _solve(self, amps: float, junction_C: float) -> _State:
-        """Solve at the point, a little more current, and a little warmer, in one batch."""
-        board = self._board
-        assert board is not None
-        key = (self._emf, self._command_supply[1:], self._command_load)
-        mode, value, drawing = self._command_load
-        step_A, step_K = max(1e-3 * amps, 1e-6), 0.1
-        junction = np.array([junction_C, junction_C, junction_C + step_K])
-        steps = np.array([amps, amps + step_A, amps])
-        load_mode, load_value = (mode, value) if drawing and mode != "CURR" else ("CURR", steps)
-        _, limit, on = self._command_supply
-        lead = LEAD_OHM + self._shunt + (self.active("lead-resistance") or 0.0)
-        stray = board.faults.get("dry-joint", 0.0)
-        port = "port+" if stray else EXPOSED
-        source = (
-            SupplyOutput("supply", (port, GROUND), self._emf, limit, SUPPLY_OHM + lead)
-            if on and self._emf > 0
-            else Resistor("supply", (port, "idle"), OFF_OHM + lead)
-        )
-        circuit = network(
-            [
-                source,
-                *([Resistor("joint", (port, EXPOSED), stray)] if stray else []),
-                *board.elements(junction),
-                LoadInput("load", (GUARDED, GROUND), load_mode, load_value),
-            ],
-            held={"idle": self._emf},
-        )
-        # Near the last point when only the load moved, or while the output runs down; from
-        # scratch when the supply was switched or set.
-        before = self._guess_of
-        near = (
-            self._guess
-            if before and before[1] == on and (not on or before[0] == self._emf)
-            else None
-        )
-        level = self._emf if on else 0.0
-        fresh = dict.fromkeys((port, EXPOSED, GUARDED), level)
-        solution = solve(circuit, 3, start=near or fresh)
-        if near is not None and not solution.settled.all():
-            solution = solve(circuit, 3, start=fresh)
-        self._guess_of = (self._emf, on)
-        if not solution.settled.all():
-            raise ArithmeticError("the simulated circuit has no operating point")
-        self._guess = {name: float(v[0]) for name, v in solution.volts.items()}
-        current = -solution.currents["supply"]
-        quantities = {
-            "supply": solution.volts[port] + lead * current,
-            "exposed_voltage": solution.volts[port],
-            "guarded_voltage": solution.volts[GUARDED],
-            "drop": solution.between(port, GUARDED),
-            "current": current,
-            "load": solution.currents["load"],
-        }
-        quantities["loss"] = quantities["drop"] * quantities["current"]
-        return _State(
-            key,
-            amps,
-            junction_C,
-            {name: float(v[0]) for name, v in quantities.items()},
-            {name: float(v[1] - v[0]) / step_A for name, v in quantities.items()},
-            {name: float(v[2] - v[0]) / step_K for name, v in quantities.items()},
-        )
+    def _empty(self, name: str) -> float:
+        """A quantity of a fixture with no board in it."""
+        if name == "supply_voltage":
+            return self._output.emf_V
+        if name == "exposed_voltage" and self._harness.exposed == "supply":
+            return self._harness.sign * self._output.emf_V
+        return 0.0
+
+    def _hookup(self) -> Hookup:
+        output, lead = self._output, LEAD_OHM + (self.active(LEAD_RESISTANCE) or 0.0)
+        return Hookup(
+            self._harness, output.emf_V, output.limit_A, output.on, *self._command_load,
+            self._shunt, lead, self.active(CONDUCTS_BACK) is not None,
+        )  # fmt: skip
 
 
 def _towards(value: float, target: float, time_constants: float) -> float:

@@ -16,31 +16,48 @@ PRELOAD_A, NARROW_A = 0.05, 0.01
 FADE_V = 0.05
 VOLT_MODE_OHM = 0.05
 BLEED_S = 5e-6
-"""What the load's input and the meter draw at any setting."""
+"""What the load's input and the meter draw at any setting, and at either polarity."""
+BACKWARDS_V, BACKWARDS_OHM, KNEE_V = 0.6, 0.03, 0.03
+"""From where, and through how much, a load without a stage that blocks conducts backwards."""
 
 
 @dataclass(frozen=True)
 class LoadInput:
-    """An electronic load: its current falls away as the voltage across it does."""
+    """An electronic load, plus first: it sinks, less and less as the voltage across it goes.
+
+    Backwards it draws its bleed only, unless ``conducts_back``: the transistors of many a load
+    have body diodes, and nothing in series that blocks (common practice, no source).
+    """
 
     name: str
     nodes: tuple[str, str]
     mode: str
     value: Floats | float
+    conducts_back: bool = False
 
     def branches(self, volts: Floats) -> list[Branch]:
         """Constant current, resistance, or voltage (behind VOLT_MODE_OHM)."""
         across = volts[0] - volts[1]
+        forwards = np.maximum(across, 0.0)
         if self.mode == "CURR":
-            share = np.tanh(across / FADE_V)
-            current, slope = self.value * share, self.value * (1 - share**2) / FADE_V
+            # Squared, so that there is no corner at no voltage at all.
+            part = np.tanh(forwards / FADE_V)
+            current = self.value * part**2
+            slope = 2 * self.value * part * (1 - part**2) / FADE_V
         elif self.mode == "RES":
-            current, slope = across / self.value, np.full_like(across, 1 / np.max(self.value))
+            # Bends into the straight line within FADE_V.
+            part = np.tanh(forwards / FADE_V)
+            current = forwards * part / self.value
+            slope = (part + forwards * (1 - part**2) / FADE_V) / self.value
         else:
             over = (across - self.value) / FADE_V
             current = np.logaddexp(0.0, over) * FADE_V / VOLT_MODE_OHM
             slope = 0.5 * (1 + np.tanh(0.5 * over)) / VOLT_MODE_OHM
         current, slope = current + BLEED_S * across, slope + BLEED_S
+        if self.conducts_back:
+            over = (-across - BACKWARDS_V) / KNEE_V
+            current = current - np.logaddexp(0.0, over) * KNEE_V / BACKWARDS_OHM
+            slope = slope + 0.5 * (1 + np.tanh(0.5 * over)) / BACKWARDS_OHM
         return [Branch(0, 1, current, ((0, 1, slope),))]
 
 
@@ -57,7 +74,7 @@ class SupplyOutput:
     emf_V: float
     limit_A: float
     ohms: float
-    """Its own, and those of the lead and the shunt up to the port."""
+    """Its own, and those of the lead (and of the shunt, where that is) up to the port."""
 
     def branches(self, volts: Floats) -> list[Branch]:
         """Smoothed at both ends (softplus), so that it can be solved."""

@@ -8,6 +8,8 @@ from __future__ import annotations
 
 from typing import Protocol
 
+from benchkit.harness import Harness
+
 
 class World(Protocol):
     """The plant and its clock, as the simulated instruments see them. Callers hold the lock."""
@@ -37,8 +39,16 @@ class World(Protocol):
     def temperature(self, probe: str) -> float | None:
         """True degrees Celsius at a sensor ("case" or "ambient"); None when the sensor is open."""
 
+    @property
+    def harness(self) -> Harness:
+        """Which instrument is at which port of the board, and which way round."""
+
+    def wire(self, harness: Harness) -> None:
+        """Connect supply and load otherwise, as a person or a relay does; ValueError with a plain
+        sentence when nobody could."""
+
     def insert(self, serial: str, stage_path: str) -> None:
-        """Put a board into the fixture: everything at ambient, board time 0.
+        """Put a board into the fixture, the right way round: everything at ambient, board time 0.
 
         Raises ValueError with a plain sentence when the stage file cannot be used."""
 

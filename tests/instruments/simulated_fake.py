@@ -11,6 +11,7 @@ from pathlib import Path
 
 from benchkit.files.bench import BenchFile
 from benchkit.files.loading import parse
+from benchkit.harness import DRAWING, Harness
 from instruments.simulated.core import Core
 from instruments.simulated.server import build_devices
 from instruments.simulated.timebase import Timebase, VirtualTime
@@ -96,6 +97,7 @@ class FakeWorld:
     limits: bool = False
     faults: dict[str, tuple[float, float]] = field(default_factory=dict)
     inserted: list[tuple[str, str]] = field(default_factory=list)
+    harness: Harness = DRAWING
 
     def now(self) -> float:
         return self.timebase.now()
@@ -121,6 +123,11 @@ class FakeWorld:
 
     def temperature(self, probe: str) -> float | None:
         return self.temperatures[probe]
+
+    def wire(self, harness: Harness) -> None:
+        if harness.exposed == harness.guarded == "load":
+            raise ValueError("the load cannot be at both ports")
+        self.harness = harness
 
     def insert(self, serial: str, stage_path: str) -> None:
         if not stage_path.endswith(".toml"):

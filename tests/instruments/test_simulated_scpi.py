@@ -6,6 +6,7 @@ import logging
 
 import pytest
 
+from benchkit.harness import Harness
 from tests.instruments.simulated_fake import Bench, bench_file
 
 
@@ -108,6 +109,10 @@ def test_control_port(bench: Bench) -> None:
     bench.tell("control", ":SIM:FAUL:CLE")
     assert bench.world.faults == {}
     assert float(bench.ask("control", ':SIM:TRUT? "drop"')) == 0.345
+    assert bench.ask("control", ":SIM:WIRE?") == '"supply","load",0'
+    bench.tell("control", ':SIM:WIRE "nothing","load",1')
+    assert bench.world.harness == Harness("nothing", "load", crossed=True)
+    assert bench.ask("control", ":SIMULATION:WIRE?") == '"nothing","load",1'
 
 
 @pytest.mark.parametrize(
@@ -115,6 +120,11 @@ def test_control_port(bench: Bench) -> None:
     [
         (':SIM:INS "SN","x"', 'x: there is no such file, give a ""stage"" file'),
         (':SIM:FAUL "gremlin",0', "there is no fault named 'gremlin'"),
+        (
+            ':SIM:WIRE "lamp","load",0',
+            "'lamp' cannot be at the exposed port: it must be supply, load, nothing",
+        ),
+        (':SIM:WIRE "load","load",0', "the load cannot be at both ports"),
         (':SIM:TRUT? "beauty"', "there is no true value named 'beauty'"),
     ],
 )
