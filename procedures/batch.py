@@ -3,7 +3,10 @@
 from __future__ import annotations
 
 import multiprocessing
+import multiprocessing.connection
+import os
 import signal
+import threading
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import BrokenExecutor, Future, ProcessPoolExecutor
 from dataclasses import dataclass
@@ -73,7 +76,7 @@ class _Reports:
 
     def __init__(self) -> None:
         context = multiprocessing.get_context("spawn")
-        self._pool = ProcessPoolExecutor(1, context, _leave_signals_alone)
+        self._pool = ProcessPoolExecutor(1, context, _begin_worker)
         self._waiting: list[tuple[Path, Future[Path] | None]] = []
 
     def order(self, folder: Path) -> None:
@@ -99,11 +102,23 @@ class _Reports:
                 write_report(folder)
 
 
-def _leave_signals_alone() -> None:
-    """Signals from the terminal reach every process: the one that measures answers them."""
+def _begin_worker() -> None:
+    """Leave signals alone, and end when the process that measures has ended, however it did.
+
+    Signals from the terminal reach every process: the one that measures answers them. Killed
+    outright, it could not tell its worker.
+    """
     for name in NAMES:
         if hasattr(signal, name):
             signal.signal(getattr(signal, name), signal.SIG_IGN)
+    parent = multiprocessing.parent_process()
+    if parent is not None:
+        threading.Thread(target=_end_with, args=(parent.sentinel,), daemon=True).start()
+
+
+def _end_with(sentinel: int) -> None:
+    multiprocessing.connection.wait([sentinel])
+    os._exit(1)
 
 
 def run_lot(
@@ -157,6 +172,10 @@ def conclude(
     from benchkit.reports.lot import lot_report
 
     boards = measured(lot, known or {})
+    for _, record, e in boards:
+        # A process that was killed outright had not drawn them all.
+        if not (record.path / "report.html").exists():
+            write_report(record.path, e)
     verdicts: dict[str, Verdict] = {serial: e.result.verdict for serial, _, e in boards}
     missing = [serial for serial in lot.serials if serial not in verdicts]
     owed: list[Verdict] = ["undecided" for _ in missing]

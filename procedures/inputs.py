@@ -17,7 +17,7 @@ from instruments.simulated.board import parse_faults
 from procedures.plan import plan_board
 from procedures.verify import Job
 
-MEASURED = ("series-diode", "pmos-pass", "pmos-pass-zener")
+MEASURED = ("series-diode", "pmos-pass", "pmos-pass-zener", "nmos-pass", "nmos-pass-zener")
 """What the procedures of this package measure."""
 
 

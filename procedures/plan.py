@@ -13,6 +13,7 @@ from benchkit.prediction.connections import surroundings
 from benchkit.prediction.heat import working_point
 from benchkit.prediction.scenarios import scenario
 from benchkit.stage import Stage
+from procedures.reverse_plan import ReversePlan, plan_reverse, steps_around
 
 ZEROS = 8
 REST_READINGS, REST_GAP_S = 8, 0.25
@@ -43,6 +44,7 @@ class Plan:
     soak_stop_C: float
     """The soak is not begun when the measured loss would take the case beyond this."""
     cautions: tuple[str, ...]
+    reverse: ReversePlan | None = None
 
     @property
     def seconds(self) -> float:
@@ -64,8 +66,15 @@ class Plan:
             "seconds": self.seconds,
             "cautions": list(self.cautions),
             "fuses_at_risk": 0,
-            "envelopes": [vars(e) for e in (self.sweep, self.soak) if e is not None],
+            "envelopes": [vars(envelope) for envelope in self._envelopes()],
         }
+
+    def _envelopes(self) -> Iterator[Envelope]:
+        yield self.sweep
+        if self.soak is not None:
+            yield self.soak
+        if self.reverse is not None:
+            yield from (*self.reverse.rungs, self.reverse.after)
 
 
 def plan_board(stage: Stage, bench: BenchFile) -> Plan:
@@ -144,8 +153,13 @@ def plan_board(stage: Stage, bench: BenchFile) -> Plan:
     ]
     if beyond:
         what += f" (BEYOND A DATASHEET RATING at the highest supply voltage: {', '.join(beyond)})"
+    cautions = [CAUTION.format(what=what)]
+    reverse = plan_reverse(stage, bench, sweep, aperture)
+    if reverse is not None:
+        steps += [Step(*step) for step in steps_around(reverse)]
+        cautions.append(reverse.caution)
     return Plan(
-        tuple(steps), sweep, soak, 1.3 * worst_drop, case_max - 5.0, (CAUTION.format(what=what),)
+        tuple(steps), sweep, soak, 1.3 * worst_drop, case_max - 5.0, tuple(cautions), reverse
     )
 
 

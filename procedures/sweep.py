@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from benchkit.files import BenchFile, StageFile
-from benchkit.guard import Guard, Live
+from benchkit.guard import Envelope, Guard, Live
 from procedures.plan import REST_GAP_S, REST_READINGS, ZEROS, Plan
 from procedures.screen import Screen
 
@@ -14,13 +14,15 @@ TURN_BACK_K = 10.0
 """The sweep turns back this far below the case temperature that would trip."""
 
 
-def read_rest(guard: Guard) -> None:
-    """Case and ambient while nothing is on: they show how far the two sensors are apart."""
+def read_rest(guard: Guard) -> float:
+    """Case and ambient while nothing is on: they show how far the two sensors are apart. Returns
+    the mean of what the case reads above ambient, in K."""
     guard.step("rest")
+    apart = 0.0
     for _ in range(REST_READINGS):
-        guard.read("case")
-        guard.read("ambient")
+        apart += guard.read("case").value - guard.read("ambient").value
         guard.sleep(REST_GAP_S)
+    return apart / REST_READINGS
 
 
 def read_zeros(guard: Guard, when: str, largest_drop_V: float, largest_A: float) -> None:
@@ -39,11 +41,15 @@ def read_zeros(guard: Guard, when: str, largest_drop_V: float, largest_A: float)
         guard.read("exposed_current")
 
 
-def run_sweep(guard: Guard, stage: StageFile, bench: BenchFile, plan: Plan, screen: Screen) -> None:
-    """Do the sweep and both sets of zeros."""
+def run_sweep(
+    guard: Guard, stage: StageFile, bench: BenchFile, plan: Plan, screen: Screen
+) -> list[float]:
+    """Do the sweep and both sets of zeros; returns the currents that every way up reached."""
     currents = stage.sweep.currents_A
     read_zeros(guard, "before", plan.largest_drop_V, currents[-1])
     total = 2 * len(currents) * stage.sweep.repeats
+    reached = len(currents)
+    guard.step("forward sweep")
     with (
         screen.progress("forward sweep", total),
         guard.energised(plan.sweep, plan.cautions[0]) as live,
@@ -52,6 +58,7 @@ def run_sweep(guard: Guard, stage: StageFile, bench: BenchFile, plan: Plan, scre
         done = 0
         for repeat in range(1, stage.sweep.repeats + 1):
             top = _way(guard, live, f"sweep/{repeat}/up", currents, bench, screen, done)
+            reached = min(reached, top)
             _way(
                 guard,
                 live,
@@ -64,6 +71,23 @@ def run_sweep(guard: Guard, stage: StageFile, bench: BenchFile, plan: Plan, scre
             done += 2 * len(currents)
         live.rest()
     read_zeros(guard, "after", plan.largest_drop_V, currents[-1])
+    return currents[:reached]
+
+
+def read_drops(
+    guard: Guard,
+    name: str,
+    currents: list[float],
+    envelope: Envelope,
+    caution: str,
+    bench: BenchFile,
+    screen: Screen,
+) -> None:
+    """The drop at a few currents, on the ranges in force, in steps ``name/current``."""
+    with screen.progress(name, len(currents)), guard.energised(envelope, caution) as live:
+        live.wait(bench.bench.settle_s)
+        _way(guard, live, name, currents, bench, screen, 0)
+        live.rest()
 
 
 def _way(

@@ -20,11 +20,13 @@ from benchkit.errors import (
 )
 from benchkit.evaluation.evaluate import Evaluation, evaluate
 from benchkit.guard import Guard
+from benchkit.harness import DRAWING
 from benchkit.records.record import read_json, read_record
 from benchkit.records.run_folder import RunFolder, write_text
 from benchkit.stage import Stage
 from instruments.bench import Bench
 from procedures.plan import Plan
+from procedures.reverse import run_reverse
 from procedures.screen import Screen
 from procedures.soak import run_soak
 from procedures.sweep import read_rest, run_sweep
@@ -108,14 +110,18 @@ def _secured(guard: Guard, stopped: BaseException) -> BenchkitError:
 
 def _measure(bench: Bench, job: Job, serial: str, run: RunFolder, screen: Screen) -> None:
     guard, file = bench.guard, bench.file
+    crossed = guard.harness.crossed
     guard.begin(run)
+    if crossed:
+        guard.arrange(DRAWING)  # left so by the run before
     bench.fixture.place(serial, job.stage_path)
     guard.step("permissives")
     guard.permit()
-    read_rest(guard)
+    rest_K = read_rest(guard)
     guard.prove_polarity()
-    run_sweep(guard, job.stage.file, file, job.plan, screen)
+    carried = run_sweep(guard, job.stage.file, file, job.plan, screen)
     run_soak(guard, job.stage, file, job.plan, run, screen)
+    run_reverse(guard, file, job.plan, carried, rest_K, screen)
     guard.step("end")
     guard.make_safe("end of run")
 

@@ -61,6 +61,21 @@ def test_verdicts_of_the_lot(unbroken: Path) -> None:
     assert "gate is not driven" in page
 
 
+def children_of(pid: int) -> list[int]:
+    """Processes that a process began, those of its threads too; none where there is no /proc."""
+    tasks = Path(f"/proc/{pid}/task").glob("*/children")
+    return [int(child) for task in tasks for child in task.read_text("ascii").split()]
+
+
+def alive(pid: int) -> bool:
+    try:
+        state = Path(f"/proc/{pid}/stat").read_text("ascii").rsplit(")", 1)[1].split()[0]
+    except OSError:
+        return False
+    return state != "Z"
+
+
+@pytest.mark.skipif(not Path("/proc/self/task").exists(), reason="looks at processes in /proc")
 def test_a_killed_batch_goes_on_and_ends_the_same(unbroken: Path, tmp_path: Path) -> None:
     folder = small_lot(tmp_path / "w").parent
     out = folder / "out"
@@ -79,6 +94,8 @@ def test_a_killed_batch_goes_on_and_ends_the_same(unbroken: Path, tmp_path: Path
         assert process.poll() is None, "it ended before it could be killed"
         assert time.monotonic() < deadline
         time.sleep(0.01)
+    drawing = children_of(process.pid)
+    assert drawing
     process.send_signal(signal.SIGKILL)
     process.wait()
     assert not (out / "lot.json").exists()
@@ -86,6 +103,11 @@ def test_a_killed_batch_goes_on_and_ends_the_same(unbroken: Path, tmp_path: Path
     with pytest.raises(InputError, match="--resume"):
         run(folder, out)
     assert run(folder, out, resume=True) == 1
+    # What drew its reports, and served its bench, ended with it.
+    deadline = time.monotonic() + 20
+    while any(alive(child) for child in drawing):
+        assert time.monotonic() < deadline
+        time.sleep(0.05)
     assert verdicts(out) == verdicts(unbroken)
     assert (out / "lot.html").read_bytes() == (unbroken / "lot.html").read_bytes()
     assert (out / "lot.json").read_bytes() == (unbroken / "lot.json").read_bytes()

@@ -331,8 +331,8 @@ def test_the_blind_time_is_that_of_the_dialects(tmp_path: Path) -> None:
     }
     slowest = max(point.aperture_nplc for point in file.points.values())
     # range and aperture set (2 s), reading (2 s and two apertures at 50 Hz); supply and case
-    # looked at (2 s each); the supply's connection opened again twice (5 s each).
-    assert longest_waits_s(file, dialects) == pytest.approx(4 + 2 * slowest / 50 + 4 + 10)
+    # looked at (2 s each) and one voltage (4 s); the supply opened again twice (5 s each).
+    assert longest_waits_s(file, dialects) == pytest.approx(4 + 2 * slowest / 50 + 8 + 10)
 
 
 @pytest.mark.parametrize(

@@ -12,11 +12,15 @@ from benchkit.records.record import read_json
 from benchkit.records.run_folder import hashes
 from procedures import commands
 from procedures.cli import app
+from procedures.inputs import MEASURED as MEASURED_TOPOLOGIES
 from procedures.inputs import read_board
 from tests.benchkit.nine_stages import PARTS, STAGES, text
 from tests.simulated_bench import GOOD, measure, workshop
 
-MEASURED = "what is measured so far is series-diode, pmos-pass, pmos-pass-zener guarding a load"
+MEASURED = (
+    "what is measured so far is series-diode, pmos-pass, pmos-pass-zener, nmos-pass, "
+    "nmos-pass-zener guarding a load"
+)
 LEAD = 'kind = "lead"\nvalue_ohm = 0.01\n'
 LIMITS = """
 [soak]
@@ -57,7 +61,8 @@ def refused(folder: Path, stage: str, monkeypatch: pytest.MonkeyPatch) -> str:
 
 
 @pytest.mark.parametrize(
-    ("topology", "guards"), [("pmos-sensed", "supply"), ("nmos-pass", "load"), ("clamp", "supply")]
+    ("topology", "guards"),
+    [("pmos-sensed", "supply"), ("nmos-sensed", "supply"), ("clamp", "supply")],
 )
 def test_a_topology_that_is_not_measured_yet_is_refused(
     topology: str, guards: str, folder: Path, monkeypatch: pytest.MonkeyPatch
@@ -94,7 +99,7 @@ def test_a_part_whose_drop_would_be_taken_for_the_main_part_s_is_refused(
     )
 
 
-@pytest.mark.parametrize("topology", ["series-diode", "pmos-pass", "pmos-pass-zener"])
+@pytest.mark.parametrize("topology", MEASURED_TOPOLOGIES)
 def test_what_is_measured_is_planned(topology: str, folder: Path) -> None:
     path = folder / "mine.toml"
     path.write_text(text(topology), encoding="utf-8")
@@ -102,13 +107,15 @@ def test_what_is_measured_is_planned(topology: str, folder: Path) -> None:
     assert topology in STAGES
 
 
-def test_a_switch_with_a_limited_gate_is_measured_and_passes(folder: Path) -> None:
-    (folder / "mine.toml").write_text(text("pmos-pass-zener") + LIMITS, encoding="utf-8")
+@pytest.mark.parametrize("topology", ["pmos-pass-zener", "nmos-pass", "nmos-pass-zener"])
+def test_a_switch_in_either_lead_is_measured_and_passes(topology: str, folder: Path) -> None:
+    (folder / "mine.toml").write_text(text(topology) + LIMITS, encoding="utf-8")
     done, _ = measure(folder, stage="mine.toml")
     assert done.error is None
     result = done.evaluation.result
     assert result.verdict == "pass", result.why
     judged = [row.name for row in result.measurands if row.verdict]
     assert judged == ["drop", "drop", "warm_drop", "case_hottest", "junction_margin"]
-    assert {row["part"] for row in result.ratings} >= {"Q1", "R1", "Z1"}
+    fitted = {"Q1", "R1", "Z1"} if topology.endswith("zener") else {"Q1", "R1"}
+    assert {row["part"] for row in result.ratings} >= fitted
     assert read_json(done.folder / "manifest.json")["sha256"] == hashes(done.folder)
