@@ -7,9 +7,12 @@ from dataclasses import asdict, dataclass
 
 import numpy as np
 
-from benchkit.evaluation.findings import remarks_of
+from benchkit.evaluation.findings import gravest_first, remarks_of
 from benchkit.evaluation.hottest import Hottest, hottest
 from benchkit.evaluation.promised import Promised, promised
+from benchkit.evaluation.reverse import Trial, read_trial
+from benchkit.evaluation.reverse_band import ReverseBand, reverse_bands
+from benchkit.evaluation.reverse_judged import reverse_remarks, reverse_rows, strongest, untested
 from benchkit.evaluation.soak import Soak, read_soak
 from benchkit.evaluation.sweep import DropAt, Sweep, drop_at, junctions_C, read_sweep
 from benchkit.evaluation.verdict import Promise, judged, missing, summary
@@ -28,6 +31,9 @@ class Evaluation:
     drops: list[DropAt]
     soak: Soak | None
     hottest: Hottest | None
+    trial: Trial | None = None
+    bands: tuple[ReverseBand, ...] = ()
+    """What the datasheets promise at each rung of the trial, and at its last state."""
 
 
 def evaluate(record: Record, serial: str) -> Evaluation:
@@ -40,11 +46,20 @@ def evaluate(record: Record, serial: str) -> Evaluation:
     soak = read_soak(record, sweep)
     usable = soak is not None and soak.heating.usable
     extreme = hottest(stage, soak, drops[-1]) if soak is not None and usable and drops else None
+    trial = read_trial(record, stage, sweep)
+    bands = _bands(stage, trial)
+    last = strongest(bands, trial)
     measurands = [
         *_drops(promise, drops),
         *_thermal(promise, soak if usable else None, extreme),
+        *reverse_rows(stage, trial, last),
     ]
-    remarks = remarks_of(record, stage, promise.scenarios, sweep, drops, soak, extreme)
+    remarks = gravest_first(
+        [
+            *remarks_of(record, stage, promise.scenarios, sweep, drops, soak, extreme),
+            *reverse_remarks(record, stage, trial, last),
+        ]
+    )
     verdict, why = summary(measurands, remarks, stopped)
     result = Result(
         serial,
@@ -54,10 +69,17 @@ def evaluate(record: Record, serial: str) -> Evaluation:
         why,
         measurands,
         [remark.text for remark in remarks],
-        _not_tested(record),
+        _not_tested(record, trial),
         [{"scenario": s.name, **asdict(r)} for s in promise.scenarios for r in s.ratings],
     )
-    return Evaluation(result, stage, sweep, drops, soak, extreme)
+    return Evaluation(result, stage, sweep, drops, soak, extreme, trial, bands)
+
+
+def _bands(stage: Stage, trial: Trial | None) -> tuple[ReverseBand, ...]:
+    if trial is None:
+        return ()
+    last = [trial.last] if trial.last is not None else []
+    return tuple(reverse_bands(stage, [*trial.rungs, *last]))
 
 
 def _drops(promise: Promised, drops: list[DropAt]) -> Iterator[Measurand]:
@@ -178,10 +200,10 @@ def _thermal(promise: Promised, soak: Soak | None, extreme: Hottest | None) -> I
     )
 
 
-def _not_tested(record: Record) -> list[str]:
+def _not_tested(record: Record, trial: Trial | None) -> list[str]:
     """What a signature on this run does not cover."""
-    untested = [
-        "reversed polarity: no voltage was applied the wrong way round",
+    told = [
+        *untested(trial, record.stage.reverse.current_limit_A if record.stage.reverse else 0.0),
         "back-feed from the guarded side, and a battery at the exposed port",
         f"supply voltages other than {record.stage.stage.supply_nominal_V:g} V (what is said of "
         "others rests on the datasheets)",
@@ -189,6 +211,6 @@ def _not_tested(record: Record) -> list[str]:
         "are those of a part near room temperature",
     ]
     if record.stage.soak is None:
-        untested.append("heat: the stage file has no [soak]")
-    untested += record.said("soak-skipped")
-    return untested
+        told.append("heat: the stage file has no [soak]")
+    told += record.said("soak-skipped")
+    return told

@@ -51,7 +51,7 @@ def remarks_of(
     soak: Soak | None,
     extreme: Hottest | None,
 ) -> list[Remark]:
-    """What a run's data mean, the gravest first; empty when there is nothing to remark."""
+    """What the data of sweep and soak mean; empty when there is nothing to remark."""
     kinds = ("found-on", "sweep-cut", "soak-skipped")
     told = [Remark("note", text) for kind in kinds for text in record.said(kind)]
     told += _of_ratings(scenarios, measured_heat=extreme is not None)
@@ -75,8 +75,13 @@ def remarks_of(
             told.append(
                 Remark("fault", "at the highest current and ambient this board would run away")
             )
+    return told
+
+
+def gravest_first(remarks: Sequence[Remark]) -> list[Remark]:
+    """Faults, then doubts, then notes, each in the order given."""
     order: list[Weight] = ["fault", "doubt", "note"]
-    return sorted(told, key=lambda remark: order.index(remark.weight))
+    return sorted(remarks, key=lambda remark: order.index(remark.weight))
 
 
 def _of_ratings(scenarios: Sequence[Scenario], *, measured_heat: bool) -> list[Remark]:

@@ -96,7 +96,7 @@ def read_sweep(record: Record) -> Sweep | None:
     shunt = record.bench.points["exposed_current"].shunt_ohm or 1.0
     current_zero = read_zero(record, "exposed_current", ranges[1], 1 / shunt)
     lead = record.bench.points["drop"].lead_ohm
-    warm = _temperatures(record, "case")
+    warm = temperatures(record, "case")
     rows = []
     for step, (drops, currents) in zip(steps, taken, strict=True):
         _, _, way, target = step.split("/")
@@ -107,7 +107,7 @@ def read_sweep(record: Record) -> Sweep | None:
         at_s = float(np.mean([r.time_s for r in drops]))
         rows.append((float(target), way == "up", amps, volts, float(np.interp(at_s, *warm))))
     target_A, rising, current_A, drop_V, case_C = (np.array(c) for c in zip(*rows, strict=True))
-    ambient = _temperatures(record, "ambient")[1]
+    ambient = temperatures(record, "ambient")[1]
     return Sweep(
         target_A,
         rising.astype(bool),
@@ -249,7 +249,8 @@ def _mean(readings: list[Reading]) -> float:
     return float(np.mean([r.value for r in readings]))
 
 
-def _temperatures(record: Record, point: str) -> tuple[Floats, Floats]:
+def temperatures(record: Record, point: str) -> tuple[Floats, Floats]:
+    """Times and values of a whole run, (n,) each; one nan where nothing was read."""
     usable = [r for _, r in record.readings if r.point == point and r.usable]
     if not usable:
         return np.array([0.0]), np.array([math.nan])

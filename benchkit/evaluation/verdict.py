@@ -10,6 +10,12 @@ from benchkit.evaluation.findings import Remark
 from benchkit.metrology import Budget, Limit, Rule, judge, normalised_error, overall
 from benchkit.records.result import BudgetLine, Measurand, Verdict
 
+SPELLED = {
+    "reverse_leakage": "leakage in reverse",
+    "reverse_guarded": "the guarded port below zero",
+}
+"""Measurands whose name is not yet what they are called in a sentence."""
+
 
 @dataclass(frozen=True)
 class Promise:
@@ -116,13 +122,14 @@ def summary(
 def _reason(m: Measurand) -> str:
     if m.measured is None:
         why = m.remark or "no figure could be given"
-        return f"{m.name.replace('_', ' ')} at {m.condition} is undecided: {why}"
+        return f"{_name(m)} at {m.condition} is undecided: {why}"
     side = "misses" if m.verdict == "fail" else "is too close to"
     return f"{_spell(m)}: it {side} its limit"
 
 
 def _spell(m: Measurand) -> str:
-    low, high = m.limit["low"], m.limit["high"]
+    factor, unit = (1e3, "mA") if m.unit == "A" else (1.0, m.unit)
+    low, high = (None if v is None else factor * v for v in (m.limit["low"], m.limit["high"]))
     bounds = " and ".join(
         part
         for part in (
@@ -131,9 +138,12 @@ def _spell(m: Measurand) -> str:
         )
         if part
     )
-    name = m.name.replace("_", " ")
-    value, spread = rounded(m.measured, m.U)
-    return f"{name} at {m.condition}, {value} ± {spread} {m.unit} (limit {bounds} {m.unit})"
+    value, spread = rounded(*(None if v is None else factor * v for v in (m.measured, m.U)))
+    return f"{_name(m)} at {m.condition}, {value} ± {spread} {unit} (limit {bounds} {unit})"
+
+
+def _name(m: Measurand) -> str:
+    return SPELLED.get(m.name) or m.name.replace("_", " ")
 
 
 def rounded(value: float | None, U: float | None) -> tuple[str, str]:

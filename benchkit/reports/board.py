@@ -14,6 +14,7 @@ from benchkit.reports.figures import board_figure, thinned
 from benchkit.reports.front import front_page
 from benchkit.reports.law import FittedLaw, fitted_law
 from benchkit.reports.pages import render
+from benchkit.reports.reverse import reverse_section
 from benchkit.reports.words import (
     Figures,
     Strip,
@@ -33,6 +34,10 @@ NOTABLE = {
     "not-confirmed-off": "Outputs not confirmed off",
     "sweep-cut": "Sweep cut short",
     "soak-skipped": "Soak skipped",
+    "reverse-conducts": "Conducts in reverse",
+    "reverse-skipped": "Trial in reverse skipped",
+    "left-reversed": "Leads left crossed",
+    "harness": "Leads",
     "load": "Load",
 }
 ANSWERS = {
@@ -94,12 +99,16 @@ def board_report(record: Record, evaluation: Evaluation, manifest: Mapping[str, 
     overdue = [i for i in instruments if i.overdue]
     simulated = record.bench.is_simulated or manifest.get("clock") == "simulated"
     not_off = record.said("not-confirmed-off")
-    # What was not tested has its own place: not a second time among reasons and remarks.
-    why = [text for text in result.why if text not in result.not_tested]
-    told = {*why, *result.not_tested}
+    reverse = reverse_section(record, evaluation)
+    crossed = record.said("left-reversed")
+    # What was not tested and how the leads are have their own places: not a second time among
+    # reasons and remarks.
+    elsewhere = {*result.not_tested, *crossed}
+    why = [text for text in result.why if text not in elsewhere]
+    told = {*why, *elsewhere}
     front = front_page(
         result.measurands, why, [t for t in result.findings if t not in told],
-        2 * bool(not_off) + simulated + bool(overdue), result.not_tested,
+        2 * bool(not_off) + 2 * bool(crossed) + simulated + bool(overdue), result.not_tested,
     )  # fmt: skip
     return render(
         "board.j2",
@@ -113,7 +122,8 @@ def board_report(record: Record, evaluation: Evaluation, manifest: Mapping[str, 
         heating=_heating(evaluation), no_sweep=sweep is None, no_soak=soak is None,
         budgets=budget_tables(result.measurands), drop_budgets=drop_tables(result.measurands),
         instruments=instruments, overdue=overdue,
-        events=_events(record), not_off=not_off,
+        events=_events(record), not_off=not_off, crossed=crossed,
+        reverse=reverse, ladder=Markup(reverse.figure) if reverse is not None else "",
         simulated=simulated,
         conditions=_conditions(record, evaluation), versions=_versions(manifest),
         promises=evaluation.stage.notes,

@@ -12,6 +12,8 @@ PAGE_MM = 268.0
 """What A4 leaves between the margins of page.css."""
 FIXED_MM = 26.0 + 14.0 + 16.0 + 18.0
 """Head with facts, table head, its key, signatures."""
+WIDE = 38
+"""Letters that fit on a line of a condition or a remark."""
 MOST_REASONS = 5
 MOST_REMARKS = 3
 
@@ -40,7 +42,11 @@ def front_page(
     taken = FIXED_MM + max(30.0, 17.0 + 4.6 * _lines(first, 90)) + 11.0 * notes
     taken += 10.0 + 4.6 * _lines(second, 115) if second else 0.0
     taken += 13.0 + 4.6 * math.ceil(_lines(not_tested, 55) / 2 + 0.5)
-    order = sorted(range(len(rows)), key=lambda k: _weight(rows[k], k))
+    before = [
+        sum(row.name == rows[k].name and row.verdict is not None for row in rows[:k])
+        for k in range(len(rows))
+    ]
+    order = sorted(range(len(rows)), key=lambda k: _weight(rows[k], before[k], k))
     kept: list[int] = []
     groups: set[str] = set()
     for k in order:
@@ -56,20 +62,23 @@ def front_page(
     )  # fmt: skip
 
 
-def _weight(row: Measurand, place: int) -> tuple[int, int]:
-    """Missed and undecided limits first; of the drops that nothing is asked of, the largest."""
+def _weight(row: Measurand, before: int, place: int) -> tuple[int, int, int]:
+    """Missed and undecided limits first; of the limits that are met, every quantity before a
+    second row of any (``before``: how many of its name stand above it); of the drops that nothing
+    is asked of, the largest."""
     if row.verdict is not None:
-        return ("fail", "undecided", "pass").index(row.verdict), place
+        grave = ("fail", "undecided", "pass").index(row.verdict)
+        return grave, before if row.verdict == "pass" else 0, place
     if row.name != "drop":
-        return 3, place
-    return (4 if (row.en or 0.0) > 1 else 5), -place
+        return 3, 0, place
+    return (4 if (row.en or 0.0) > 1 else 5), 0, -place
 
 
 def _height(row: Measurand) -> float:
     certain = row.conformity is None or not 0.001 <= row.conformity <= 0.999
-    lines = 1 if len(row.condition) < 30 else 2
+    lines = 1 if len(row.condition) < WIDE else 2
     if row.remark and row.measured is not None:
-        lines += 1 if len(row.remark) < 30 else 2
+        lines += 1 if len(row.remark) < WIDE else 2
     return 2.2 + 3.7 * max(lines, 1 if certain else 2)
 
 

@@ -23,7 +23,10 @@ from benchkit.reports.quantities import (
 )
 from benchkit.reports.words import NONE, degrees, named, rescaled, unit_of
 
-KEY = ("warm_drop", "case_hottest", "junction_margin", "thermal_resistance")
+KEY = (
+    "warm_drop", "case_hottest", "junction_margin", "thermal_resistance", "reverse_leakage",
+    "reverse_guarded",
+)  # fmt: skip
 """Drawn board by board even where nothing is asked of them."""
 COLUMNS = 5
 """Key figures beside each serial."""
@@ -110,6 +113,7 @@ def lot_report(
         keys=[(named(q.name), degrees(q.condition), unit_of(q.unit)) for q in keys],
         boards=boards,
         not_tested=_not_tested(results),
+        reversed=any(evaluation.trial is not None for _, evaluation, _ in runs),
     )  # fmt: skip
 
 

@@ -17,15 +17,20 @@ NAMES = {
     "thermal_resistance": "Thermal resistance",
     "case_hottest": "Hottest case",
     "junction_margin": "Junction margin",
+    "reverse_leakage": "Leakage in reverse",
+    "reverse_guarded": "Guarded port below zero, in reverse",
+    "drop_change": "Change of the drop by the trial in reverse",
 }
 UNITS = {"C": "°C"}
 VERDICTS = {"pass": "PASS", "fail": "FAIL", "undecided": "UNDECIDED"}
 NONE = "–"
+AS_MEASURED = {"reverse_guarded"}
+"""Quantities that are shown in the unit of what was measured, however little is promised."""
 SMALL_V = 0.2
 """Voltages of a quantity that stays below this are shown in millivolts."""
 
 _DEGREES = re.compile(r"(?<=\d) C(?![\w/])")
-_UNITS = re.compile(r"(?<=\d) (?=(?:[AVWKs]|mV|K/W|°C|%)(?!\w))")
+_UNITS = re.compile(r"(?<=\d) (?=(?:[AVWKs]|mV|[mµn]A|K/W|°C|%)(?!\w))")
 
 
 def named(name: str) -> str:
@@ -102,6 +107,8 @@ def _to(value: float, places: int | None) -> str:
     if places is None or value == 0 or not math.isfinite(value):
         return f"{value:.3g}"
     most = 2 - math.floor(math.log10(abs(value)))
+    if round(value, places) == 0:
+        return plain(value, 2)
     return f"{value:.{max(0, min(places, most))}f}"
 
 
@@ -110,6 +117,8 @@ def place_in_band(row: Measurand) -> str:
     if row.predicted is None or row.measured is None:
         return ""
     low, high = row.predicted["low"], row.predicted["high"]
+    if _unseen(row):
+        return "not seen"
     if row.measured < low:
         return "below"
     if row.measured > high:
@@ -117,6 +126,15 @@ def place_in_band(row: Measurand) -> str:
     if high <= low:
         return "within"
     return f"{100 * (row.measured - low) / (high - low):.0f} %"
+
+
+def _unseen(row: Measurand) -> bool:
+    """A figure that is not told from zero, and was promised to be too small to be."""
+    return (
+        row.unit in ("A", "mA", "µA", "nA") and row.measured is not None and row.U is not None
+        and row.predicted is not None and abs(row.measured) <= row.U
+        and row.predicted["high"] <= row.U
+    )  # fmt: skip
 
 
 @dataclass(frozen=True)
@@ -139,6 +157,8 @@ def strip_of(row: Measurand) -> Strip | None:
     is left out, a value further off is marked at the end.
     """
     if row.measured is None or (row.predicted is None and not any(_limits(row))):
+        return None
+    if _unseen(row):
         return None
     spread = row.U or 0.0
     marks = [row.measured - spread, row.measured + spread, *_limits(row)]
@@ -176,17 +196,36 @@ def plain(value: float, digits: int = 3) -> str:
 
 
 def shown_in(unit: str, rows: Sequence[Measurand | None]) -> tuple[float, str]:
-    """Factor and unit in which figures of one quantity are shown: small voltages in mV.
+    """Factor and unit in which figures of one quantity are shown: small voltages in mV, and
+    currents in what their values and uncertainties are spelled in without many zeros.
 
-    Chosen by what is promised where there is a promise, so that a board whose drop is far from
-    it is shown in the same unit as its neighbours.
+    Voltages: chosen by what is promised where there is a promise, so that a board whose drop is
+    far from it is shown in the same unit as its neighbours.
     """
+    if unit == "A":
+        return _amperes(rows)
     sizes = [
-        abs(row.measured if row.predicted is None else row.predicted["nominal"])
+        abs(
+            row.measured
+            if row.predicted is None or row.name in AS_MEASURED
+            else row.predicted["nominal"]
+        )
         for row in rows
         if row is not None and row.measured is not None
     ]
     return (1e3, "mV") if unit == "V" and sizes and max(sizes) < SMALL_V else (1.0, unit)
+
+
+def _amperes(rows: Sequence[Measurand | None]) -> tuple[float, str]:
+    most = max(
+        (max(abs(row.measured), row.U or 0.0)
+         for row in rows if row is not None and row.measured is not None),
+        default=1.0,
+    )  # fmt: skip
+    for factor, unit in ((1.0, "A"), (1e3, "mA"), (1e6, "µA")):
+        if factor * most >= 1.0:
+            return factor, unit
+    return 1e9, "nA"
 
 
 def rescaled(row: Measurand, factor: float, unit: str) -> Measurand:

@@ -38,7 +38,7 @@ def complaint(text: str, *changes: tuple[str, str]) -> str:
         (
             ("[heat]", "[bonus]\nx = 1\n[heat]"),
             "bonus is not a key here; the keys here are battery, equipment, heat, limits, network, "
-            "parts, soak, source, stage, sweep",
+            "parts, reverse, soak, source, stage, sweep",
         ),
         # wrong units: a key with another unit is an unknown key
         (

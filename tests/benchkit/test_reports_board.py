@@ -26,7 +26,16 @@ from benchkit.reports.words import (
     shown_in,
     strip_of,
 )
-from tests.benchkit.test_reports_material import BENCH, CHANNEL, JUNCTION, MANIFEST, Board, run
+from tests.benchkit.test_reports_material import (
+    BENCH,
+    CHANNEL,
+    JUNCTION,
+    MANIFEST,
+    REVERSED,
+    Board,
+    Reversal,
+    run,
+)
 
 SECTIONS = ("front", "curves", "budgets", "run", "events", "cautions")
 Made = tuple[Record, Evaluation]
@@ -200,6 +209,63 @@ def test_a_skipped_soak_is_told_under_what_was_not_tested_and_nowhere_else_in_fr
     before = html[: html.index('id="events"')]
     assert before.count("so the soak was left out") == 1
     assert before.index("What was not tested") < before.index("so the soak was left out")
+
+
+def test_a_trial_in_reverse_has_its_section(tmp_path: Path) -> None:
+    record, evaluation = run(tmp_path / "run", Board(stage=REVERSED, reversal=Reversal()))
+    html = board_report(record, evaluation, MANIFEST)
+    front, rest = html[: html.index('id="curves"')], html[html.index('id="reverse"') :]
+    section = rest[: rest.index("</section>")]
+    assert "Leakage in reverse" in front
+    wanted = (
+        "Wrong way round", "raised to 5, 10 and 15\u00a0V behind a current limit of 0.1\u00a0A, "
+        "and stayed at 15\u00a0V for 6\u00a0s", "<svg role", "15.00 V, after 6 s",
+        "Forward drop before and after, leads put right", "reversed-source", "Caution.",
+    )  # fmt: skip
+    places = [section.find(text) for text in wanted]
+    assert -1 not in places
+    assert places == sorted(places)
+    last = section[section.index("15.00 V, after 6 s") :]
+    assert "2.97 ± 0.15 mV" in last[: last.index("</tr>")]
+    assert board_report(record, evaluation, MANIFEST) == html
+
+
+def test_a_run_without_a_trial_does_not_speak_of_one(good: Made) -> None:
+    html = board_report(*good, MANIFEST)
+    assert 'id="reverse"' not in html
+    assert "Wrong way round" not in html
+    assert "forward drop and heat, one board" in html
+
+
+def test_leads_left_crossed_stand_first_and_once(tmp_path: Path) -> None:
+    text = "the leads <are> still crossed"
+    board = Board(
+        stage=REVERSED, reversal=Reversal(rungs=(), dwell=0, currents=()),
+        events=(("reverse-conducts", "at 1 V it <conducts>"), ("left-reversed", text)),
+    )  # fmt: skip
+    html = board_report(*run(tmp_path / "run", board), MANIFEST)
+    before = html[html.index("<body>") : html.index('id="events"')]
+    assert before.index("leads were left crossed") < before.index("Can this board be signed off?")
+    assert before.count("&lt;are&gt; still crossed") == 1
+    assert "At 1\u00a0V it &lt;conducts&gt;" in before[before.index("Wrong way round") :]
+
+
+def test_what_cannot_be_seen_is_not_called_above_the_band() -> None:
+    band = {"nominal": 15e-9, "low": 1.2e-9, "high": 190e-9}
+    faint = replace(ROW, unit="A", predicted=band, measured=80e-6, U=213e-6)
+    shown = rescaled(faint, *shown_in("A", [faint]))
+    assert shown.unit == "µA"
+    assert figures_of(shown).band == "0.0012 to 0.19"
+    assert place_in_band(shown) == "not seen"
+    assert strip_of(shown) is None
+    assert place_in_band(replace(shown, measured=300.0)) == "above"
+
+
+def test_the_front_page_has_a_row_of_every_quantity_before_a_second_of_any() -> None:
+    rows = [replace(ROW, condition=f"{k} A, 12 V supply") for k in range(60)]
+    rows += [replace(ROW, name="reverse_leakage", unit="A")]
+    front = front_page(rows, ["why"], [], 0, ["untested"])
+    assert {row.name for row in front.rows} == {"drop", "reverse_leakage"}
 
 
 def test_small_drops_are_shown_in_millivolts_whatever_the_board_itself_does() -> None:

@@ -12,7 +12,7 @@ from benchkit.evaluation.evaluate import Evaluation
 from benchkit.records.record import Record
 from benchkit.reports.lot import lot_report
 from benchkit.reports.quantities import line_of, quantities_of, remarks_on
-from tests.benchkit.test_reports_material import Board, like, run
+from tests.benchkit.test_reports_material import REVERSED, Board, Reversal, like, run
 
 Runs = list[tuple[Record, Evaluation, str]]
 
@@ -223,3 +223,23 @@ def test_a_steady_drift_and_too_few_boards_are_said_in_words(
     told = remarks_on(quantities_of([e.result.measurands for e in drifting]))
     assert any("suspect a bench that drifts" in text for text in told)
     assert any("fewer than ten boards" in text for text in told)
+
+
+def test_what_was_tried_in_reverse_is_a_quantity_of_the_lot(
+    tmp_path_factory: pytest.TempPathFactory,
+) -> None:
+    folder = tmp_path_factory.mktemp("reversed")
+    runs = []
+    for number in range(3):
+        board = Board(stage=REVERSED, reversal=Reversal(), seed=number + 1)
+        runs.append((*run(folder / str(number), board, f"B-{number}"), f"b/{number}.html"))
+    found = quantities_of([e.result.measurands for _, e, _ in runs])
+    tried = [(q.name, q.condition, q.statistics.n) for q in found[-5:]]
+    assert tried[:2] == [
+        ("reverse_leakage", "15 V reversed, after 6 s", 3),
+        ("reverse_guarded", "15 V reversed, after 6 s", 3),
+    ]
+    assert {(name, n) for name, _, n in tried[2:]} == {("drop_change", 3)}
+    html = lot_report("Tide gauges", runs, [])
+    assert "forward drop, heat and reversed supply, one lot" in html
+    assert "Leakage in reverse, 15\u00a0V reversed, after 6\u00a0s" in html

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import csv
 import json
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -15,6 +15,7 @@ import numpy as np
 
 from benchkit.evaluation.evaluate import Evaluation, evaluate
 from benchkit.files import StageFile, load
+from benchkit.harness import REVERSED as REVERSED_HARNESS
 from benchkit.prediction.forward import forward
 from benchkit.records.record import Record, read_record
 from benchkit.records.run_folder import COLUMNS
@@ -47,6 +48,7 @@ calibration_due = 2026-01-31
 voltage = [
   { range_V = 0.1, reading_percent = 0.005, range_percent = 0.0035 },
   { range_V = 1.0, reading_percent = 0.004, range_percent = 0.0007 },
+  { range_V = 100.0, reading_percent = 0.0045, range_percent = 0.0006 },
 ]
 [instruments.thermometer]
 kind = "thermometer"
@@ -149,6 +151,16 @@ drop = [{ current_A = 3.0, max_V = 0.46 }]
 case_max_C = 110.0
 """
 
+REVERSED = CHANNEL.replace(
+    "[limits]\n",
+    "[reverse]\nsteps = 3\ndwell_s = 6.0\n[limits]\n"
+    "leakage_max_A = 1e-3\nguarded_reverse_max_V = 0.5\n",
+).replace(
+    "[parts.Q1]\n",
+    "[parts.Q1]\nleakage = [{ reverse_V = 24.0, typ_A = 20e-9, max_A = 1e-6 }]\n",
+)
+"""The channel's stage with a trial in reverse: 5, 10 and 15 V, and 15 V for 6 s."""
+
 MANIFEST: Mapping[str, object] = {
     "schema": 1,
     "status": "finished",
@@ -172,6 +184,21 @@ MANIFEST: Mapping[str, object] = {
 
 
 @dataclass(frozen=True)
+class Reversal:
+    """What is to be recorded of a trial in reverse. series_ohm: from the exposed to the guarded
+    port, which has 200 kilohms across it. across_ohm: across the exposed port."""
+
+    series_ohm: float = 1e9
+    across_ohm: float = 1e12
+    rungs: tuple[float, ...] = (5.0, 10.0, 15.0)
+    dwell: int = 6
+    zero: bool = True
+    after: float = 1.0
+    """Drop after the trial, as a share of the one before."""
+    currents: tuple[float, ...] = (0.1, 3.0, 5.0)
+
+
+@dataclass(frozen=True)
 class Board:
     """What is to be recorded: a board's law is the sheet's typical one, times ``scale``."""
 
@@ -185,6 +212,9 @@ class Board:
     seed: int = 1
     bench: str = BENCH
     events: tuple[tuple[str, str], ...] = ()
+    reversal: Reversal | None = None
+    trip: str = ""
+    """What the guard says at the last rung."""
 
 
 class _Log:
@@ -201,6 +231,11 @@ class _Log:
         full = "0.1" if unit == "A" else self._range_V
         noisy = value + float(self._noise.normal(0.0, sigma))
         self._row(step, point, noisy, unit, full, sigma)
+
+    def level(self, step: str, point: str, value: float) -> None:
+        """A port's voltage, with an offset of the meter in it."""
+        self._row(step, point, value + 2e-4 + float(self._noise.normal(0.0, 2e-5)), "V", "100.0",
+                  1e-4)  # fmt: skip
 
     def degrees(self, step: str, point: str, value: float) -> None:
         self._row(step, point, value + float(self._noise.normal(0.0, 0.02)), "C", "200.0", 0.3)
@@ -277,11 +312,50 @@ def record(folder: Path, board: Board) -> Record:
     for _ in range(6):
         log.now += 0.5
         pair("zero/after", 0.0, 0.0)
+    if board.reversal is not None:
+        log.now += 30.0
+        _reverse(log, board.reversal, board.trip, ambient, pair)
+        for amps in board.reversal.currents:
+            log.now += 1.0
+            log.degrees(f"after/{amps!r}", "case", ambient + 0.2)
+            for _ in range(4):
+                before = drop(amps, ambient) - 0.0006 * amps
+                pair(f"after/{amps!r}", board.reversal.after * before + 0.0006 * amps, amps)
     with (folder / "readings.csv").open("w", encoding="utf-8", newline="") as out:
         csv.writer(out, lineterminator="\n").writerows([COLUMNS, *log.rows])
     lines = "".join(json.dumps(line) + "\n" for line in log.lines)
     (folder / "events.jsonl").write_text(lines, encoding="utf-8")
     return read_record(folder)
+
+
+def _reverse(
+    log: _Log, trial: Reversal, trip: str, ambient: float,
+    pair: Callable[[str, float, float], None],
+) -> None:  # fmt: skip
+    log.event("harness", REVERSED_HARNESS.sentence(), time_s=log.now)
+
+    def look(step: str, volts: float) -> None:
+        log.now += 0.5
+        amps = volts / (trial.series_ohm + 2e5)
+        pair(step, -volts, -amps - volts / trial.across_ohm)
+        log.level(step, "exposed_voltage", -volts)
+        log.level(step, "guarded_voltage", -2e5 * amps)
+        log.degrees(step, "case", ambient + 0.2)
+
+    for _ in range(8 if trial.zero else 0):
+        look("zero/reverse", 0.0)
+    look("polarity/reversed", 1.0)
+    for volts in trial.rungs:
+        log.event("step", f"reverse/{volts!r}", time_s=log.now)
+        for _ in range(4):
+            look(f"reverse/{volts!r}", volts)
+    if trip:
+        step = f"reverse/{trial.rungs[-1]!r}"
+        log.event("trip", trip, time_s=log.now, step=step)
+        log.event("stopped", f"{trip} at {log.now:.3f} s, in step {step}", time_s=log.now)
+    for _ in range(trial.dwell):
+        log.now += 0.5
+        look("reverse/dwell", trial.rungs[-1])
 
 
 def run(folder: Path, board: Board, serial: str = "TG-0007") -> tuple[Record, Evaluation]:
