@@ -12,11 +12,10 @@ from __future__ import annotations
 
 import datetime as dt
 import math
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from contextlib import AbstractContextManager, contextmanager, nullcontext
 
 from benchkit.errors import (
-    BenchkitError,
     LinkError,
     NotConfirmedOff,
     OperatorStopped,
@@ -25,15 +24,10 @@ from benchkit.errors import (
 )
 from benchkit.guard.envelope import Ceilings, Envelope
 from benchkit.guard.live import Live
-from benchkit.guard.permissives import (
-    RESIDUAL_V,
-    check_calibration,
-    check_dead,
-    check_direction,
-    check_mesh,
-    check_polarity,
-    check_sensors,
-)
+from benchkit.guard.off import doubts_of, say
+from benchkit.guard.permissives import RESIDUAL_V, check_calibration, check_dead, check_sensors
+from benchkit.guard.polarity import PROOF_A, PROOF_V, check_leads, proof
+from benchkit.guard.trips import SUPPLY_TRIPPED, Trip, above, of_supply, of_voltage
 from benchkit.guard.watch import Watch
 from benchkit.harness import DRAWING, Harness
 from benchkit.protocols import (
@@ -51,13 +45,8 @@ from benchkit.reading import Reading
 
 DISCHARGE_S = 5.0
 """How long the output is given to fall below RESIDUAL_V."""
-PROOF_V, PROOF_A = 1.0, 0.05
-"""Polarity is proved at this voltage and current limit before anything larger."""
 LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
 """How far a read-back of a protection level may be from what was asked."""
-APART_V, APART_SHARE = 0.5, 0.05
-"""How far the supply's own voltage may be from the meter's at the exposed port: leads drop some."""
-SUPPLY_TRIPPED = "the supply's own protection"
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
 
@@ -235,29 +224,16 @@ class Guard:
         the current could not show its direction, and polarity stays unproved.
         """
         crossed = self._harness.crossed
-        envelope = Envelope(
-            "polarity",
-            PROOF_V,
-            PROOF_A,
-            PROOF_V * 1.1 + 0.5,
-            PROOF_A,
-            self.ceilings.case_max_C,
-            1.0,
-            30.0,
-            may_limit=crossed,
-        )
+        envelope = proof(self.ceilings.case_max_C, crossed=crossed)
         self.step("polarity/reversed" if crossed else "polarity")
         blocks, proved = True, True
         try:
             with self.energised(envelope) as live:
                 live.wait(0.05)
-                exposed = self._usable("exposed_voltage")
-                if crossed and self.__supply.state().constant_current:
-                    check_direction(self._usable("exposed_current"), PROOF_A, self._harness.sign)
-                    blocks = False
-                else:
-                    check_polarity(exposed, PROOF_V, self._harness.sign)
-                check_mesh(exposed, self._usable("guarded_voltage"), self._usable("drop"))
+                # A stage that conducts makes the supply limit or trip only by now.
+                live.look()
+                limited = crossed and self.__supply.state().constant_current
+                blocks = check_leads(self._usable, self._harness.sign, limited=limited)
         except Tripped as trip:
             if not crossed or SUPPLY_TRIPPED not in str(trip):
                 raise
@@ -316,7 +292,7 @@ class Guard:
             self.__supply.enable()
             yield live
         except BaseException as error:
-            self.make_safe(_say(error), error)
+            self.make_safe(say(error), error)
             raise
         self.make_safe(f"end of {envelope.name}")
 
@@ -358,27 +334,15 @@ class Guard:
         now = self.now()
         self._keep(Reading(now, "supply_voltage", state.voltage_V, "V", 0.0, 0.0))
         self._keep(Reading(now, "supply_current", state.current_A, "A", 0.0, 0.0))
-        if state.tripped:
-            self._trip(SUPPLY_TRIPPED, "has tripped", now)
-        if not state.output_on:
-            self._trip("the supply's output", "went off by itself", now)
-        if state.constant_current and not envelope.may_limit:
-            self._trip(
-                "the supply",
-                f"limits its current at {state.current_A:.3g} A, which the step does not expect",
-                now,
-            )
-        self._compare("supply_voltage", abs(state.voltage_V), envelope.over_voltage_V, "V", now)
-        self._compare("supply_current", abs(state.current_A), envelope.over_current_A, "A", now)
+        self._trip_on(of_supply(envelope, state), now)
         case = self._read("case", now, quick=True)
         if not case.usable:
             self._trip("case", f"gives no usable reading ({case.status})", now)
-        self._compare("case", case.value, envelope.case_max_C, "C", now)
-        for what, value, threshold, unit in self._watch.trips(envelope, state, case.value, now):
-            self._compare(what, value, threshold, unit, now)
+        self._trip_on(above("case", case.value, envelope.case_max_C, "C"), now)
+        self._trip_on(self._watch.trips(envelope, state, case.value, now), now)
         if envelope.voltage_V > PROOF_V:
             self._look_at_a_voltage(envelope, state, now)
-        self._compare("time", now - began_s, envelope.longest_s, "s", now)
+        self._trip_on(above("time", now - began_s, envelope.longest_s, "s"), now)
         return now
 
     def _look_at_a_voltage(self, envelope: Envelope, state: SupplyState, now: float) -> None:
@@ -389,24 +353,18 @@ class Guard:
         reading = self._read(point, now, quick=True)
         if not reading.usable:
             self._trip(point, f"gives no usable reading ({reading.status})", now)
-        if point == "guarded_voltage":
-            low, least = reading.value, envelope.guarded_min_V
-            if not low >= least:
-                self._trip(point, f"is {low:.4g} V, below {least:.4g} V", now)
-        elif not state.constant_current:
-            apart = abs(self._harness.sign * reading.value - state.voltage_V)
-            most = APART_V + APART_SHARE * envelope.voltage_V
-            self._compare("supply_voltage against exposed_voltage", apart, most, "V", now)
+        self._trip_on(of_voltage(envelope, state, reading, self._harness.sign), now)
 
     def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
         """Trip on the stage's own loss."""
         loss = drop_V * current_A
         if not loss <= envelope.loss_max_W:
-            self._compare("loss", loss, envelope.loss_max_W, "W", self.now())
+            self._trip_on(above("loss", loss, envelope.loss_max_W, "W"), self.now())
 
-    def _compare(self, what: str, value: float, threshold: float, unit: str, now: float) -> None:
-        if not value <= threshold:
-            self._trip(what, f"is {value:.4g} {unit}, above {threshold:.4g} {unit}", now)
+    def _trip_on(self, found: Iterable[Trip], now: float) -> None:
+        """Trip on the first of what was found, if anything was."""
+        for what, text in found:
+            self._trip(what, text, now)
 
     def _trip(self, what: str, text: str, now: float) -> None:
         self._journal.event("trip", f"{what} {text}", time_s=now, step=self._step)
@@ -429,13 +387,13 @@ class Guard:
         with self._shield():
             self._off, self._live = False, None
             doubts = [
-                *_doubts(f"{self.__supply.role}'s read-back", self.__supply.disable),
-                *_doubts("the meter", self._discharged),
+                *doubts_of(f"{self.__supply.role}'s read-back", self.__supply.disable),
+                *doubts_of("the meter", self._discharged),
             ]
-            for doubt in _doubts("could not be released", self.__load.release):
+            for doubt in doubts_of("could not be released", self.__load.release):
                 self._note("load", doubt)
             if error is not None:
-                self._note("stopped", _say(error), error=type(error).__name__)
+                self._note("stopped", say(error), error=type(error).__name__)
             if doubts:
                 self._note("not-confirmed-off", "; ".join(doubts))
                 raise NotConfirmedOff(
@@ -480,18 +438,3 @@ class Guard:
                 value = f"{reading.value:.3g} V" if reading.usable else reading.status
                 return f"exposed_voltage is still {value} {DISCHARGE_S:g} s after switching off"
             self._clock.sleep(0.02)
-
-
-def _doubts(what: str, confirm: Callable[[], str | None]) -> list[str]:
-    """Nothing when ``confirm`` does, else a sentence: whatever it raises confirms nothing."""
-    try:
-        doubt = confirm()
-    except Exception as fault:  # noqa: BLE001  see above
-        doubt = _say(fault)
-    return [] if doubt is None else [f"{what}: {doubt}"]
-
-
-def _say(error: BaseException) -> str:
-    if isinstance(error, (BenchkitError, KeyboardInterrupt)) and str(error):
-        return str(error)
-    return f"{type(error).__name__}: {error}".rstrip(": ")

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator
 
 from benchkit.guard.envelope import Envelope
+from benchkit.guard.trips import Trip, above
 from benchkit.protocols import SupplyState
 
 LEAST_S = 1.0
@@ -13,8 +14,6 @@ LEAST_S = 1.0
 FROZEN_LOOKS, FROZEN_S, FROZEN_W = 60, 300.0, 1.0
 """A sensor that reads the very same through so many looks and seconds, while the supply gives more
 than this, is taken to be dead: a live one has noise, and ambient drifts (judgement)."""
-
-Trip = tuple[str, float, float, str]
 
 
 class Watch:
@@ -32,14 +31,14 @@ class Watch:
     def trips(
         self, envelope: Envelope, state: SupplyState, case_C: float, now_s: float
     ) -> Iterator[Trip]:
-        """What is to be compared with its threshold: (name, value, threshold, unit)."""
+        """What has passed its threshold since the looks before."""
         power = abs(state.voltage_V * state.current_A)
         since = now_s - self._looked_s
         if since > 0:
             self._energy_J += since * max(power, self._power_W)
-            yield "time since the last look", since, max(self._blind_s, LEAST_S), "s"
+            yield from above("time since the last look", since, max(self._blind_s, LEAST_S), "s")
         self._looked_s, self._power_W = now_s, power
-        yield "energy", self._energy_J, envelope.energy_max_J, "J"
+        yield from above("energy", self._energy_J, envelope.energy_max_J, "J")
         yield from self._rate(envelope, case_C, now_s)
         yield from self._frozen(case_C, power, now_s)
 
@@ -58,7 +57,7 @@ class Watch:
         if now_s - then_s >= LEAST_S:
             rate = (case_C - then_C) / (now_s - then_s)
             self._from = now_s, case_C
-            yield "rise of the case", rate, envelope.case_rise_max_K_per_s, "K/s"
+            yield from above("rise of the case", rate, envelope.case_rise_max_K_per_s, "K/s")
 
     def _frozen(self, case_C: float, power_W: float, now_s: float) -> Iterator[Trip]:
         if case_C != self._same or power_W < FROZEN_W:
@@ -66,4 +65,6 @@ class Watch:
             return
         self._same_looks += 1
         if self._same_looks >= FROZEN_LOOKS:
-            yield "time the case has not moved", now_s - self._same_since_s, FROZEN_S, "s"
+            yield from above(
+                "time the case has not moved", now_s - self._same_since_s, FROZEN_S, "s"
+            )
