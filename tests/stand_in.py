@@ -54,6 +54,11 @@ class World:
         shorted = self.on and self.polarity < 0 and self.conducts_reversed
         return shorted or self.load_A > self.limit_A
 
+    def amps(self) -> float:
+        if not self.on:
+            return 0.0
+        return self.limit_A if self.limits() else self.load_A
+
     def port_V(self) -> float:
         if not self.on:
             return self.residual_V
@@ -91,6 +96,7 @@ class StandInSupply:
 
     def protect(self, protection: Protection) -> Protection:
         self._heard("protect")
+        self.world.tripped = False
         if self.world.wrong_levels:
             return Protection(60.0, protection.over_current_A)
         return protection
@@ -114,8 +120,8 @@ class StandInSupply:
         w = self.world
         if w.trips_at_limit and w.on and w.limits():
             w.on, w.tripped = False, True
-        amps = (w.limit_A if w.limits() else w.load_A) if w.on else 0.0
-        return SupplyState(w.on, abs(w.port_V()) if w.on else 0.0, amps, w.limits(), w.tripped)
+        volts = abs(w.port_V()) if w.on else 0.0
+        return SupplyState(w.on, volts, w.amps(), w.limits(), w.tripped)
 
 
 @dataclass
@@ -163,7 +169,7 @@ class StandInPoints:
             "exposed_voltage": w.port_V(),
             "guarded_voltage": w.guarded_V(),
             "drop": 0.4 if w.lead_off else w.port_V() - w.guarded_V(),
-            "exposed_current": w.polarity * (w.limit_A if w.on and w.limits() else w.load_A),
+            "exposed_current": w.polarity * w.amps(),
             "case": w.case_C,
             "ambient": w.ambient_C,
         }
@@ -233,8 +239,10 @@ def guard_of(
     shield: Callable[[], AbstractContextManager[None]] = nullcontext,
     watcher: Callable[[Reading], None] | None = None,
     waits_s: float = 0.0,
+    proved: bool = True,
 ) -> Guard:
-    return Guard(
+    """A guard on a scripted bench; ``proved``: as if its leads had been proved already."""
+    guard = Guard(
         StandInSupply(world),
         StandInLoad(world),
         StandInPoints(world),
@@ -249,3 +257,5 @@ def guard_of(
         shield=shield,
         watcher=watcher,
     )
+    guard._proved = proved
+    return guard

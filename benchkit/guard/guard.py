@@ -27,7 +27,7 @@ from benchkit.guard.live import Live
 from benchkit.guard.off import doubts_of, say
 from benchkit.guard.permissives import RESIDUAL_V, check_calibration, check_dead, check_sensors
 from benchkit.guard.polarity import PROOF_A, PROOF_V, check_leads, proof
-from benchkit.guard.trips import SUPPLY_TRIPPED, Trip, above, of_supply, of_voltage
+from benchkit.guard.trips import SUPPLY_TRIPPED, Trip, above, of_ports, of_supply, of_voltage
 from benchkit.guard.watch import Watch
 from benchkit.harness import DRAWING, Harness
 from benchkit.protocols import (
@@ -43,6 +43,9 @@ from benchkit.protocols import (
 )
 from benchkit.reading import Reading
 
+PORTS = ("exposed_voltage", "guarded_voltage")
+OFF_A = 0.01
+"""More than this through the exposed port is not an output that is off."""
 DISCHARGE_S = 5.0
 """How long the output is given to fall below RESIDUAL_V."""
 LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
@@ -83,7 +86,8 @@ class Guard:
         self._watch = Watch(0.0)
         self._live: Live | None = None
         self._wiring, self._harness = wiring, DRAWING
-        self._proved: bool | None = None
+        self._proved = self._maybe_crossed = False
+        self._begun = False
         self._off = False
         self._found_on = ""
         self._unwritten: Exception | None = None
@@ -106,7 +110,7 @@ class Guard:
         """Begin a run: time 0, a new journal, and nothing remembered of the run before."""
         self._journal, self._start_s, self._step = journal, self._clock.now(), "start"
         self._case_C = math.nan
-        self._harness, self._proved = DRAWING, False
+        self._proved, self._begun = False, True
         self._points.forget()
         if self._found_on:
             self._journal.event("found-on", self._found_on, time_s=self.now())
@@ -195,9 +199,19 @@ class Guard:
         return reading.value
 
     @property
+    def begun(self) -> bool:
+        """Whether a run was begun, so that a board may be in the fixture."""
+        return self._begun
+
+    @property
     def harness(self) -> Harness:
-        """How the leads are, as far as anyone was told."""
+        """How the leads are, as far as anyone has done it; ``prove_polarity`` shows it."""
         return self._harness
+
+    @property
+    def maybe_crossed(self) -> bool:
+        """Whether leads were to be crossed, and not proved right way round since."""
+        return self._maybe_crossed
 
     def arrange(self, harness: Harness) -> None:
         """Have the leads connected otherwise: never hot, and unproved until ``prove_polarity``.
@@ -210,10 +224,33 @@ class Guard:
             raise Refused("no lead is touched before the outputs are confirmed off")
         if self._wiring is None:
             raise Refused("this bench cannot be wired otherwise")
+        if found_on := self._switched_on():
+            self.make_safe(found_on)
+            raise Refused(f"{found_on}; no lead is touched before it is known why")
+        self.clear_for_hands()
         check_dead(self._usable)
-        self._harness, self._proved = harness, False
+        self._proved, self._maybe_crossed = False, self._maybe_crossed or harness.crossed
         self._journal.event("harness", harness.sentence(), time_s=self.now())
         self._wiring.arrange(harness)
+        self._harness = harness
+
+    def clear_for_hands(self) -> None:
+        """Both ports dead, with time to discharge; Refused when they do not get so.
+
+        Not recorded: it may belong to no run yet.
+        """
+        self._require_rest("no hand reaches in")
+
+        def read(point: str) -> float:
+            reading = self._points.read(point, self.now(), quick=True)
+            return reading.value if reading.usable else math.inf
+
+        began = self.now()
+        while self.now() - began < DISCHARGE_S:
+            if all(abs(read(point)) <= RESIDUAL_V for point in PORTS):
+                break
+            self._sleep(0.05)
+        check_dead(read)
 
     def prove_polarity(self) -> bool:
         """At a volt and milliamperes, see which way round the leads are, and that the meters agree.
@@ -223,7 +260,7 @@ class Guard:
         conducts all that the supply gives. Where the supply's over-current protection ended that,
         the current could not show its direction, and polarity stays unproved.
         """
-        crossed = self._harness.crossed
+        crossed, self._proved = self._harness.crossed, False
         envelope = proof(self.ceilings.case_max_C, crossed=crossed)
         self.step("polarity/reversed" if crossed else "polarity")
         blocks, proved = True, True
@@ -235,10 +272,13 @@ class Guard:
                 limited = crossed and self.__supply.state().constant_current
                 blocks = check_leads(self._usable, self._harness.sign, limited=limited)
         except Tripped as trip:
+            if self._maybe_crossed and not crossed:
+                raise Refused(f"{trip}: the leads may still be crossed") from trip
             if not crossed or SUPPLY_TRIPPED not in str(trip):
                 raise
             blocks = proved = False
         self._proved = proved
+        self._maybe_crossed = self._maybe_crossed and not (proved and not crossed)
         self._journal.event(
             "polarity",
             "as it should be, proved by measurement" if proved else "not proved: it conducts",
@@ -259,7 +299,7 @@ class Guard:
         self._require_rest(f"{envelope.name} cannot begin")
         envelope.check(self.ceilings)
         harmless = envelope.voltage_V <= PROOF_V and envelope.current_limit_A <= PROOF_A
-        if self._proved is False and not harmless:
+        if not self._proved and not harmless:
             raise Refused(
                 f"{envelope.name} cannot begin: which way round the leads are has not been proved"
             )
@@ -294,7 +334,13 @@ class Guard:
         except BaseException as error:
             self.make_safe(say(error), error)
             raise
-        self.make_safe(f"end of {envelope.name}")
+        try:
+            self.make_safe(f"end of {envelope.name}")
+        except BaseException as error:
+            # A signal that came just before the shield: nothing was switched off yet.
+            if self._live is not None:
+                self.make_safe(say(error), error)
+            raise
 
     @property
     def blind_s(self) -> float:
@@ -354,6 +400,12 @@ class Guard:
         if not reading.usable:
             self._trip(point, f"gives no usable reading ({reading.status})", now)
         self._trip_on(of_voltage(envelope, state, reading, self._harness.sign), now)
+
+    def check_ports(
+        self, envelope: Envelope, exposed_V: float, guarded_V: float, drop_V: float
+    ) -> None:
+        """Trip on the guarded side's sign, and where the three meter channels contradict."""
+        self._trip_on(of_ports(envelope, exposed_V, guarded_V, drop_V), self.now())
 
     def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
         """Trip on the stage's own loss."""
@@ -423,18 +475,27 @@ class Guard:
             return None
 
     def _discharged(self) -> str | None:
-        """Wait for the exposed port to fall below RESIDUAL_V; a sentence when it does not."""
+        """Wait for the exposed port to fall below RESIDUAL_V and carry nothing; a sentence when it
+        does not. A stage that conducts holds the port low: then the current tells."""
         self._points.recover("exposed_voltage")
         began = self._clock.now()
         while True:
-            reading = self._points.read("exposed_voltage", self.now(), quick=True)
-            try:
-                self._keep(reading)
-            except Exception as fault:  # noqa: BLE001  as in _note
-                self._unwritten = fault
-            if reading.usable and abs(reading.value) < RESIDUAL_V:
+            volts = self._read_off("exposed_voltage")
+            low = volts.usable and abs(volts.value) < RESIDUAL_V
+            amps = self._read_off("exposed_current") if low else None
+            if amps is not None and not (amps.usable and abs(amps.value) > max(OFF_A, 3 * amps.u)):
                 return None
             if self._clock.now() - began > DISCHARGE_S:
-                value = f"{reading.value:.3g} V" if reading.usable else reading.status
-                return f"exposed_voltage is still {value} {DISCHARGE_S:g} s after switching off"
+                reading = amps or volts
+                value = f"{reading.value:.3g} {reading.unit}" if reading.usable else reading.status
+                return f"{reading.point} is still {value} {DISCHARGE_S:g} s after switching off"
             self._clock.sleep(0.02)
+
+    def _read_off(self, point: str) -> Reading:
+        """Recorded under a step of its own: it is no measurement of what was being done."""
+        reading = self._points.read(point, self.now(), quick=True)
+        try:
+            self._journal.reading("off", reading)
+        except Exception as fault:  # noqa: BLE001  as in _note
+            self._unwritten = fault
+        return reading

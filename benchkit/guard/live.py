@@ -60,7 +60,11 @@ class Live:
         while (left := until - now) > 1e-6:
             due = self._looked_s + poll_s - now
             # A clock that was set back must not lengthen the time to the next look.
-            now = self._guard._sleep(min(left, due)) if 0 < due <= poll_s else self.look()
+            now = (
+                self._guard._sleep(min(left, due))
+                if 0 < due <= poll_s * (1 + 1e-9)
+                else self.look()
+            )
         return now
 
     def read(self, point: str) -> Reading:
@@ -69,6 +73,10 @@ class Live:
         if not reading.usable:
             self._guard._trip(point, f"gives no usable reading ({reading.status})", reading.time_s)
         return reading
+
+    def check_ports(self, exposed_V: float, guarded_V: float, drop_V: float) -> None:
+        """Trip when the guarded side is driven the wrong way, or a measuring lead came off."""
+        self._guard.check_ports(self.envelope, exposed_V, guarded_V, drop_V)
 
     def check_loss(self, drop_V: float, current_A: float) -> None:
         """Trip when the stage burns more than the envelope allows."""

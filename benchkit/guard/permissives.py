@@ -29,8 +29,8 @@ def check_calibration(due: Mapping[str, dt.date], today: dt.date) -> None:
 
 
 def check_dead(read: Read) -> None:
-    """Both ports are dead with everything off."""
-    for point in ("exposed_voltage", "guarded_voltage"):
+    """Both ports are dead with everything off, by all three meter channels."""
+    for point in ("exposed_voltage", "guarded_voltage", "drop"):
         value = read(point)
         if not abs(value) <= RESIDUAL_V:
             raise Refused(

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from benchkit.guard.envelope import Envelope
+from benchkit.guard.polarity import MESH_SHARE, MESH_V
 from benchkit.protocols import SupplyState
 from benchkit.reading import Reading
 
@@ -51,3 +52,14 @@ def of_voltage(
         apart = abs(sign * reading.value - state.voltage_V)
         most = APART_V + APART_SHARE * envelope.voltage_V
         yield from above("supply_voltage against exposed_voltage", apart, most, "V")
+
+
+def of_ports(
+    envelope: Envelope, exposed_V: float, guarded_V: float, drop_V: float
+) -> Iterator[Trip]:
+    """The guarded port's sign, and Kirchhoff's voltage law around the three meter channels."""
+    if not guarded_V >= envelope.guarded_min_V:
+        yield "guarded_voltage", f"is {guarded_V:.4g} V, below {envelope.guarded_min_V:.4g} V"
+    left = abs(exposed_V - guarded_V - drop_V)
+    most = MESH_V + MESH_SHARE * abs(exposed_V)
+    yield from above("exposed less guarded voltage less drop (a measuring lead?)", left, most, "V")

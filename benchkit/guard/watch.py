@@ -9,6 +9,8 @@ from benchkit.guard.envelope import Envelope
 from benchkit.guard.trips import Trip, above
 from benchkit.protocols import SupplyState
 
+BACK_S = 1.0
+"""A clock that goes back by more would lengthen a step."""
 LEAST_S = 1.0
 """A rate is taken over this time at least: over less, a thermometer's noise would trip."""
 FROZEN_LOOKS, FROZEN_S, FROZEN_W = 60, 300.0, 1.0
@@ -34,6 +36,8 @@ class Watch:
         """What has passed its threshold since the looks before."""
         power = abs(state.voltage_V * state.current_A)
         since = now_s - self._looked_s
+        if since < -BACK_S:
+            yield "the clock", f"went back by {-since:.3g} s"
         if since > 0:
             self._energy_J += since * max(power, self._power_W)
             yield from above("time since the last look", since, max(self._blind_s, LEAST_S), "s")

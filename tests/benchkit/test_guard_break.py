@@ -56,7 +56,7 @@ def test_a_full_disk_does_not_keep_the_output_on(kind: str) -> None:
     assert not world.on
     assert guard.confirmed_off
     assert world.said[-1] == "release"
-    assert world.points_read[-1] == "exposed_voltage"
+    assert world.points_read[-2:] == ["exposed_voltage", "exposed_current"]
 
 
 def test_a_full_disk_is_told_though_the_step_ended_well() -> None:
@@ -172,15 +172,14 @@ def test_sleeping_while_energised_is_watching() -> None:
 def test_a_clock_set_back_does_not_blind_the_guard() -> None:
     world, notes = World(time_s=1e4), Notes()
     guard = guard_of(world, notes)
-    with guard.energised(STEP) as live:
+    with (
+        pytest.raises(Tripped, match="the clock went back by 5e\\+03 s"),
+        guard.energised(STEP) as live,
+    ):
         live.wait(2.0)
         world.time_s -= 5e3
-        before = len(looks(notes))
         live.read("drop")
-        assert len(looks(notes)) == before + 1
-        world.time_s -= 1e3
-        live.wait(3.0)
-        assert len(looks(notes)) >= before + 4
+    assert not world.on
 
 
 def test_the_blind_time_is_stated_before_the_step() -> None:
@@ -199,7 +198,7 @@ def test_a_trip_of_the_supply_does_not_wait_for_the_thermometer() -> None:
         world.tripped = True
         world.points_read.clear()
         live.look()
-    assert set(world.points_read) == {"exposed_voltage"}
+    assert set(world.points_read) == {"exposed_voltage", "exposed_current"}
 
 
 # nothing out of turn
