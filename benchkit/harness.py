@@ -12,11 +12,15 @@ NAMES = {"supply": "the supply", "load": "the load", "nothing": "nothing"}
 
 @dataclass(frozen=True)
 class Harness:
-    """exposed, guarded: what is connected there. crossed: its plus is on the exposed minus."""
+    """exposed, guarded: what is connected there. crossed: its plus is on the exposed minus.
+
+    bleeder_ohm: a resistor across the guarded port, which shows a leak that an open port hides.
+    """
 
     exposed: At
     guarded: At
     crossed: bool = False
+    bleeder_ohm: float | None = None
 
     @property
     def sign(self) -> int:
@@ -42,10 +46,16 @@ class Harness:
                 f"connect plus of {NAMES[self.guarded]} to the guarded plus terminal and its minus "
                 "to the guarded minus terminal"
             )
+        if self.bleeder_ohm is not None:
+            parts.append(f"put a resistor of {self.bleeder_ohm:g} ohm across the guarded port")
         return "; ".join(parts)
 
 
 DRAWING = Harness("supply", "load")
 """Right way round: fed at the exposed port, drawn from at the guarded one."""
 REVERSED = Harness("supply", "load", crossed=True)
-"""The supply's leads crossed at the exposed port; the load stays, and draws nothing."""
+
+
+def reversed_harness(bleeder_ohm: float | None) -> Harness:
+    """The supply's leads crossed at the exposed port; the load stays, and draws nothing."""
+    return Harness("supply", "load", crossed=True, bleeder_ohm=bleeder_ohm)

@@ -6,10 +6,10 @@ import math
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 
-from benchkit.errors import Refused, Tripped
+from benchkit.errors import LinkError, OperatorStopped, Refused, Tripped
 from benchkit.files import BenchFile
 from benchkit.guard import Guard, Live
-from benchkit.harness import DRAWING, REVERSED
+from benchkit.harness import DRAWING, reversed_harness
 from procedures.plan import ZEROS, Plan
 from procedures.reverse_plan import (
     COOL_GAP_S,
@@ -47,17 +47,23 @@ def run_reverse(
     if trial is None:
         return
     _cool(guard, trial, rest_K + COOL_K, screen)
-    with _crossed(guard, screen):
-        _read_zeros(guard, trial)
-        if guard.prove_polarity():
-            _climb(guard, bench, trial, screen)
-        else:
-            guard.remark(
-                "reverse-conducts",
-                "with the leads crossed the stage conducts all that the supply gives at the volt "
-                "that proves polarity: it does not block, and no larger voltage was applied",
-            )
-    _read_after(guard, bench, plan, trial, carried_A, screen)
+    try:
+        with _crossed(guard, bench):
+            _read_zeros(guard, trial)
+            if guard.prove_polarity():
+                _climb(guard, bench, trial, screen)
+            else:
+                guard.remark(
+                    "reverse-conducts",
+                    "with the leads crossed the stage conducts all that the supply gives at the "
+                    "volt that proves polarity: it does not block, and no larger voltage was "
+                    "applied",
+                )
+        _read_after(guard, bench, plan, trial, carried_A, screen)
+    finally:
+        if guard.maybe_crossed:
+            screen.caution(LEFT)
+            guard.remark("left-reversed", LEFT)
 
 
 def _cool(guard: Guard, trial: ReversePlan, above_K: float, screen: Screen) -> None:
@@ -73,35 +79,29 @@ def _cool(guard: Guard, trial: ReversePlan, above_K: float, screen: Screen) -> N
 
 
 @contextmanager
-def _crossed(guard: Guard, screen: Screen) -> Iterator[None]:
+def _crossed(guard: Guard, bench: BenchFile) -> Iterator[None]:
     """The leads are crossed in here, and put back at the end.
 
     After a trip or a refusal too: what stopped is about the board, and the next one wants the leads
-    the right way round. After anything else nobody is asked; whenever they were not put back, that
-    is what the run says last.
+    the right way round. After anything else nobody is asked.
     """
-    left = False
     try:
         guard.step("leads crossed")
-        try:
-            guard.arrange(REVERSED)
-        finally:
-            # Also when it was declined: half of it may have been done.
-            left = guard.harness.crossed
+        guard.arrange(reversed_harness(bench.bench.bleeder_ohm))
         yield
         guard.step("leads put back")
         guard.arrange(DRAWING)
-        left = False
-    except (Tripped, Refused):
-        if left and guard.confirmed_off:
+    except (Tripped, Refused) as stopped:
+        if guard.harness.crossed and guard.confirmed_off:
             guard.step("leads put back")
-            guard.arrange(DRAWING)
-            left = False
+            try:
+                guard.arrange(DRAWING)
+                guard.prove_polarity()
+            except (OperatorStopped, Refused, Tripped, LinkError) as also:
+                # What stopped the trial is what the run is about.
+                guard.remark("not-put-back", str(also))
+                raise stopped from also
         raise
-    finally:
-        if left:
-            screen.caution(LEFT)
-            guard.remark("left-reversed", LEFT)
 
 
 def _read_zeros(guard: Guard, trial: ReversePlan) -> None:
@@ -147,6 +147,7 @@ def _dwell(guard: Guard, live: Live, seconds: float) -> None:
 def _read(live: Live) -> None:
     """One set of readings."""
     value = {point: live.read(point).value for point in POINTS}
+    live.check_ports(value["exposed_voltage"], value["guarded_voltage"], value["drop"])
     live.check_loss(value["drop"], value["exposed_current"])
 
 

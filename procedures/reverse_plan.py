@@ -14,7 +14,7 @@ from benchkit.files.bench import PointName
 from benchkit.files.stage import Reverse
 from benchkit.guard import Ceilings, Envelope
 from benchkit.guard.envelope import GUARDED_MIN_V
-from benchkit.harness import DRAWING, REVERSED
+from benchkit.harness import DRAWING, reversed_harness
 from benchkit.prediction.connections import Connection, surroundings
 from benchkit.prediction.operating_point import reached
 from benchkit.prediction.scenarios import scenario
@@ -35,6 +35,8 @@ is measured and judged, not only stopped (judgement)."""
 UNLOADED_OHM = 1e6
 """Across a guarded port from which nothing is drawn: the input of a load that is off, and the meter
 beside it (common practice, no source)."""
+SMALL_RESISTOR_W = 0.25
+"""What the commonest leaded resistor stands (common practice, no source)."""
 SMALL_SHARE, SMALL_J = 0.1, 1.0
 """A stage that blocks lets next to nothing through: a step may take this share of what the current
 limit would allow, and what a supply's read-back of no current adds up to (judgement)."""
@@ -68,11 +70,21 @@ class ReversePlan:
     rungs_s: float
     largest_A: float
     """What the current's range is chosen for: twice the limit, which takes a while to hold."""
+    bleeder_ohm: float | None = None
+    """Across the guarded port while the leads are crossed."""
 
     @property
     def full_V(self) -> float:
         """The full reverse voltage."""
         return self.rungs[-1].voltage_V
+
+    @property
+    def crossing(self) -> str:
+        """Which lead goes where, and what the resistor there has to stand."""
+        told = [reversed_harness(self.bleeder_ohm).sentence()]
+        if watts := heating(self.bleeder_ohm, self.full_V):
+            told.append(watts)
+        return ", ".join(told)
 
     def text(self) -> str:
         """For the plan."""
@@ -105,14 +117,18 @@ def plan_reverse(
     if reverse is None:
         return None
     full = working.supply_max_V if reverse.voltage_V is None else reverse.voltage_V
-    ladder = [full * n / reverse.steps for n in range(1, reverse.steps + 1)]
+    # The last as it is written: full * steps / steps may be another number.
+    ladder = [*(full * n / reverse.steps for n in range(1, reverse.steps)), full]
+    bleeder = bench.bench.bleeder_ohm
     visits_s = READINGS * sum(
         bench.points[point].aperture_nplc / bench.bench.line_frequency_Hz for point in POINTS
     )
     rung_s = bench.bench.settle_s + watched_s(bench.bench.poll_s) + visits_s
     ceilings = Ceilings.of(bench.bench)
     rungs = tuple(
-        _rung(stage, reverse, volts, sweep, rung_s, reverse.dwell if volts == full else 0.0)
+        _rung(
+            stage, reverse, volts, sweep, rung_s, reverse.dwell if volts == full else 0.0, bleeder
+        )
         for volts in ladder
     )
     for rung in rungs:
@@ -134,10 +150,21 @@ def plan_reverse(
         first=f"{ladder[0]:g}",
         limit=f"{reverse.current_limit_A:g}",
     )
+    if watts := heating(bleeder, full):
+        caution += f" The resistor across the guarded port of {bleeder:g} ohm is to be {watts}."
     return ReversePlan(
         rungs, reverse.dwell, after, drops, caution, COOL_CONSTANTS * file.heat.time_constant_s,
         len(rungs) * rung_s + reverse.dwell, 2 * reverse.current_limit_A,
+        bleeder,
     )  # fmt: skip
+
+
+def heating(bleeder_ohm: float | None, full_V: float) -> str:
+    """What the resistor has to stand where the stage does not block, if that is much; else ""."""
+    watts = full_V**2 / bleeder_ohm if bleeder_ohm is not None else 0.0
+    if watts <= SMALL_RESISTOR_W:
+        return ""
+    return f"one that stands {watts:.3g} W, which a stage that does not block puts into it"
 
 
 def steps_around(plan: ReversePlan) -> tuple[tuple[str, str, float], ...]:
@@ -148,7 +175,7 @@ def steps_around(plan: ReversePlan) -> tuple[tuple[str, str, float], ...]:
     cold = f"nothing on, until the case is within {COOL_K:g} K of where it was at rest"
     return (
         ("cool", cold, plan.cool_s),
-        ("leads crossed", f"{ports}, {REVERSED.sentence()}", 1.0),
+        ("leads crossed", f"{ports}, {plan.crossing}", 1.0),
         ("zero/reverse", "zero readings of exposed current and both ports' voltages", 1.0),
         ("polarity/reversed", f"{proof}; a stage that conducts is not asked for more", 0.5),
         ("reverse trial", plan.text(), plan.rungs_s),
@@ -165,7 +192,13 @@ def watched_s(poll_s: float) -> float:
 
 
 def _rung(
-    stage: Stage, reverse: Reverse, volts: float, sweep: Envelope, rung_s: float, dwell_s: float
+    stage: Stage,
+    reverse: Reverse,
+    volts: float,
+    sweep: Envelope,
+    rung_s: float,
+    dwell_s: float,
+    bleeder_ohm: float | None,
 ) -> Envelope:
     longest_s = 60.0 + 5 * rung_s + 2 * dwell_s
     limit = reverse.current_limit_A
@@ -180,17 +213,17 @@ def _rung(
         sweep.loss_max_W,
         longest_s,
         may_limit=False,
-        guarded_min_V=_guarded_min_V(stage, volts),
+        guarded_min_V=_guarded_min_V(stage, volts, bleeder_ohm),
         energy_max_J=SMALL_J + SMALL_SHARE * volts * limit * longest_s,
     )
 
 
-def _guarded_min_V(stage: Stage, volts: float) -> float:
+def _guarded_min_V(stage: Stage, volts: float, bleeder_ohm: float | None) -> float:
     """Where the guarded port trips: beyond its limit, and beyond what the leakage that the sheet
     allows does to a port from which nothing is drawn.
 
     The second matters for a Schottky diode: its microamperes alone take such a port down by volts,
-    and do no harm.
+    and do no harm. A resistor there keeps it where a leak can be told from it.
     """
     limit = stage.file.limits.guarded_reverse_max_V
     boards = stage.draw(2, 0, corners=True)
@@ -198,7 +231,8 @@ def _guarded_min_V(stage: Stage, volts: float) -> float:
     source = Emf(
         "exposed.source", (ports.exposed_minus, ports.exposed_plus), np.full(2, volts), 0.05
     )
-    unloaded = Resistor("guarded.load", (ports.guarded_plus, ports.guarded_minus), UNLOADED_OHM)
+    ohms = UNLOADED_OHM if bleeder_ohm is None else 1 / (1 / UNLOADED_OHM + 1 / bleeder_ohm)
+    unloaded = Resistor("guarded.load", (ports.guarded_plus, ports.guarded_minus), ohms)
     ambient = stage.file.stage.ambient_nominal_C
     point = reached(stage, boards, [Connection((source,), (unloaded,))], ambient, ambient)
     leaks = -float(point.guarded_V.min())

@@ -110,9 +110,10 @@ def _secured(guard: Guard, stopped: BaseException) -> BenchkitError:
 
 def _measure(bench: Bench, job: Job, serial: str, run: RunFolder, screen: Screen) -> None:
     guard, file = bench.guard, bench.file
-    crossed = guard.harness.crossed
+    if guard.begun:
+        guard.clear_for_hands()
     guard.begin(run)
-    if crossed:
+    if guard.harness.crossed or guard.maybe_crossed:
         guard.arrange(DRAWING)  # left so by the run before
     bench.fixture.place(serial, job.stage_path)
     guard.step("permissives")

@@ -47,19 +47,17 @@ def evaluate(record: Record, serial: str) -> Evaluation:
     usable = soak is not None and soak.heating.usable
     extreme = hottest(stage, soak, drops[-1]) if soak is not None and usable and drops else None
     trial = read_trial(record, stage, sweep)
-    bands = _bands(stage, trial)
+    bands = _bands(stage, trial, record.bench.bench.bleeder_ohm)
     last = strongest(bands, trial)
     measurands = [
         *_drops(promise, drops),
         *_thermal(promise, soak if usable else None, extreme),
         *reverse_rows(stage, trial, last),
     ]
-    remarks = gravest_first(
-        [
-            *remarks_of(record, stage, promise.scenarios, sweep, drops, soak, extreme),
-            *reverse_remarks(record, stage, trial, last),
-        ]
-    )
+    told = remarks_of(record, stage, promise.scenarios, sweep, drops, soak, extreme)
+    # A part that was not what it should be before the trial is not asked whether it changed it.
+    sound = not any(remark.weight == "fault" for remark in told)
+    remarks = gravest_first([*told, *reverse_remarks(record, stage, trial, bands, sound=sound)])
     verdict, why = summary(measurands, remarks, stopped)
     result = Result(
         serial,
@@ -75,11 +73,11 @@ def evaluate(record: Record, serial: str) -> Evaluation:
     return Evaluation(result, stage, sweep, drops, soak, extreme, trial, bands)
 
 
-def _bands(stage: Stage, trial: Trial | None) -> tuple[ReverseBand, ...]:
+def _bands(stage: Stage, trial: Trial | None, bleeder_ohm: float | None) -> tuple[ReverseBand, ...]:
     if trial is None:
         return ()
     last = [trial.last] if trial.last is not None else []
-    return tuple(reverse_bands(stage, [*trial.rungs, *last]))
+    return tuple(reverse_bands(stage, [*trial.rungs, *last], bleeder_ohm))
 
 
 def _drops(promise: Promised, drops: list[DropAt]) -> Iterator[Measurand]:

@@ -43,7 +43,9 @@ class Rung:
     """One reverse voltage that was applied.
 
     voltage_V: at the exposed port, as measured, without its sign. leakage: out of the exposed plus
-    terminal, in A. guarded: how far below zero the guarded port was, in V.
+    terminal, in A. guarded: how far below zero the guarded port was, in V. peak_leakage,
+    peak_guarded: the largest of the single readings, of a dwell those of all of it. looks: of how
+    many readings these are the largest.
     """
 
     target_V: float
@@ -51,6 +53,9 @@ class Rung:
     case_C: float
     leakage: Figure
     guarded: Figure
+    peak_leakage: Figure
+    peak_guarded: Figure
+    looks: int
 
 
 @dataclass(frozen=True)
@@ -132,14 +137,17 @@ def _dwelt_s(record: Record) -> float:
 def _rung(
     record: Record, zeros: dict[str, Zero], name: str, target_V: float, *, whole: bool
 ) -> Rung | None:
-    """None when a voltage or the current was not read; of a dwell the last readings only."""
-    taken = slice(None) if whole else slice(-TAIL, None)
-    exposed, current, guarded = (
-        _on_one_range(record.at(name, point))[taken]
-        for point in ("exposed_voltage", "exposed_current", "guarded_voltage")
-    )
-    if not exposed or not current or not guarded:
+    """None when a voltage or the current was not read; of a dwell the last readings, but for its
+    peaks."""
+    points: tuple[PointName, ...] = ("exposed_voltage", "exposed_current", "guarded_voltage")
+    read = [_on_one_range(record.at(name, point)) for point in points]
+    if not all(read):
         return None
+    exposed, current, guarded = read if whole else (readings[-TAIL:] for readings in read)
+    peak_leakage, peak_guarded = (
+        _figure(record, point, [min(readings, key=lambda r: r.value)], zeros[point])
+        for point, readings in zip(points[1:], read[1:], strict=True)
+    )
     zero = zeros["exposed_voltage"]
     voltage = zero.value * zero.used - _mean(exposed)
     case = np.interp(current[-1].time_s, *temperatures(record, "case"))
@@ -151,6 +159,7 @@ def _rung(
         target_V, voltage, float(case),
         Figure(leakage.value, Budget(c for c in parts if c.u != 0.0)),
         _figure(record, "guarded_voltage", guarded, zeros["guarded_voltage"]),
+        peak_leakage, peak_guarded, max(len(readings) for readings in read),
     )  # fmt: skip
 
 

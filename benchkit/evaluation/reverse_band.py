@@ -21,6 +21,8 @@ Floats = NDArray[np.float64]
 BLEED_OHM, BLEED_RANGE = 200e3, 10.0
 """Across a guarded port with a load that draws nothing and a voltmeter on it: nobody prints it, so
 the band spans this many times more and less (judgement)."""
+BLEEDER_SHARE = 0.05
+"""What a declared resistor may be off by: nobody measures it (judgement)."""
 
 
 @dataclass(frozen=True)
@@ -35,20 +37,30 @@ class ReverseBand:
     most_V: float
 
 
-def reverse_bands(stage: Stage, rungs: Sequence[Rung]) -> list[ReverseBand]:
-    """One a rung, at its measured voltage and case temperature."""
+def reverse_bands(
+    stage: Stage, rungs: Sequence[Rung], bleeder_ohm: float | None = None
+) -> list[ReverseBand]:
+    """One a rung, at its measured voltage and case temperature.
+
+    bleeder_ohm: the resistor that the bench file declares across the guarded port.
+    """
     if not rungs:
         return []
     count = len(rungs)
     volts = np.array([r.voltage_V for r in rungs])
     warm = np.nan_to_num(np.array([r.case_C for r in rungs]), nan=25.0)
     boards = stage.draw(SCENARIO_SAMPLES, SEED, corners=True)
-    bleed = BLEED_OHM * BLEED_RANGE ** np.random.default_rng(SEED).uniform(-1, 1, boards.size)
+    chance = np.random.default_rng(SEED)
+    bleed = BLEED_OHM * BLEED_RANGE ** chance.uniform(-1, 1, boards.size)
+    usual = BLEED_OHM
+    if bleeder_ohm is not None:
+        own = bleeder_ohm * (1 + BLEEDER_SHARE * chance.uniform(-1, 1, boards.size))
+        bleed, usual = 1 / (1 / bleed + 1 / own), 1 / (1 / BLEED_OHM + 1 / bleeder_ohm)
     many = crossed(
         stage, boards.repeated(count), np.tile(volts, boards.size), np.tile(warm, boards.size),
         np.repeat(bleed, count),
     )  # fmt: skip
-    one = crossed(stage, stage.typical().repeated(count), volts, warm, BLEED_OHM)
+    one = crossed(stage, stage.typical().repeated(count), volts, warm, usual)
     drawn_A, drawn_V = (
         np.where(many.solution.settled, -a, np.nan).reshape(boards.size, count)
         for a in (many.exposed_A, many.guarded_V)

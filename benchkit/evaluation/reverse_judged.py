@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 
@@ -20,13 +22,17 @@ FAR = 10.0
 """A leakage beyond the band by this much is no longer one of a part that is a little off."""
 PLAINLY = 1.05
 """The same of the guarded port, which no fault takes further down than a leaky sound part can."""
+BLIND = 0.5
+"""A sound part may take the guarded port to this share of the voltage applied: a bad one can hardly
+do more, and it is not the part that is seen there (judgement)."""
 FLOWS_A = 1e-3
 """Below this nothing is said to conduct."""
 UNSAID_A = 10e-6
 """What a part whose sheet gives no leakage may leak without remark (judgement)."""
 PROOF_V = 1.0
 CERTAIN = 0.999
-"""Coverage at which a change of drop is a fault: three are looked at, and chance has its share."""
+"""Coverage at which a leak or a change of drop is remarked on: several are looked at, of every board,
+and chance has its share."""
 _OF_THE_BENCH = re.compile(
     r"time |supply_voltage |the supply's output |case gives|\w+ gives no usable reading \(invalid\)"
 )
@@ -81,16 +87,26 @@ def _seen(leakage: Figure, band: ReverseBand, most: float | None) -> str:
 
 
 def reverse_remarks(
-    record: Record, stage: Stage, trial: Trial | None, band: ReverseBand | None
+    record: Record,
+    stage: Stage,
+    trial: Trial | None,
+    bands: Sequence[ReverseBand],
+    *,
+    sound: bool = True,
 ) -> Iterator[Remark]:
-    """What a trial in reverse means for the board, the gravest first among equals."""
-    told = list(_blocking(record, stage, trial, band)) if trial is not None else []
+    """What a trial in reverse means for the board, the gravest first among equals.
+
+    bands: of its rungs, and then of ``trial.last`` where there is one. sound: whether the sweep
+    found no fault.
+    """
+    told = list(_blocking(record, stage, trial, bands)) if trial is not None else []
     yield from told
     for text in record.said("left-reversed"):
         yield Remark("note", text)
     if trial is None:
         return
-    yield from _changed(trial)
+    if sound:
+        yield from _changed(trial)
     if trial.short and not told:
         yield Remark("doubt", f"the trial in reverse is not whole: {trial.short}")
     for name, zero, taken in (
@@ -107,7 +123,7 @@ def reverse_remarks(
 
 
 def _blocking(
-    record: Record, stage: Stage, trial: Trial, band: ReverseBand | None
+    record: Record, stage: Stage, trial: Trial, bands: Sequence[ReverseBand]
 ) -> Iterator[Remark]:
     for text in record.said("reverse-conducts"):
         if _clamps(stage):
@@ -125,42 +141,94 @@ def _blocking(
             yield Remark(
                 "fault", f"the stage does not block in reverse: the guard ended the trial, {text}"
             )
-    if trial.last is not None and band is not None:
-        yield from _of_leakage(stage, trial, band)
+    if bands:
+        yield from _of_leakage(stage, trial, bands, record.bench.bench.bleeder_ohm)
 
 
-def _of_leakage(stage: Stage, trial: Trial, band: ReverseBand) -> Iterator[Remark]:
-    assert trial.last is not None
-    leakage, guarded = trial.last.leakage, trial.last.guarded
-    at = f"at {trial.full_V:g} V in reverse"
-    U = leakage.budget.expanded().U
-    most = max(band.most_A, 0.0 if getattr(stage.main_part, "leakage", None) else UNSAID_A)
-    passes = f"{spoken(leakage.value, 'A')} ± {spoken(U, 'A', 2)} flow through it"
+@dataclass(frozen=True)
+class _Look:
+    """Something measured in the trial, to be held against what the sheets allow there."""
+
+    at: str
+    figure: Figure
+    U: float
+    band: ReverseBand
+
+
+def _looks(
+    trial: Trial, bands: Sequence[ReverseBand], what: Literal["leakage", "guarded"]
+) -> Iterator[_Look]:
+    """The end of the trial, then the peak of every rung and of the dwell: a part that gave way for
+    a moment did not block."""
+    rungs = [*trial.rungs, *([trial.last] if trial.last is not None else [])]
+    if trial.last is not None:
+        figure: Figure = getattr(trial.last, what)
+        at = f"at {trial.full_V:g} V in reverse"
+        yield _Look(at, figure, figure.budget.expanded(CERTAIN).U, bands[-1])
+    count = sum(rung.looks for rung in rungs)
+    for rung, band in zip(rungs, bands, strict=True):
+        peak: Figure = getattr(rung, f"peak_{what}")
+        # The largest of many readings is far out by chance.
+        U = peak.budget.expanded(1 - (1 - CERTAIN) / count).U
+        yield _Look(f"at {rung.target_V:g} V in reverse, at its worst,", peak, U, band)
+
+
+def _of_leakage(
+    stage: Stage, trial: Trial, bands: Sequence[ReverseBand], bleeder_ohm: float | None
+) -> Iterator[Remark]:
+    leaks = [r for look in _looks(trial, bands, "leakage") if (r := _too_much(stage, look))]
+    if leaks:
+        yield min(leaks, key=lambda remark: remark.weight != "fault")
+    elif trial.last is not None:
+        leakage, least = trial.last.leakage, bands[-1].least_A
+        U = leakage.budget.expanded(CERTAIN).U
+        if leakage.value + U < least:
+            yield Remark(
+                "doubt",
+                f"at {trial.full_V:g} V in reverse {_passing(leakage, U)}, less than the least "
+                f"that the datasheets' tolerances allow ({spoken(least, 'A')}): suspect a part "
+                "that is missing or another part",
+            )
+    for look in _looks(trial, bands, "guarded"):
+        most = max(look.band.most_V, 0.0)
+        if look.figure.value - look.U > PLAINLY * most:
+            yield Remark(
+                "doubt",
+                f"{look.at} the guarded port is driven {spoken(look.figure.value, 'V')} below "
+                f"zero, further than the datasheets' tolerances allow ({spoken(most, 'V')})",
+            )
+            break
+    if trial.last is not None and bands[-1].most_V >= BLIND * trial.last.voltage_V:
+        yield Remark(
+            "doubt",
+            "the trial cannot tell a part that leaks from one that blocks: declare "
+            + ("bench.bleeder_ohm" if bleeder_ohm is None else
+               f"a bench.bleeder_ohm below {bleeder_ohm:g}"),
+        )  # fmt: skip
+
+
+def _too_much(stage: Stage, look: _Look) -> Remark | None:
+    """More than the sheets allow, if it is."""
+    leakage, U = look.figure, look.U
+    most = max(look.band.most_A, 0.0 if getattr(stage.main_part, "leakage", None) else UNSAID_A)
     if leakage.value - U > max(FAR * most, FLOWS_A):
-        yield Remark(
+        return Remark(
             "fault",
-            f"the stage does not block in reverse: {at} {passes}, far more than the most that the "
-            f"datasheets' tolerances allow ({spoken(most, 'A')})",
+            f"the stage does not block in reverse: {look.at} {_passing(leakage, U)}, far more than "
+            f"the most that the datasheets' tolerances allow ({spoken(most, 'A')})",
         )
-    elif leakage.value - U > most:
-        yield Remark(
+    if leakage.value - U > most:
+        return Remark(
             "doubt",
-            f"{at} {passes}, more than the most that the datasheets' tolerances allow "
-            f"({spoken(most, 'A')}): suspect a part that was hurt, dirt across it, or another part",
+            f"{look.at} {_passing(leakage, U)}, more than the most that the datasheets' tolerances "
+            f"allow ({spoken(most, 'A')}): suspect a part that was hurt, dirt across it, or "
+            "another part",
         )
-    elif leakage.value + U < band.least_A:
-        yield Remark(
-            "doubt",
-            f"{at} {passes}, less than the least that the datasheets' tolerances allow "
-            f"({spoken(band.least_A, 'A')}): suspect a part that is missing or another part",
-        )
-    U = guarded.budget.expanded().U
-    if guarded.value - U > PLAINLY * max(band.most_V, 0.0):
-        yield Remark(
-            "doubt",
-            f"{at} the guarded port is driven {spoken(guarded.value, 'V')} below zero, further "
-            f"than the datasheets' tolerances allow ({spoken(max(band.most_V, 0.0), 'V')})",
-        )
+    return None
+
+
+def _passing(leakage: Figure, U: float) -> str:
+    return f"{spoken(leakage.value, 'A')} ± {spoken(U, 'A', 2)} flow through it"
 
 
 def _changed(trial: Trial) -> Iterator[Remark]:

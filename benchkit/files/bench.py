@@ -98,6 +98,9 @@ class BenchLimits(FileModel):
     """Wait after each change of current before a reading is used."""
     poll_s: Annotated[float, Field(gt=0, le=10)] = 1.0
     """The longest the guard goes without looking while something is energised."""
+    bleeder_ohm: Annotated[float, Field(ge=100, le=100e3)] | None = None
+    """A resistor put across the guarded port for the trial in reverse: with nothing drawn there, a
+    part that leaks and one that blocks take the port to the same voltage."""
 
 
 class Simulated(FileModel):

@@ -230,8 +230,28 @@ class StageFile(FileModel):
         for key in ("leakage_max_A", "guarded_reverse_max_V"):
             if getattr(self.limits, key) is not None and self.reverse is None:
                 raise ValueError(f"limits.{key} needs a [reverse] table, or it is never measured")
+        self._told_apart()
         if self.limits.junction_margin_min_K is not None and self.soak is None:
             raise ValueError(
                 "limits.junction_margin_min_K needs a [soak] table, or it is never measured"
             )
         return self
+
+    def _told_apart(self) -> None:
+        """A limit that a short circuit in the part's place would keep is none."""
+        reverse, limits = self.reverse, self.limits
+        if reverse is None:
+            return
+        full = self.stage.supply_max_V if reverse.voltage_V is None else reverse.voltage_V
+        below, leaks = limits.guarded_reverse_max_V, limits.leakage_max_A
+        if below is not None and below >= full:
+            raise ValueError(
+                f"limits.guarded_reverse_max_V is {below:g}: it must be below the full reverse "
+                f"voltage of {full:g} V, or a short circuit would keep it; volts, not millivolts"
+            )
+        if leaks is not None and leaks >= reverse.current_limit_A:
+            raise ValueError(
+                f"limits.leakage_max_A is {leaks:g}: it must be below reverse.current_limit_A "
+                f"{reverse.current_limit_A:g}, beyond which nothing flows; amperes, not "
+                "milliamperes"
+            )

@@ -43,6 +43,8 @@ class Hookup:
     shunt_ohm: float
     lead_ohm: float
     load_conducts_back: bool
+    bleeder_ohm: float | None = None
+    """Across the guarded port, where there is one."""
 
     @property
     def regulates(self) -> bool:
@@ -122,6 +124,8 @@ class PortCircuit:
                 elements.append(_load(hookup, nodes, amps))
             else:
                 elements.append(Resistor(f"{port}.meter", nodes, METER_OHM))
+        if hookup.bleeder_ohm is not None:
+            elements.append(Resistor("bleeder", guarded, hookup.bleeder_ohm))
         return elements
 
     def _solved(self, circuit: Network, hookup: Hookup) -> Solution:

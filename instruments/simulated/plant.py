@@ -46,6 +46,7 @@ class Plant:
             raise InputError(f"{bench_path}: has no [simulated] table, so it cannot be simulated")
         self._time = timebase
         self._settings = bench.simulated
+        self._bleeder_ohm = bench.bench.bleeder_ohm
         draw = random.Random(seed_of(self._settings.seed, "wiring"))
         current, drop = bench.points["exposed_current"], bench.points["drop"]
         share = current.shunt_tolerance_percent / 100
@@ -261,6 +262,7 @@ class Plant:
         return Hookup(
             self._harness, output.emf_V, output.limit_A, output.on, *self._command_load,
             self._shunt, lead, self.active(CONDUCTS_BACK) is not None,
+            self._bleeder_ohm if self._harness.crossed else None,
         )  # fmt: skip
 
 

@@ -256,6 +256,76 @@ def test_a_schottky_drives_an_open_port_and_is_sound(tmp_path: Path) -> None:
     assert not any("guarded port is driven" in text for text in made.result.why)
 
 
+SCHOTTKY = JUNCTION.replace(
+    "[limits]\n", "[reverse]\nsteps = 3\ndwell_s = 6.0\n[limits]\n"
+).replace("case_max_C = 110.0", "case_max_C = 150.0")
+BLEEDER = BENCH.replace("power_max_W", "bleeder_ohm = 1000.0\npower_max_W")
+BLIND = "the trial cannot tell a part that leaks from one that blocks: declare bench.bleeder_ohm"
+
+
+def test_an_open_port_cannot_tell_a_leaky_schottky_from_a_sound_one(tmp_path: Path) -> None:
+    """500 uA, where 75 uA take 200 kilohms all the way down."""
+    trial = Reversal(series_ohm=5e5, currents=(0.05, 3.0, 5.0))
+    without = judged(tmp_path / "without", Board(stage=SCHOTTKY, reversal=trial))
+    assert BLIND in without.result.why
+    assert without.result.verdict == "undecided"
+    # A sound MOSFET's microampere does not come near.
+    assert BLIND not in judged(tmp_path / "channel", GOOD).result.findings
+
+
+@pytest.mark.parametrize(("guarded_V", "sound"), [(0.012, True), (15.0 * 1000 / 1100, False)])
+def test_with_a_resistor_there_it_can(guarded_V: float, sound: bool, tmp_path: Path) -> None:
+    """12 uA into 1 kohm, and 100 ohm across the part."""
+    trial = Reversal(series_ohm=2e5 * (15.0 / guarded_V - 1), currents=(0.05, 3.0, 5.0))
+    made = judged(tmp_path, Board(stage=SCHOTTKY, bench=BLEEDER, reversal=trial))
+    assert BLIND not in made.result.findings
+    assert ("the guarded port is driven 13.6 V below zero" in why(made)) is not sound
+    assert (made.result.verdict == "pass") is sound
+    (row,) = rows(made, "reverse_guarded")
+    assert row.predicted is not None
+    # No more than 500 uA (at 40 V) into 1 kohm within 5 %, at 15 V less.
+    assert 0 < row.predicted["low"] < 0.012 < row.predicted["high"] < 0.525
+
+
+@pytest.mark.parametrize(
+    ("step", "point", "value", "verdict", "words"),
+    [
+        ("reverse/dwell", "guarded_voltage", -15.0, "undecided",
+         "at 15 V in reverse, at its worst, the guarded port is driven 15 V below zero"),
+        ("reverse/dwell", "exposed_current", -0.09, "fail",
+         "the stage does not block in reverse: at 15 V in reverse, at its worst, 90"),
+        ("reverse/10.0", "exposed_current", -0.09, "fail",
+         "the stage does not block in reverse: at 10 V in reverse, at its worst, 90"),
+        ("reverse/5.0", "guarded_voltage", -4.0, "undecided",
+         "at 5 V in reverse, at its worst, the guarded port is driven 4 V below zero"),
+    ],
+)  # fmt: skip
+def test_a_part_that_gives_way_for_a_moment_is_found(
+    step: str, point: str, value: float, verdict: str, words: str, tmp_path: Path
+) -> None:
+    """The first reading of a step: of a dwell not one that its end is judged by."""
+    board = record(tmp_path / "run", GOOD)
+    lines = (board.path / "readings.csv").read_text("utf-8").splitlines()
+    number = next(i for i, line in enumerate(lines) if f",{step},{point}," in line)
+    cells = lines[number].split(",")
+    cells[3] = repr(value)
+    lines[number] = ",".join(cells)
+    (board.path / "readings.csv").write_text("\n".join(lines) + "\n", "utf-8")
+    made = evaluate(read_record(board.path), "TG-0007")
+    assert words in why(made)
+    assert made.result.verdict == verdict
+    # The measurand is that of the end of the dwell.
+    assert rows(made, "reverse_guarded")[0].verdict == "pass"
+    assert rows(made, "reverse_leakage")[0].verdict == "pass"
+
+
+def test_noise_alone_is_no_moment(tmp_path: Path) -> None:
+    """The largest of many readings is far out, and no fault."""
+    for seed in range(2, 6):
+        long = replace(GOOD, seed=seed, reversal=Reversal(dwell=120))
+        assert judged(tmp_path / str(seed), long).result.verdict == "pass"
+
+
 def test_a_stage_file_without_the_table_is_judged_as_before(tmp_path: Path) -> None:
     plain = judged(tmp_path / "plain", Board())
     assert plain.trial is None

@@ -67,6 +67,9 @@ def test_a_good_bench() -> None:
     assert found.points["drop"].aperture_nplc == 1.0
     assert found.simulated is not None
     assert found.simulated.boards == {}
+    assert found.bench.bleeder_ohm is None
+    told = bench(("power_max_W = 150.0", "power_max_W = 150.0\nbleeder_ohm = 1000"))
+    assert told.bench.bleeder_ohm == 1000.0
 
 
 @pytest.mark.parametrize(
@@ -74,6 +77,10 @@ def test_a_good_bench() -> None:
     [
         (("voltage_max_V = 32.0", "voltage_max_V = 80"),
          "bench.voltage_max_V is 80, it must be less than or equal to 60"),
+        (("power_max_W = 150.0", "power_max_W = 150.0\nbleeder_ohm = 47"),
+         "bench.bleeder_ohm is 47, it must be greater than or equal to 100"),
+        (("power_max_W = 150.0", "power_max_W = 150.0\nbleeder_ohm = 200_000"),
+         "bench.bleeder_ohm is 200000, it must be less than or equal to 100000"),
         (("calibration_due = 2027-06-30", 'calibration_due = "2027-06-30"'),
          "instruments.supply.calibration_due is '2027-06-30', it must be a date such as "
          "2027-06-30, without quotes"),

@@ -9,7 +9,11 @@ import numpy as np
 import pytest
 
 from benchkit.harness import DRAWING, REVERSED, Harness
+from instruments.simulated.plant import Plant
 from instruments.simulated.terminals import BLEED_S
+from instruments.simulated.timebase import VirtualTime
+from tests.benchkit.nine_stages import text
+from tests.instruments.simulated_fake import bench_file
 from tests.instruments.simulated_stage import LIMIT, VOLTS, Make, crossed, energise, plant_with
 
 
@@ -101,3 +105,29 @@ def test_a_charger_gives_nothing_while_there_is_no_battery(make: Make, topology:
     assert plant.voltage("guarded_voltage") == pytest.approx(VOLTS, abs=0.01)
     assert abs(plant.voltage("exposed_voltage")) < 0.6
     assert abs(plant.truth("gate_voltage")) < 0.5
+
+
+def test_a_resistor_is_across_the_guarded_port_while_the_leads_are_crossed(tmp_path: Path) -> None:
+    """A leak and the resistor divide what is applied; the right way round there is none."""
+    bench = bench_file()
+    assert bench.simulated is not None
+    bench.simulated.boards["S-1"] = ["leaky=100"]
+    told = bench.model_copy(
+        update={"bench": bench.bench.model_copy(update={"bleeder_ohm": 1000.0})}
+    )
+    path = tmp_path / "diode.toml"
+    path.write_text(text("series-diode"), "utf-8")
+    found = {}
+    for name, file in (("open", bench), ("resistor", told)):
+        plant = Plant(file, tmp_path / "bench.toml", VirtualTime())
+        plant.insert("S-1", str(path))
+        energise(plant)
+        assert plant.truth("exposed_current") < 1e-3
+        plant.command_supply(VOLTS, LIMIT, False)
+        plant.elapse(1)
+        crossed(plant)
+        found[name] = plant.voltage("guarded_voltage"), plant.truth("exposed_current")
+    assert found["open"][0] == pytest.approx(-VOLTS, abs=0.05)
+    assert abs(found["open"][1]) < 1e-3
+    assert found["resistor"][0] == pytest.approx(-VOLTS * 1000 / 1100, abs=0.1)
+    assert found["resistor"][1] == pytest.approx(-VOLTS / 1100, rel=0.02)

@@ -75,7 +75,7 @@ def test_no_wrong_reading_and_off(
     same = next(i for i, row in enumerate(taken) if i >= len(clean) or row != clean[i])
     rest = [row.split(",") for row in taken[same:]]
     # After the fault there is nothing but the meter's confirmation that the output is off.
-    assert {row[2] for row in rest} <= {"exposed_voltage"}, rest
+    assert {row[2] for row in rest} <= {"exposed_voltage", "exposed_current"}, rest
     assert same > 70
     assert kinds(done)[-1] == "off"
     assert done.status == "stopped"

@@ -34,7 +34,7 @@ junction_margin_min_K = 30
 
 @pytest.fixture
 def folder(tmp_path: Path) -> Path:
-    return workshop(tmp_path / "w")
+    return workshop(tmp_path / "w", trial=True)
 
 
 def refused(folder: Path, stage: str, monkeypatch: pytest.MonkeyPatch) -> str:

@@ -13,7 +13,7 @@ import procedures.reverse as reverse_module
 from benchkit.errors import NotConfirmedOff, OperatorStopped, Refused, Tripped
 from benchkit.files import BenchFile, load
 from benchkit.guard import Guard
-from benchkit.harness import DRAWING, REVERSED, Harness
+from benchkit.harness import DRAWING, Harness, reversed_harness
 from benchkit.records.record import Record, read_json, read_record
 from procedures.commands import opened, verify_board
 from procedures.inputs import read_board
@@ -25,6 +25,8 @@ from tests.benchkit.nine_stages import made, text
 from tests.simulated_bench import GOOD, workshop
 from tests.stand_in import Notes, StandInOperator, StandInWiring, World, guard_of
 
+REVERSED = reversed_harness(1000.0)
+
 REVERSE = "[reverse]\nsteps = 3\ndwell_s = 3.0\n"
 BOARD = "TG-0050"
 QUIET = Screen(quiet=True)
@@ -34,7 +36,7 @@ def shop(
     folder: Path, topology: str = "pmos-pass", *board: str, faults: tuple[str, ...] = ()
 ) -> Path:
     """A workshop with a stage ``mine.toml`` without a soak; ``board``: what is wrong with BOARD."""
-    folder = workshop(folder, faults=faults, supply="supply-select")
+    folder = workshop(folder, faults=faults, supply="supply-select", trial=True)
     (folder / "mine.toml").write_text(text(topology) + REVERSE, "utf-8")
     bench = folder / "bench.toml"
     bench.write_text(f"{bench.read_text('utf-8')}{BOARD} = {json.dumps(board)}\n", "utf-8")
@@ -115,7 +117,7 @@ def test_a_good_board_stands_it_and_drops_what_it_did(topology: str, tmp_path: P
     ("fault", "bench_fault", "words"),
     [
         ("short", (), "guarded_voltage is -5"),
-        ("leaky=1000", (), "guarded_voltage is -4"),
+        ("leaky=1000", (), "guarded_voltage is -2"),
         ("wrong-way-round", (), "guarded_voltage is -4"),
         ("leaky=30", ("load-conducts-back",), "the supply"),
     ],
@@ -128,10 +130,14 @@ def test_a_board_that_does_not_block_goes_no_further(
     assert words in str(done.error)
     assert "in step reverse/5.0" in str(done.error)
     assert most_V(record) == 5.0
-    assert done.evaluation.result.verdict != "pass"
-    # Off, and the leads put back, for the next board.
-    assert kinds(record)[-4:] == ["stopped", "off", "step", "harness"]
-    assert record.events[-1]["text"] == DRAWING.sentence()
+    assert done.evaluation.result.verdict == "fail"
+    # Off, and the leads put back and proved, for the next board.
+    said = kinds(record)
+    end = said.index("stopped")
+    assert said[end : end + 4] == ["stopped", "off", "step", "harness"]
+    assert record.events[end + 3]["text"] == DRAWING.sentence()
+    assert said[-1] == "polarity"
+    assert "left-reversed" not in said
 
 
 def test_a_stage_that_conducts_a_volt_is_not_asked_for_more(tmp_path: Path) -> None:
@@ -141,7 +147,7 @@ def test_a_stage_that_conducts_a_volt_is_not_asked_for_more(tmp_path: Path) -> N
     assert "no larger voltage was applied" in record.said("reverse-conducts")[0]
     assert not record.steps("reverse/")
     assert record.steps("after/")
-    assert done.evaluation.result.verdict != "pass"
+    assert done.evaluation.result.verdict == "fail"
 
 
 def test_leads_that_are_not_crossed_are_refused(tmp_path: Path) -> None:
@@ -206,7 +212,7 @@ def test_leads_that_a_run_left_crossed_are_put_back_before_the_next_board(tmp_pa
 
 def tries(folder: Path, world: World, notes: Notes, guard: Guard | None = None) -> Guard:
     """The trial alone on the scripted bench."""
-    bench = load(BenchFile, workshop(folder) / "bench.toml")
+    bench = load(BenchFile, workshop(folder, trial=True) / "bench.toml")
     plan = plan_board(made("pmos-pass", tables=REVERSE), bench)
     guard = guard or guard_of(world, notes)
     guard.begin(notes)
@@ -285,7 +291,7 @@ def test_ports_that_hold_a_charge_are_not_told_as_crossed(tmp_path: Path) -> Non
     guard.begin(notes)
     guard.make_safe("at the start")
     world.residual_V = 0.8
-    bench = load(BenchFile, workshop(tmp_path / "w") / "bench.toml")
+    bench = load(BenchFile, workshop(tmp_path / "w", trial=True) / "bench.toml")
     plan = plan_board(made("pmos-pass", tables=REVERSE), bench)
     with pytest.raises(Refused, match="with everything off"):
         run_reverse(guard, bench, plan, [0.1], 0.0, QUIET)

@@ -9,7 +9,7 @@ import pytest
 
 from benchkit.errors import InputError
 from benchkit.files import BenchFile, load
-from benchkit.harness import DRAWING, REVERSED
+from benchkit.harness import DRAWING, reversed_harness
 from procedures.inputs import read_board
 from procedures.plan import Plan, plan_board
 from tests.benchkit.nine_stages import made, text
@@ -18,8 +18,15 @@ from tests.simulated_bench import workshop
 REVERSE = "[reverse]\nsteps = 3\ndwell_s = 3.0\n"
 
 
-def planned(folder: Path, tables: str = REVERSE, topology: str = "pmos-pass") -> Plan:
-    bench = load(BenchFile, workshop(folder) / "bench.toml")
+def planned(
+    folder: Path,
+    tables: str = REVERSE,
+    topology: str = "pmos-pass",
+    bleeder_ohm: float | None = None,
+) -> Plan:
+    bench = load(BenchFile, workshop(folder, trial=True) / "bench.toml")
+    limits = bench.bench.model_copy(update={"bleeder_ohm": bleeder_ohm})
+    bench = bench.model_copy(update={"bench": limits})
     return plan_board(made(topology, tables=tables), bench)
 
 
@@ -27,7 +34,7 @@ def test_the_plan_says_what_will_be_done(tmp_path: Path) -> None:
     plan = planned(tmp_path / "w")
     said = "\n".join(plan.lines())
     for words in (
-        REVERSED.sentence(),
+        reversed_harness(None).sentence(),
         DRAWING.sentence(),
         "5, 10, 15 V the wrong way round, the last for 3 s",
         "current limit 0.1 A",
@@ -66,6 +73,41 @@ def test_the_guarded_port_trips_beyond_its_limit_and_beyond_honest_leakage(tmp_p
     assert "the current limit is what watches" in plan.reverse.text()
 
 
+def test_a_resistor_brings_the_trip_of_a_schottky_within_reach(tmp_path: Path) -> None:
+    plan = planned(tmp_path / "w", topology="series-diode", bleeder_ohm=1000.0)
+    assert plan.reverse is not None
+    for rung in plan.reverse.rungs:
+        # 1.5 times 0.6 V: 200 uA into 1 kohm are a fifth of a volt.
+        assert rung.guarded_min_V == pytest.approx(-0.9)
+    said = "\n".join(plan.lines())
+    assert reversed_harness(1000.0).sentence() in said
+    assert "put a resistor of 1000 ohm across the guarded port" in said
+    assert "the current limit is what watches" not in said
+    # 15 V, squared, in 1 kohm: 0.225 W, which any resistor stands.
+    assert "one that stands" not in said
+
+
+def test_a_resistor_that_gets_hot_is_said(tmp_path: Path) -> None:
+    plan = planned(tmp_path / "w", bleeder_ohm=100.0)
+    assert plan.reverse is not None
+    assert "one that stands 2.25 W" in plan.reverse.caution
+    assert "one that stands 2.25 W" in "\n".join(plan.lines())
+
+
+@pytest.mark.parametrize(
+    ("limit", "words"),
+    [
+        ("guarded_reverse_max_V = 15.0", "guarded_reverse_max_V is 15: it must be below the full"),
+        ("leakage_max_A = 0.1", r"leakage_max_A is 0\.1: it must be below reverse\.current_"),
+    ],
+)
+def test_a_limit_that_a_short_circuit_keeps_is_bad_input(limit: str, words: str) -> None:
+    with pytest.raises(InputError, match=words):
+        made("pmos-pass", tables=f"{REVERSE}[limits]\n{limit}\n")
+    lower = limit.replace("15.0", "14.9").replace("= 0.1", "= 0.09")
+    made("pmos-pass", tables=f"{REVERSE}[limits]\n{lower}\n")
+
+
 @pytest.mark.parametrize(
     ("keys", "words"),
     [
@@ -74,7 +116,7 @@ def test_the_guarded_port_trips_beyond_its_limit_and_beyond_honest_leakage(tmp_p
     ],
 )
 def test_what_the_bench_cannot_do_is_bad_input(keys: str, words: str, tmp_path: Path) -> None:
-    bench = (workshop(tmp_path / "w") / "bench.toml").read_text("utf-8")
+    bench = (workshop(tmp_path / "w", trial=True) / "bench.toml").read_text("utf-8")
     bench = bench.replace("power_max_W = 150.0", "power_max_W = 20.0")
     (tmp_path / "w" / "bench.toml").write_text(bench, "utf-8")
     stage = text("pmos-pass").replace("currents_A = [0.1, 0.5, 1.0, 2.0, 3.0]",
@@ -88,7 +130,7 @@ def test_what_the_bench_cannot_do_is_bad_input(keys: str, words: str, tmp_path: 
 def test_nothing_is_planned_that_is_predicted_to_break_the_part(
     given: bool, tmp_path: Path
 ) -> None:
-    folder = workshop(tmp_path / "w")
+    folder = workshop(tmp_path / "w", trial=True)
     stage = text("series-diode").replace("reverse_voltage_max_V = 40", "reverse_voltage_max_V = 12")
     keys = "[reverse]\nvoltage_V = 15.0\n" if given else "[reverse]\n"
     (folder / "mine.toml").write_text(stage + keys, "utf-8")
