@@ -43,17 +43,20 @@ RIGHT_WAY: Mapping[str, str] = {
 }
 
 
-def scenario_deck(stage: Stage, name: str, ambient_C: float | None = None) -> str:
+def scenario_deck(
+    stage: Stage, name: str, ambient_C: float | None = None, *, others: bool = True
+) -> str:
     """The last circuit of a scenario at the highest voltage that can drive it, with typical parts.
 
     A flat battery is as flat as the file says. ambient_C: of every part, -80 to 250; the stage's
-    nominal one unless given. InputError for another scenario or temperature.
+    nominal one unless given. others: look for further operating points and tell them in the
+    comments. InputError for another scenario or temperature.
     """
     warm = stage.file.stage.ambient_nominal_C if ambient_C is None else ambient_C
     point = scenario_point(stage, name, warm)
     return deck(
         point.circuit, point.solution.volts, f"{stage.file.stage.name}: {name}",
-        _comments(stage, name, warm, point), _headings(stage),
+        _comments(stage, name, warm, point, others=others), _headings(stage),
     )  # fmt: skip
 
 
@@ -77,7 +80,9 @@ def _conditions(stage: Stage, around: Surroundings, name: str) -> Conditions:
     return Conditions(np.array([volts]), np.array([stage.file.stage.current_max_A]))
 
 
-def _comments(stage: Stage, name: str, warm: float, point: OperatingPoint) -> list[str]:
+def _comments(
+    stage: Stage, name: str, warm: float, point: OperatingPoint, *, others: bool
+) -> list[str]:
     around = surroundings(stage.file)
     at = _conditions(stage, around, name)
     what = RIGHT_WAY[stage.guards] if name == "right-way" else WHAT[name]
@@ -105,7 +110,7 @@ def _comments(stage: Stage, name: str, warm: float, point: OperatingPoint) -> li
     lines += [
         f"there is another operating point, {spoken(float(other.exposed_A[0]), 'A')} and "
         f"{spoken(float(other.guarded_V[0]), 'V')}: a simulator may find that one"
-        for other in other_points(point, highest)
+        for other in (other_points(point, highest) if others else [])
     ]
     return lines
 

@@ -24,7 +24,7 @@ from procedures.commands import opened
 from procedures.screen import Screen
 from procedures.starters import place_starters
 from procedures.verify import run_board
-from tests.simulated_bench import inputs_of
+from tests.simulated_bench import inputs_of, without_trial
 
 BOARDS = 200
 
@@ -45,6 +45,7 @@ class Truth:
 def measure(folder: Path, seed: int, stage: str) -> list[tuple[str, float, float, float]]:
     """One board: (quantity, measured, U, true)."""
     place_starters(folder, seed)
+    without_trial(folder)
     inputs = inputs_of(folder, stage)
     truth = Truth()
     screen = Screen(quiet=True)
