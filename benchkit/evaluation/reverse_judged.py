@@ -31,8 +31,8 @@ UNSAID_A = 10e-6
 """What a part whose sheet gives no leakage may leak without remark (judgement)."""
 PROOF_V = 1.0
 CERTAIN = 0.999
-"""Coverage at which a leak or a change of drop is remarked on: several are looked at, of every board,
-and chance has its share."""
+"""Coverage at which a leak or a change of drop is remarked on: several are looked at of every
+board, and chance has its share."""
 _OF_THE_BENCH = re.compile(
     r"time |supply_voltage |the supply's output |case gives|\w+ gives no usable reading \(invalid\)"
 )
