@@ -483,7 +483,8 @@ class Guard:
             volts = self._read_off("exposed_voltage")
             low = volts.usable and abs(volts.value) < RESIDUAL_V
             amps = self._read_off("exposed_current") if low else None
-            if amps is not None and not (amps.usable and abs(amps.value) > max(OFF_A, 3 * amps.u)):
+            # An overload is no small current: what gives no usable reading confirms nothing.
+            if amps is not None and amps.usable and abs(amps.value) <= max(OFF_A, 3 * amps.u):
                 return None
             if self._clock.now() - began > DISCHARGE_S:
                 reading = amps or volts

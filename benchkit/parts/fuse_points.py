@@ -85,7 +85,7 @@ class FuseModel:
         """The smallest current at which its standard has it open."""
         return self.standard.surely_opens * self.part.rated_current_A
 
-    def sample(self, a: Floats, b: Floats, c: Floats) -> FuseLaw:  # noqa: ARG002
+    def sample(self, a: Floats, b: Floats, c: Floats) -> FuseLaw:  # noqa: ARG002  as every model
         """Sampled parts from standard scores: a cold resistance, b melting I2t (+3: slowest)."""
         typ = self.typical
         slower = between(b, 1 - self.spread, 1.0, 1 + self.spread)

@@ -50,7 +50,7 @@ class ResistorModel:
     tolerance: float
     notes: tuple[str, ...] = ()
 
-    def sample(self, a: Floats, b: Floats, c: Floats) -> ResistorLaw:  # noqa: ARG002
+    def sample(self, a: Floats, b: Floats, c: Floats) -> ResistorLaw:  # noqa: ARG002  as every model
         """Sampled parts from standard scores, shape (samples,): ``a`` moves the value."""
         share = between(a, 1 - self.tolerance, 1.0, 1 + self.tolerance)
         return ResistorLaw(self.typical.ohms * share, self.typical.tempco_per_K)

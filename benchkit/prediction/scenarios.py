@@ -101,7 +101,7 @@ def scenario(stage: Stage, sample: Sample, name: str, around: Surroundings) -> S
         own_rise = getattr(part, "junction_to_ambient_K_per_W", None)
         if reference != stage.main and own_rise is not None and lasts:
             warm = stage.file.stage.ambient_max_C + own_rise * states.power_W
-            limit = float(getattr(part, "junction_max_C"))  # noqa: B009
+            limit = float(getattr(part, "junction_max_C"))  # noqa: B009  of a WarmPart
             ratings.append(rating(reference, "junction temperature", "C", warm, limit))
     if lasts:
         limit = stage.main_part.junction_max_C

@@ -163,3 +163,16 @@ def test_leads_stuck_straight_prove_nothing_whatever_the_load_does(trips: bool) 
         guard.prove_polarity()
     with pytest.raises(Refused, match="has not been proved"), guard.energised(TRIAL):
         pass
+
+
+def test_a_current_that_overloads_its_range_is_not_off() -> None:
+    class Overloaded(StandInPoints):
+        def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
+            true = super().read(point, time_s, quick=quick)
+            return replace(true, status="overload") if point == "exposed_current" else true
+
+    world = World()
+    guard = begun(world)
+    guard._points = Overloaded(world)
+    with pytest.raises(NotConfirmedOff, match="exposed_current is still overload"):
+        guard.make_safe("end")
