@@ -7,6 +7,7 @@ Celsius and seconds. Every method may raise ``benchkit.errors.LinkError``.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Protocol
 
@@ -47,6 +48,9 @@ class Supply(Protocol):
     def enable(self) -> None:
         """Switch the output on, confirmed by read-back."""
 
+    def send_off(self) -> None:
+        """Send output-off and wait for nothing: for several outputs that go off at once."""
+
     def disable(self) -> None:
         """Switch the output off: sent blind first, even to a session that is out of step, then
         confirmed by read-back; raises LinkError when it cannot be confirmed."""
@@ -83,8 +87,27 @@ class Points(Protocol):
         """Go back to the ranges of the bench file, and take no instrument's setting for granted:
         a run does not depend on what was measured before."""
 
+    def can_burst(self, points: Sequence[str]) -> str | None:
+        """None where these can be read in quick succession, all at once; else why not."""
+
+    def arm_burst(self, points: Sequence[tuple[str, float]], seconds: float) -> None:
+        """Begin to read ``(point, largest value expected)`` over and over, for ``seconds``; returns
+        at once. Nothing else is read with these instruments until ``fetch_burst``."""
+
+    def fetch_burst(self, began_s: float) -> list[Reading]:
+        """Wait for its end and return all that was read, ``time_s`` counted from ``began_s``."""
+
     def recover(self, point: str) -> None:
         """After a LinkError: make the instrument that reads a point usable again, if it can be."""
+
+
+class Interlock(Protocol):
+    """A loop that is open while somebody can reach in."""
+
+    role: str
+
+    def closed(self) -> bool:
+        """Whether it is closed now."""
 
 
 class Wiring(Protocol):
@@ -93,6 +116,10 @@ class Wiring(Protocol):
     def arrange(self, harness: Harness) -> None:
         """Connect as told, with everything off; OperatorStopped when that is declined. What was
         done is proved by measurement afterwards."""
+
+    def refit_fuse(self, name: str) -> None:
+        """Have a new fuse put in the place of ``name``, everything off; OperatorStopped when that
+        is declined."""
 
 
 class Clock(Protocol):

@@ -15,11 +15,15 @@ POINT_UNITS = {
     "exposed_current": "A",
     "case": "C",
     "ambient": "C",
+    "gate_voltage": "V",
     "supply_voltage": "V",
     "supply_current": "A",
+    "battery_voltage": "V",
+    "battery_current": "A",
 }
-"""The quantities a bench can read, with their units. The first six are read by the bench's
-instruments as its file says (``supply_*`` are the supply's own read-backs)."""
+"""The quantities a bench can read, with their units. The first six, and the
+gate's voltage where its taps are, are read by the bench's instruments as its file says
+(``supply_*`` and ``battery_*`` are the supplies' own read-backs)."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass, field
 
@@ -47,6 +47,7 @@ class World:
     heating_K_per_s: float = 0.0
     load_stuck: bool = False
     reading_s: float = 0.0
+    burst: list[str] = field(default_factory=list)
     broken: dict[str, Exception] = field(default_factory=dict)
     """What the supply, the load or the meter raises, by what is asked of it."""
 
@@ -105,6 +106,11 @@ class StandInSupply:
         self._heard("on")
         self.world.on = True
 
+    def send_off(self) -> None:
+        self.world.said.append("send off")
+        if not self.world.stuck:
+            self.world.on = False
+
     def disable(self) -> None:
         self.world.said.append("off")
         if not self.world.stuck:
@@ -157,6 +163,16 @@ class StandInPoints:
     def recover(self, point: str) -> None:
         self.world.said.append(f"recover {point}")
 
+    def can_burst(self, points: Sequence[str]) -> str | None:
+        return None if points else "nothing to read"
+
+    def arm_burst(self, points: Sequence[tuple[str, float]], seconds: float) -> None:
+        self.world.said.append(f"burst {seconds:g}")
+        self.world.burst = [point for point, _ in points]
+
+    def fetch_burst(self, began_s: float) -> list[Reading]:
+        return [self.read(point, began_s) for point in self.world.burst]
+
     def read(self, point: str, time_s: float, *, quick: bool = False) -> Reading:
         del quick
         w = self.world
@@ -185,6 +201,9 @@ class StandInWiring:
         self.world.wired.append(harness)
         if not self.world.crossing_stuck:
             self.world.polarity = harness.sign
+
+    def refit_fuse(self, name: str) -> None:
+        self.world.said.append(f"new fuse {name}")
 
 
 @dataclass
@@ -243,7 +262,7 @@ def guard_of(
 ) -> Guard:
     """A guard on a scripted bench; ``proved``: as if its leads had been proved already."""
     guard = Guard(
-        StandInSupply(world),
+        {"supply": StandInSupply(world)},
         StandInLoad(world),
         StandInPoints(world),
         StandInClock(world),
@@ -257,5 +276,5 @@ def guard_of(
         shield=shield,
         watcher=watcher,
     )
-    guard._proved = proved
+    guard._leads.proved = proved
     return guard

@@ -7,13 +7,15 @@ from typing import Annotated, Literal
 
 from pydantic import Field, field_validator, model_validator
 
+from benchkit.files.guarding import Thresholds
 from benchkit.files.loading import FileModel
 
 Positive = Annotated[float, Field(gt=0)]
 Percent = Annotated[float, Field(ge=0, le=50)]
 PointName = Literal[
-    "drop", "exposed_voltage", "guarded_voltage", "exposed_current", "case", "ambient"
-]
+    "drop", "exposed_voltage", "guarded_voltage", "exposed_current", "case", "ambient",
+    "gate_voltage",
+]  # fmt: skip
 NEEDED: tuple[PointName, ...] = (
     "drop", "exposed_voltage", "guarded_voltage", "exposed_current", "case", "ambient",
 )  # fmt: skip
@@ -37,7 +39,7 @@ class TemperatureAccuracy(FileModel):
 class Instrument(FileModel):
     """One instrument."""
 
-    kind: Literal["supply", "meter", "thermometer", "load"]
+    kind: Literal["supply", "meter", "thermometer", "load", "switch"]
     resource: Annotated[str, Field(min_length=1)]
     """A VISA resource name, or "simulated" for an instrument of the simulated bench."""
     dialect: Annotated[str, Field(min_length=1)]
@@ -46,6 +48,11 @@ class Instrument(FileModel):
     """How its answer to *IDN? must begin: maker and model."""
     channel: str | None = None
     calibration_due: dt.date
+    stands_for: Literal["battery"] | None = None
+    """Of a second supply: it stands in for a battery at the exposed port."""
+    bleeder_ohm: Annotated[float, Field(ge=10, le=10e3)] | None = None
+    """Of that one: the resistor across its terminals, which takes up the current that a supply
+    cannot sink."""
     voltage: list[VoltageAccuracy] = Field(default_factory=list)
     temperature: TemperatureAccuracy | None = None
 
@@ -57,6 +64,17 @@ class Instrument(FileModel):
                 f"{resource!r} must be a VISA resource such as TCPIP::192.0.2.10::5025::SOCKET"
             )
         return resource
+
+    @model_validator(mode="after")
+    def _battery(self) -> Instrument:
+        if self.stands_for is not None and self.kind != "supply":
+            raise ValueError(f"stands_for is for a supply, not for a {self.kind}")
+        if (self.stands_for is None) != (self.bleeder_ohm is None):
+            raise ValueError(
+                "stands_for and bleeder_ohm belong together: a supply that stands for a battery "
+                "cannot sink, so it needs a resistor across its terminals"
+            )
+        return self
 
     @model_validator(mode="after")
     def _accuracy(self) -> Instrument:
@@ -89,6 +107,9 @@ class BenchLimits(FileModel):
 
     name: Annotated[str, Field(min_length=1, max_length=120)]
     line_frequency_Hz: Literal[50, 60] = 50
+    visa: Annotated[str, Field(min_length=1)] = "@py"
+    """What pyvisa calls the VISA library: "@py", "@ivi", or the absolute path of an installed one;
+    of a real bench only."""
     voltage_max_V: Annotated[float, Field(gt=0, le=60)]
     """At most 60 V: above that, DC is hazardous to touch and needs another kind of bench."""
     current_max_A: Positive
@@ -101,6 +122,31 @@ class BenchLimits(FileModel):
     bleeder_ohm: Annotated[float, Field(ge=100, le=100e3)] | None = None
     """A resistor put across the guarded port for the trial in reverse: with nothing drawn there, a
     part that leaks and one that blocks take the port to the same voltage."""
+
+
+class Wiring(FileModel):
+    """[wiring]: what the bench does by itself, where it has a switch unit."""
+
+    instrument: str
+    loop: str | None = None
+    """The digital input that is high while the interlock loop is closed."""
+    straight: str | None = None
+    """The route that closes the polarity relay the right way round."""
+    crossed: str | None = None
+    """The route that closes it the wrong way round."""
+    bleeder: str | None = None
+    """The route that puts bench.bleeder_ohm across the guarded port."""
+
+    @model_validator(mode="after")
+    def _complete(self) -> Wiring:
+        if (self.straight is None) != (self.crossed is None):
+            raise ValueError("straight and crossed belong together: they are the polarity relay")
+        routes = [r for r in (self.straight, self.crossed, self.bleeder) if r is not None]
+        if len(set(routes)) < len(routes):
+            raise ValueError("straight, crossed and bleeder must be different routes")
+        if not routes and self.loop is None:
+            raise ValueError("it names neither a loop nor a relay: leave the table out")
+        return self
 
 
 class Simulated(FileModel):
@@ -123,17 +169,29 @@ class BenchFile(FileModel):
     bench: BenchLimits
     instruments: dict[str, Instrument]
     points: dict[PointName, Point]
+    wiring: Wiring | None = None
+    guard: Thresholds = Thresholds()
     simulated: Simulated | None = None
 
     @field_validator("instruments")
     @classmethod
     def _complete(cls, instruments: dict[str, Instrument]) -> dict[str, Instrument]:
-        for kind in ("supply", "load", "meter", "thermometer"):
-            found = [name for name, item in instruments.items() if item.kind == kind]
-            if not found:
+        for kind in ("supply", "load", "meter", "thermometer", "switch"):
+            found = [
+                name for name, item in instruments.items()
+                if item.kind == kind and item.stands_for is None
+            ]  # fmt: skip
+            if not found and kind != "switch":
                 raise ValueError(f"none is of kind {kind!r}: the bench needs one")
-            if kind in ("supply", "load") and len(found) > 1:
-                raise ValueError(f"{' and '.join(found)} are both of kind {kind!r}: give one")
+            if kind in ("supply", "load", "switch") and len(found) > 1:
+                beside = ', or say of one of them stands_for = "battery"'
+                raise ValueError(
+                    f"{' and '.join(found)} are both of kind {kind!r}: give one"
+                    + (beside if kind == "supply" else "")
+                )
+        batteries = [name for name, item in instruments.items() if item.stands_for is not None]
+        if len(batteries) > 1:
+            raise ValueError(f"{' and '.join(batteries)} both stand for the battery: give one")
         return instruments
 
     @model_validator(mode="after")
@@ -158,6 +216,20 @@ class BenchFile(FileModel):
                     + ("missing: current is read across a shunt" if point.shunt_ohm is None
                        else "for exposed_current only")
                 )  # fmt: skip
+        if self.wiring is not None:
+            switch = self.instruments.get(self.wiring.instrument)
+            if switch is None or switch.kind != "switch":
+                mistakes.append(
+                    f"wiring.instrument is {self.wiring.instrument!r}: it must be an instrument of "
+                    'kind "switch"'
+                )
+            if self.wiring.bleeder is not None and self.bench.bleeder_ohm is None:
+                mistakes.append("wiring.bleeder needs bench.bleeder_ohm: the resistor it connects")
+        if self.simulated is not None and self.bench.visa != "@py":
+            mistakes.append(
+                f'bench.visa is {self.bench.visa!r}: the simulated bench is spoken to by "@py", '
+                "so leave it out here"
+            )
         invented = [name for name, i in self.instruments.items() if i.resource == "simulated"]
         if invented and self.simulated is None:
             mistakes.append('a resource is "simulated", so a [simulated] table is needed')
@@ -176,5 +248,16 @@ class BenchFile(FileModel):
         return all(item.resource == "simulated" for item in self.instruments.values())
 
     def only(self, kind: str) -> tuple[str, Instrument]:
-        """The name and the table of the one instrument of a kind there is one of."""
-        return next((name, item) for name, item in self.instruments.items() if item.kind == kind)
+        """The name and the table of the one instrument of a kind there is one of; the supply is
+        the one that stands for nothing else."""
+        return next(
+            (name, item) for name, item in self.instruments.items()
+            if item.kind == kind and item.stands_for is None
+        )  # fmt: skip
+
+    @property
+    def battery(self) -> tuple[str, Instrument] | None:
+        """The name and the table of the supply that stands for a battery, where there is one."""
+        return next(
+            ((name, item) for name, item in self.instruments.items() if item.stands_for), None
+        )

@@ -4,8 +4,8 @@ Software is the second line of defence. The first is the supply's own over-volta
 and current limit, which the guard programs, reads back, and refuses to go on without. A process
 that is killed outright leaves only those.
 
-Nothing else in this suite can switch a supply on: the guard owns supply and load, and hands out a
-``Live`` handle only inside ``energised``, which always ends in ``make_safe``.
+Nothing else in this suite can switch a supply on: the guard owns every source and the load, and
+hands out a ``Live`` handle only inside ``energised``, which always ends in ``make_safe``.
 """
 
 from __future__ import annotations
@@ -15,43 +15,29 @@ import math
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from contextlib import AbstractContextManager, contextmanager, nullcontext
 
-from benchkit.errors import (
-    LinkError,
-    NotConfirmedOff,
-    OperatorStopped,
-    Refused,
-    Tripped,
-)
+from benchkit.errors import LinkError, NotConfirmedOff, OperatorStopped, Refused, Tripped
 from benchkit.guard.envelope import Ceilings, Envelope
+from benchkit.guard.leads import Leads
 from benchkit.guard.live import Live
-from benchkit.guard.off import doubts_of, say
-from benchkit.guard.permissives import RESIDUAL_V, check_calibration, check_dead, check_sensors
-from benchkit.guard.polarity import PROOF_A, PROOF_V, check_leads, proof
-from benchkit.guard.trips import SUPPLY_TRIPPED, Trip, above, of_ports, of_supply, of_voltage
-from benchkit.guard.watch import Watch
-from benchkit.harness import DRAWING, Harness
-from benchkit.protocols import (
-    Clock,
-    Journal,
-    Load,
-    Operator,
-    Points,
-    Protection,
-    Supply,
-    SupplyState,
-    Wiring,
+from benchkit.guard.looking import Looking
+from benchkit.guard.off import discharged, doubts_of, say
+from benchkit.guard.outputs import Outputs
+from benchkit.guard.permissives import (
+    check_calibration,
+    check_dead,
+    check_loop,
+    check_sensors,
 )
+from benchkit.guard.trips import Trip, above, of_ports
+from benchkit.guard.watch import Watch
+from benchkit.harness import Harness, Port, Source
+from benchkit.prediction.coordination import Coordination
+from benchkit.protocols import Clock, Interlock, Journal, Load, Operator, Points, Supply, Wiring
 from benchkit.reading import Reading
 
-PORTS = ("exposed_voltage", "guarded_voltage")
-OFF_A = 0.01
-"""More than this through the exposed port is not an output that is off."""
-DISCHARGE_S = 5.0
-"""How long the output is given to fall below RESIDUAL_V."""
-LEVEL_SHARE, LEVEL_V, LEVEL_A = 0.02, 0.05, 0.01
-"""How far a read-back of a protection level may be from what was asked."""
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
+PORTS: tuple[Port, ...] = ("exposed", "guarded")
 
 
 class Guard:
@@ -59,7 +45,7 @@ class Guard:
 
     def __init__(
         self,
-        supply: Supply,
+        supplies: Mapping[Source, Supply],
         load: Load,
         points: Points,
         clock: Clock,
@@ -71,10 +57,11 @@ class Guard:
         *,
         waits_s: float = 0.0,
         wiring: Wiring | None = None,
+        interlock: Interlock | None = None,
         shield: Callable[[], AbstractContextManager[None]] = nullcontext,
         watcher: Callable[[Reading], None] | None = None,
     ) -> None:
-        self.__supply, self.__load = supply, load
+        self.__outputs = Outputs(supplies, load)
         self._points, self._clock, self._operator = points, clock, operator
         self._journal = journal
         self.ceilings = ceilings
@@ -83,10 +70,10 @@ class Guard:
         self._start_s = clock.now()
         self._step = "start"
         self._case_C = math.nan
-        self._watch = Watch(0.0)
         self._live: Live | None = None
-        self._wiring, self._harness = wiring, DRAWING
-        self._proved = self._maybe_crossed = False
+        self._interlock = interlock
+        self._leads = Leads(self, self.__outputs, wiring)
+        self._accepted: set[str] = set()
         self._begun = False
         self._off = False
         self._found_on = ""
@@ -110,7 +97,9 @@ class Guard:
         """Begin a run: time 0, a new journal, and nothing remembered of the run before."""
         self._journal, self._start_s, self._step = journal, self._clock.now(), "start"
         self._case_C = math.nan
-        self._proved, self._begun = False, True
+        self._leads.begin()
+        self._begun = True
+        self._accepted.clear()
         self._points.forget()
         if self._found_on:
             self._journal.event("found-on", self._found_on, time_s=self.now())
@@ -124,6 +113,10 @@ class Guard:
     def expect(self, point: str, largest: float) -> None:
         """Fix a point's range for what is to come."""
         self._points.expect(point, largest)
+
+    def can_read(self, point: str) -> bool:
+        """Whether this bench has it."""
+        return point in self._points.names()
 
     def read(self, point: str, *, quick: bool = False) -> Reading:
         """One reading, recorded before it is returned; while something is energised, the guard
@@ -142,21 +135,13 @@ class Guard:
         self._keep(reading)
         return reading
 
-    def remark(self, kind: str, text: str) -> None:
+    def remark(self, kind: str, text: str, **facts: object) -> None:
         """Something the report is to mention."""
-        self._journal.event(kind, text, time_s=self.now(), step=self._step)
+        self._journal.event(kind, text, time_s=self.now(), step=self._step, **facts)
 
     def latest_case_C(self) -> float:
         """The case temperature the guard saw last; nan before its first look."""
         return self._case_C
-
-    def instruct(self, text: str) -> None:
-        """Ask for something to be done by hand; OperatorStopped when it is declined, Refused
-        while something is energised."""
-        self._require_rest("nothing is asked of a person")
-        self._journal.event("instruction", text, time_s=self.now())
-        if not self._operator.instruct(text):
-            raise OperatorStopped(f"the operator declined: {text}")
 
     def _require_rest(self, what: str) -> None:
         if self._live is not None:
@@ -167,29 +152,20 @@ class Guard:
     def start_off(self) -> None:
         """See that nothing is on before a person reaches in: off, and confirmed, or
         NotConfirmedOff. An output found on is told by the next run."""
-        self._found_on = self._switched_on()
+        self._found_on = self.__outputs.found_on()
         self.make_safe(self._found_on or "before anything is done")
-
-    def _switched_on(self) -> str:
-        """What the supply says when it was found on; empty when it is off."""
-        state = self.__supply.state()
-        if not state.output_on:
-            return ""
-        return (
-            f"{self.__supply.role} was found switched on, at {state.voltage_V:.3g} V and "
-            f"{state.current_A:.3g} A: switching it off"
-        )
 
     def permit(self) -> None:
         """Check every permissive that needs no voltage. Refused names the one that is missing."""
         check_calibration(self._due, self._today)
-        if found_on := self._switched_on():
+        check_loop(self._interlock)
+        if found_on := self.__outputs.found_on():
             self._off = False
             self._journal.event("found-on", found_on, time_s=self.now())
             self.make_safe("found switched on")
-        self.__load.release()
-        check_dead(self._usable)
-        check_sensors(self._usable)
+        self.__outputs.load.release()
+        check_dead(self._usable, self.ceilings.thresholds)
+        check_sensors(self._usable, self.ceilings.thresholds)
         self._journal.event("permitted", "every permissive holds", time_s=self.now())
 
     def _usable(self, point: str) -> float:
@@ -206,33 +182,43 @@ class Guard:
     @property
     def harness(self) -> Harness:
         """How the leads are, as far as anyone has done it; ``prove_polarity`` shows it."""
-        return self._harness
+        return self._leads.harness
 
     @property
     def maybe_crossed(self) -> bool:
         """Whether leads were to be crossed, and not proved right way round since."""
-        return self._maybe_crossed
+        return self._leads.maybe_crossed
+
+    def placed(self, harness: Harness) -> None:
+        """A board was put in, connected so; unproved until ``prove_polarity``."""
+        self._require_rest("no board is put in")
+        self._leads.placed(harness)
 
     def arrange(self, harness: Harness) -> None:
         """Have the leads connected otherwise: never hot, and unproved until ``prove_polarity``.
 
         Refused while something is energised, not confirmed off, or while a port still holds more
-        than RESIDUAL_V.
+        than the residual voltage.
         """
-        self._require_rest("no lead is touched")
+        self._clear("no lead is touched")
+        self._accepted.clear()
+        self._leads.arrange(harness)
+
+    def refit_fuse(self, name: str) -> None:
+        """Have a new fuse put in for ``name``; never hot, and unproved until ``prove_polarity``."""
+        self._clear("no fuse is touched")
+        self._leads.refit_fuse(name)
+
+    def _clear(self, what: str) -> None:
+        """See that it is safe for hands and relays; Refused says ``what`` is not done."""
+        self._require_rest(what)
         if not self._off:
-            raise Refused("no lead is touched before the outputs are confirmed off")
-        if self._wiring is None:
-            raise Refused("this bench cannot be wired otherwise")
-        if found_on := self._switched_on():
+            raise Refused(f"{what} before the outputs are confirmed off")
+        if found_on := self.__outputs.found_on():
             self.make_safe(found_on)
-            raise Refused(f"{found_on}; no lead is touched before it is known why")
+            raise Refused(f"{found_on}; {what} before it is known why")
         self.clear_for_hands()
-        check_dead(self._usable)
-        self._proved, self._maybe_crossed = False, self._maybe_crossed or harness.crossed
-        self._journal.event("harness", harness.sentence(), time_s=self.now())
-        self._wiring.arrange(harness)
-        self._harness = harness
+        check_dead(self._usable, self.ceilings.thresholds)
 
     def clear_for_hands(self) -> None:
         """Both ports dead, with time to discharge; Refused when they do not get so.
@@ -240,52 +226,36 @@ class Guard:
         Not recorded: it may belong to no run yet.
         """
         self._require_rest("no hand reaches in")
+        thresholds = self.ceilings.thresholds
 
         def read(point: str) -> float:
             reading = self._points.read(point, self.now(), quick=True)
             return reading.value if reading.usable else math.inf
 
         began = self.now()
-        while self.now() - began < DISCHARGE_S:
-            if all(abs(read(point)) <= RESIDUAL_V for point in PORTS):
+        while self.now() - began < thresholds.discharge_s:
+            if all(abs(read(f"{port}_voltage")) <= thresholds.residual_V for port in PORTS):
                 break
             self._sleep(0.05)
-        check_dead(read)
+        check_dead(read, thresholds)
 
-    def prove_polarity(self) -> bool:
+    def prove_polarity(self, caution: str | None = None) -> bool:
         """At a volt and milliamperes, see which way round the leads are, and that the meters agree.
 
         Polarity is never taken from a relay or a person. Refused when it is not as the harness
-        says. Returns whether the stage stood the volt; False where, with the leads crossed, it
-        conducts all that the supply gives. Where the supply's over-current protection ended that,
-        the current could not show its direction, and polarity stays unproved.
+        says. Returns whether the stage stood the volt at its exposed port; False where, with the
+        leads crossed, it conducts all that the source gives. Where a supply's over-current
+        protection ended that, the current could not show its direction, and polarity stays
+        unproved.
         """
-        crossed, self._proved = self._harness.crossed, False
-        envelope = proof(self.ceilings.case_max_C, crossed=crossed)
-        self.step("polarity/reversed" if crossed else "polarity")
-        blocks, proved = True, True
-        try:
-            with self.energised(envelope) as live:
-                live.wait(0.05)
-                # A stage that conducts makes the supply limit or trip only by now.
-                live.look()
-                limited = crossed and self.__supply.state().constant_current
-                blocks = check_leads(self._usable, self._harness.sign, limited=limited)
-        except Tripped as trip:
-            if self._maybe_crossed and not crossed:
-                raise Refused(f"{trip}: the leads may still be crossed") from trip
-            if not crossed or SUPPLY_TRIPPED not in str(trip):
-                raise
-            blocks = proved = False
-        self._proved = proved
-        self._maybe_crossed = self._maybe_crossed and not (proved and not crossed)
-        self._journal.event(
-            "polarity",
-            "as it should be, proved by measurement" if proved else "not proved: it conducts",
-            time_s=self.now(),
-            blocks=blocks,
-        )
-        return blocks
+        return self._leads.prove(caution)
+
+    def declare_fuse(self, coordination: Coordination) -> None:
+        """Say what the stage's fuse does at full current; a step that needs it is refused where it
+        is not coordinated. Forgotten with the next run, and with a new fuse."""
+        told = "; ".join(coordination.notes) or "the fuse is coordinated"
+        self._journal.event("fuse", told, time_s=self.now(), **coordination.document())
+        self._leads.fuse = coordination
 
     # during
 
@@ -293,43 +263,27 @@ class Guard:
     def energised(self, envelope: Envelope, caution: str | None = None) -> Iterator[Live]:
         """Protect, program, switch on; hand out the means to load and wait; always end off.
 
-        Whatever ends the block (its end, a trip, an error, Ctrl-C), the output is switched off
+        Whatever ends the block (its end, a trip, an error, Ctrl-C), every output is switched off
         first and then confirmed off; NotConfirmedOff replaces the error when it cannot be.
+        A caution is asked once a run, and again after leads were moved.
         """
         self._require_rest(f"{envelope.name} cannot begin")
         envelope.check(self.ceilings)
-        harmless = envelope.voltage_V <= PROOF_V and envelope.current_limit_A <= PROOF_A
-        if not self._proved and not harmless:
-            raise Refused(
-                f"{envelope.name} cannot begin: which way round the leads are has not been proved"
-            )
-        if caution is not None:
-            caution += (
-                f" The guard looks every {self.ceilings.poll_s:g} s; when instruments fail it may "
-                f"be blind for up to {self.blind_s:.0f} s, with only the supply's own limits left."
-            )
-            self._journal.event("caution", caution, time_s=self.now())
-            if not self._operator.acknowledge(caution):
-                raise OperatorStopped("the operator did not accept the caution")
+        self._permit_step(envelope)
+        if caution is not None and caution not in self._accepted:
+            self._ask(caution)
         try:
             self._off = False
-            self.__load.release()
-            # Zero volts first: a supply may refuse a protection level below its set voltage, and a
-            # voltage above its protection level, so neither may be in the other's way. The current
-            # limit before the levels: on supplies whose over-current level is their current limit,
-            # the level read back is that of the limit then in force.
-            self.__supply.program(0.0, envelope.current_limit_A)
-            self._protect(envelope)
-            self.__supply.program(envelope.voltage_V, envelope.current_limit_A)
+            self.__outputs.prepare(envelope)
             self._journal.event(
                 "on",
                 f"{envelope.name}: {envelope.sentence()}",
                 time_s=self.now(),
                 blind_s=self.blind_s,
             )
-            self._watch = Watch(self.blind_s)
-            live = self._live = Live(self, self.__load, envelope)
-            self.__supply.enable()
+            live = self._live = self._followed(envelope)
+            drive = envelope.drives()[envelope.source]
+            self.__outputs.enable(envelope.source, drive, self.now())
             yield live
         except BaseException as error:
             self.make_safe(say(error), error)
@@ -342,6 +296,43 @@ class Guard:
                 self.make_safe(say(error), error)
             raise
 
+    def _permit_step(self, envelope: Envelope) -> None:
+        """What must hold before this step, whatever was checked before."""
+        check_loop(self._interlock)
+        self._leads.permit(envelope)
+
+    def _ask(self, caution: str) -> None:
+        told = (
+            f"{caution} The guard looks every {self.ceilings.poll_s:g} s; when instruments fail it "
+            f"may be blind for up to {self.blind_s:.0f} s, with only the supply's own limits left."
+        )
+        self._journal.event("caution", told, time_s=self.now())
+        if not self._operator.acknowledge(told):
+            raise OperatorStopped("the operator did not accept the caution")
+        self._accepted.add(caution)
+
+    def _followed(self, envelope: Envelope) -> Live:
+        """The handle of a step that is about to be switched on; a burst begins here."""
+        thresholds = self.ceilings.thresholds
+        looking = Looking(
+            self.__outputs, self._interlock, envelope, self.harness,
+            Watch(self.blind_s, thresholds), thresholds,
+            read=lambda point, at: self._read(point, at, quick=True),
+            keep=self._keep, trip_on=self._trip_on,
+        )  # fmt: skip
+        live = Live(self, self.__outputs, looking, envelope)
+        if envelope.burst is not None:
+            self._points.arm_burst(envelope.burst.points, envelope.burst.seconds)
+            live.burst_began_s = self.now()
+        return live
+
+    def take_burst(self, began_s: float) -> list[Reading]:
+        """Everything a burst read, recorded; for ``Live.burst``."""
+        readings = self._points.fetch_burst(began_s)
+        for reading in readings:
+            self._keep(reading)
+        return readings
+
     @property
     def blind_s(self) -> float:
         """The longest from one look to the end of the next, or to output-off being sent: the
@@ -351,19 +342,6 @@ class Guard:
         """
         return self.ceilings.poll_s + self._waits_s + SLACK_S
 
-    def _protect(self, envelope: Envelope) -> None:
-        asked = Protection(envelope.over_voltage_V, envelope.over_current_A)
-        read = self.__supply.protect(asked)
-        for what, want, got, slack in (
-            ("over-voltage", asked.over_voltage_V, read.over_voltage_V, LEVEL_V),
-            ("over-current", asked.over_current_A, read.over_current_A, LEVEL_A),
-        ):
-            if not abs(got - want) <= LEVEL_SHARE * want + slack:
-                raise Refused(
-                    f"{self.__supply.role}: its {what} level reads back as {got:.4g} after "
-                    f"{want:.4g} was set; nothing is switched on without it"
-                )
-
     def _keep(self, reading: Reading) -> None:
         self._journal.reading(self._step, reading)
         if reading.point == "case":
@@ -371,41 +349,12 @@ class Guard:
         if self._watcher is not None:
             self._watcher(reading)
 
-    def look(self, envelope: Envelope, began_s: float) -> float:
-        """One look at everything that trips; Tripped says threshold, reading and time.
-
-        Returns the time of the look, which stamps all that was read in it.
-        """
-        state = self.__supply.state()
-        now = self.now()
-        self._keep(Reading(now, "supply_voltage", state.voltage_V, "V", 0.0, 0.0))
-        self._keep(Reading(now, "supply_current", state.current_A, "A", 0.0, 0.0))
-        self._trip_on(of_supply(envelope, state), now)
-        case = self._read("case", now, quick=True)
-        if not case.usable:
-            self._trip("case", f"gives no usable reading ({case.status})", now)
-        self._trip_on(above("case", case.value, envelope.case_max_C, "C"), now)
-        self._trip_on(self._watch.trips(envelope, state, case.value, now), now)
-        if envelope.voltage_V > PROOF_V:
-            self._look_at_a_voltage(envelope, state, now)
-        self._trip_on(above("time", now - began_s, envelope.longest_s, "s"), now)
-        return now
-
-    def _look_at_a_voltage(self, envelope: Envelope, state: SupplyState, now: float) -> None:
-        """By turns the guarded port's sign, and the supply's own voltage against the meter's."""
-        point = self._watch.voltage_due(now, self.ceilings.poll_s)
-        if point is None:
-            return
-        reading = self._read(point, now, quick=True)
-        if not reading.usable:
-            self._trip(point, f"gives no usable reading ({reading.status})", now)
-        self._trip_on(of_voltage(envelope, state, reading, self._harness.sign), now)
-
     def check_ports(
         self, envelope: Envelope, exposed_V: float, guarded_V: float, drop_V: float
     ) -> None:
         """Trip on the guarded side's sign, and where the three meter channels contradict."""
-        self._trip_on(of_ports(envelope, exposed_V, guarded_V, drop_V), self.now())
+        found = of_ports(envelope, exposed_V, guarded_V, drop_V, self.ceilings.thresholds)
+        self._trip_on(found, self.now())
 
     def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
         """Trip on the stage's own loss."""
@@ -416,11 +365,8 @@ class Guard:
     def _trip_on(self, found: Iterable[Trip], now: float) -> None:
         """Trip on the first of what was found, if anything was."""
         for what, text in found:
-            self._trip(what, text, now)
-
-    def _trip(self, what: str, text: str, now: float) -> None:
-        self._journal.event("trip", f"{what} {text}", time_s=now, step=self._step)
-        raise Tripped(f"{what} {text} at {now:.3f} s, in step {self._step}")
+            self._journal.event("trip", f"{what} {text}", time_s=now, step=self._step)
+            raise Tripped(f"{what} {text} at {now:.3f} s, in step {self._step}")
 
     # after
 
@@ -430,7 +376,7 @@ class Guard:
         return self._off
 
     def make_safe(self, why: str, error: BaseException | None = None) -> None:
-        """Output off first, then confirmed by read-back and by a meter; NotConfirmedOff if not.
+        """Outputs off first, then confirmed by read-back and by a meter; NotConfirmedOff if not.
 
         Called on every way out; harmless when everything is off already. ``error`` is what ended
         a step, for the journal. Whatever fails in here, a full disk too, the rest is done all the
@@ -439,17 +385,17 @@ class Guard:
         with self._shield():
             self._off, self._live = False, None
             doubts = [
-                *doubts_of(f"{self.__supply.role}'s read-back", self.__supply.disable),
+                *self.__outputs.all_off(),
                 *doubts_of("the meter", self._discharged),
             ]
-            for doubt in doubts_of("could not be released", self.__load.release):
+            for doubt in doubts_of("could not be released", self.__outputs.load.release):
                 self._note("load", doubt)
             if error is not None:
                 self._note("stopped", say(error), error=type(error).__name__)
             if doubts:
                 self._note("not-confirmed-off", "; ".join(doubts))
                 raise NotConfirmedOff(
-                    "OUTPUTS NOT CONFIRMED OFF. Make the bench safe by hand: switch the supply "
+                    "OUTPUTS NOT CONFIRMED OFF. Make the bench safe by hand: switch every supply "
                     "off at its own switch, then disconnect the exposed port, then measure it "
                     f"with a separate meter. Not confirmed by {' and by '.join(doubts)} "
                     f"(after: {why})"
@@ -475,22 +421,11 @@ class Guard:
             return None
 
     def _discharged(self) -> str | None:
-        """Wait for the exposed port to fall below RESIDUAL_V and carry nothing; a sentence when it
-        does not. A stage that conducts holds the port low: then the current tells."""
+        """The ports where a source may be, by the meter; a sentence when they do not get dead."""
         self._points.recover("exposed_voltage")
-        began = self._clock.now()
-        while True:
-            volts = self._read_off("exposed_voltage")
-            low = volts.usable and abs(volts.value) < RESIDUAL_V
-            amps = self._read_off("exposed_current") if low else None
-            # An overload is no small current: what gives no usable reading confirms nothing.
-            if amps is not None and amps.usable and abs(amps.value) <= max(OFF_A, 3 * amps.u):
-                return None
-            if self._clock.now() - began > DISCHARGE_S:
-                reading = amps or volts
-                value = f"{reading.value:.3g} {reading.unit}" if reading.usable else reading.status
-                return f"{reading.point} is still {value} {DISCHARGE_S:g} s after switching off"
-            self._clock.sleep(0.02)
+        at_guarded = any(port == "guarded" for _, port in self.harness.sources())
+        ports = ["exposed_voltage", *(["guarded_voltage"] if at_guarded else [])]
+        return discharged(self._read_off, self._clock, ports, self.ceilings.thresholds)
 
     def _read_off(self, point: str) -> Reading:
         """Recorded under a step of its own: it is no measurement of what was being done."""

@@ -1,25 +1,35 @@
-"""What a procedure holds while something is energised."""
+"""The handle that a procedure holds while something is energised."""
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
-from benchkit.errors import InputError
+from benchkit.errors import InputError, Refused
 from benchkit.guard.envelope import Envelope
-from benchkit.protocols import Load
+from benchkit.guard.looking import Looking
+from benchkit.guard.outputs import Outputs
+from benchkit.harness import Source
 from benchkit.reading import Reading
 
 if TYPE_CHECKING:
     from benchkit.guard.guard import Guard
 
+BURST_LOOK_S = 0.05
+"""While a burst runs the guard looks this often: all its other eyes are shut."""
+
 
 class Live:
     """What a procedure can do while something is energised. Made by ``Guard.energised`` only."""
 
-    def __init__(self, guard: Guard, load: Load, envelope: Envelope) -> None:
-        self._guard, self.__load = guard, load
+    def __init__(
+        self, guard: Guard, outputs: Outputs, looking: Looking, envelope: Envelope
+    ) -> None:
+        self._guard, self.__outputs, self._looking = guard, outputs, looking
         self.envelope = envelope
         self._began_s = self._looked_s = guard.now()
+        self.burst_began_s = math.nan
+        """When the meter began, where the envelope asks for a burst that was not fetched yet."""
 
     def draw(self, current_A: float) -> None:
         """Set the load, never above the envelope's current limit (InputError)."""
@@ -29,7 +39,7 @@ class Live:
                 f"{self.envelope.current_limit_A:.3g} A"
             )
         self._guard._look_when_due()
-        self.__load.draw(current_A)
+        self.__outputs.load.draw(current_A)
 
     def rest(self) -> None:
         """Draw nothing, keep the supply on.
@@ -39,9 +49,29 @@ class Live:
         """
         self.draw(0.0)
 
+    def connect(self, source: Source) -> None:
+        """Switch the envelope's other source on as well, as it was programmed; Refused for one
+        that the envelope does not hold."""
+        drive = self.envelope.drives().get(source)
+        if drive is None:
+            raise Refused(f"{self.envelope.name} holds nothing for the {source}")
+        self.look()
+        self._guard.remark("connected", f"the {source} at {drive.sentence()}")
+        self.__outputs.enable(source, drive, self._guard.now())
+
+    def disconnect(self, source: Source) -> None:
+        """Switch one source off, confirmed by its read-back, and leave the other on."""
+        self.__outputs.disable(source)
+        self._guard.remark("disconnected", f"the {source}")
+        self.look()
+
     def look(self) -> float:
         """Look now, whatever the polling interval; returns the time of the look."""
-        self._looked_s = self._guard.look(self.envelope, self._began_s)
+        guard = self._guard
+        self._looked_s = self._looking.look(
+            guard.now, self._began_s, guard.ceilings.poll_s,
+            meter=math.isnan(self.burst_began_s),
+        )  # fmt: skip
         return self._looked_s
 
     @property
@@ -57,6 +87,8 @@ class Live:
         now = self.look()
         until = now + seconds
         poll_s = self._guard.ceilings.poll_s
+        if not math.isnan(self.burst_began_s):
+            poll_s = min(poll_s, BURST_LOOK_S)
         while (left := until - now) > 1e-6:
             due = self._looked_s + poll_s - now
             # A clock that was set back must not lengthen the time to the next look.
@@ -67,11 +99,23 @@ class Live:
             )
         return now
 
+    def burst(self) -> list[Reading]:
+        """Wait for the end of the envelope's burst, looking at all but the meter, and return what
+        it read; everything is recorded."""
+        burst, began = self.envelope.burst, self.burst_began_s
+        if burst is None or math.isnan(began):
+            raise Refused(f"{self.envelope.name} has no burst to be fetched")
+        self.wait(max(began + burst.seconds - self._guard.now(), 0.0))
+        readings = self._guard.take_burst(began)
+        self.burst_began_s = math.nan
+        return readings
+
     def read(self, point: str) -> Reading:
         """A recorded reading (see ``Guard.read``); overload or a lost sensor trips."""
         reading = self._guard.read(point)
         if not reading.usable:
-            self._guard._trip(point, f"gives no usable reading ({reading.status})", reading.time_s)
+            text = f"gives no usable reading ({reading.status})"
+            self._guard._trip_on([(point, text)], reading.time_s)
         return reading
 
     def check_ports(self, exposed_V: float, guarded_V: float, drop_V: float) -> None:

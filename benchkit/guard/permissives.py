@@ -9,12 +9,10 @@ import datetime as dt
 from collections.abc import Callable, Mapping
 
 from benchkit.errors import Refused
+from benchkit.files.guarding import Thresholds
+from benchkit.prediction.coordination import Coordination
+from benchkit.protocols import Interlock
 
-RESIDUAL_V = 0.5
-"""Below this a port counts as dead."""
-REST_K = 10.0
-"""Case and ambient may differ by this much before a run (a board fresh from the hand)."""
-PLAUSIBLE_C = (-45.0, 90.0)
 Read = Callable[[str], float]
 
 
@@ -28,29 +26,50 @@ def check_calibration(due: Mapping[str, dt.date], today: dt.date) -> None:
         )
 
 
-def check_dead(read: Read) -> None:
+def check_loop(interlock: Interlock | None) -> None:
+    """The interlock loop is closed, where the bench has one."""
+    if interlock is not None and not interlock.closed():
+        raise Refused(
+            f"the interlock loop is open ({interlock.role}): close the cover, then begin again"
+        )
+
+
+def check_fuse(declared: Coordination | None, *, in_place: bool) -> None:
+    """Full current the wrong way round needs a fuse: declared, coordinated, and proved in place."""
+    if declared is None:
+        raise Refused("full current the wrong way round needs a fuse, and none was declared")
+    if not declared.coordinated:
+        raise Refused(f"the fuse is not coordinated: {'; '.join(declared.notes)}")
+    if not in_place:
+        raise Refused(
+            "the fuse was not found in place: at the proof of polarity no current flowed through "
+            "it and the clamp, so it is blown or missing, or the clamp is open"
+        )
+
+
+def check_dead(read: Read, thresholds: Thresholds) -> None:
     """Both ports are dead with everything off, by all three meter channels."""
     for point in ("exposed_voltage", "guarded_voltage", "drop"):
         value = read(point)
-        if not abs(value) <= RESIDUAL_V:
+        if not abs(value) <= thresholds.residual_V:
             raise Refused(
-                f"{point} is {value:.3g} V with everything off, above {RESIDUAL_V} V: something "
-                "still feeds or charges it; disconnect and discharge it first"
+                f"{point} is {value:.3g} V with everything off, above {thresholds.residual_V} V: "
+                "something still feeds or charges it; disconnect and discharge it first"
             )
 
 
-def check_sensors(read: Read) -> None:
+def check_sensors(read: Read, thresholds: Thresholds) -> None:
     """Case and ambient are plausible, and near each other at rest."""
     temps = {point: read(point) for point in ("case", "ambient")}
-    low, high = PLAUSIBLE_C
+    low, high, most_K = thresholds.sensor_min_C, thresholds.sensor_max_C, thresholds.rest_K
     for point, value in temps.items():
         if not low <= value <= high:
             raise Refused(
                 f"{point} reads {value:.1f} C at rest, outside {low:g} to {high:g} C: check the "
                 "sensor"
             )
-    if not abs(temps["case"] - temps["ambient"]) <= REST_K:
+    if not abs(temps["case"] - temps["ambient"]) <= most_K:
         raise Refused(
             f"case reads {temps['case']:.1f} C and ambient {temps['ambient']:.1f} C at rest, more "
-            f"than {REST_K:g} K apart: let the board settle, or check the sensors"
+            f"than {most_K:g} K apart: let the board settle, or check the sensors"
         )

@@ -3,51 +3,65 @@
 from __future__ import annotations
 
 from benchkit.errors import Refused
-from benchkit.guard.envelope import Envelope
-from benchkit.guard.permissives import RESIDUAL_V, Read
+from benchkit.files.guarding import Thresholds
+from benchkit.guard.envelope import PROOF_A, PROOF_V, Envelope
+from benchkit.guard.permissives import Read
+from benchkit.harness import NAMES, Port, Source
 
-PROOF_V, PROOF_A = 1.0, 0.05
-"""Polarity is proved at this voltage and current limit before anything larger."""
+LEVEL_ABOVE_A = 0.01
 PROOF_SHARE = 0.2
 """How far the voltage that proves polarity may be off, as a share of it."""
-MESH_V, MESH_SHARE = 0.03, 0.005
-"""Exposed less guarded voltage must equal the drop within this and a share of the voltage."""
 
 
-def proof(case_max_C: float, *, crossed: bool) -> Envelope:
-    """The step that proves it. With the leads crossed the supply may reach its limit."""
+def proof(
+    case_max_C: float, thresholds: Thresholds, *, source: Source = "supply", crossed: bool = False
+) -> Envelope:
+    """The step that proves where one source is. With the leads crossed it may reach its limit."""
     return Envelope(
-        "polarity", PROOF_V, PROOF_A, PROOF_V * 1.1 + 0.5, PROOF_A, case_max_C, 1.0, 30.0,
-        may_limit=crossed,
+        "polarity", PROOF_V, PROOF_A, PROOF_V * 1.1 + 0.5,
+        # Above the limit, where a supply has a level of its own: reaching the limit proves.
+        PROOF_A + LEVEL_ABOVE_A * crossed, case_max_C, 1.0, 30.0,
+        may_limit=crossed, guarded_min_V=thresholds.guarded_min_V,
+        case_rise_max_K_per_s=thresholds.case_rise_max_K_per_s, source=source,
     )  # fmt: skip
 
 
-def check_leads(read: Read, sign: int, *, limited: bool) -> bool:
-    """See that plus is where the harness says, and that the meters agree.
+def check_leads(
+    read: Read, source: Source, port: Port, sign: int, thresholds: Thresholds, *, limited: bool
+) -> bool:
+    """See that the plus of ``source`` is where the harness says, and that the meters agree.
 
-    sign: of the exposed voltage in this harness. limited: the supply limits its current. Returns
-    whether the stage stands the volt. Refused when the leads are otherwise.
+    sign: of its voltage at its port. limited: it limits its current. Returns whether the stage
+    stands the volt. Refused when the leads are otherwise.
     """
-    exposed = read("exposed_voltage")
+    exposed, guarded = read("exposed_voltage"), read("guarded_voltage")
+    drop = read("drop")
+    # What still runs down from the proof before moves meanwhile: the mean is that of the drop's
+    # own moment.
+    guarded = (guarded + read("guarded_voltage")) / 2
+    exposed = (exposed + read("exposed_voltage")) / 2
     if limited:
         check_direction(read("exposed_current"), PROOF_A, sign)
     else:
-        check_polarity(exposed, PROOF_V, sign)
-    check_mesh(exposed, read("guarded_voltage"), read("drop"))
+        volts = exposed if port == "exposed" else guarded
+        check_polarity(source, port, volts, sign, thresholds)
+    check_mesh(exposed, guarded, drop, thresholds)
     return not limited
 
 
-def check_polarity(exposed_V: float, set_V: float, sign: int = 1) -> None:
-    """What was set arrives at the exposed port, the way round that the harness says (``sign``)."""
-    if abs(exposed_V - sign * set_V) <= PROOF_SHARE * set_V:
+def check_polarity(
+    source: Source, port: Port, port_V: float, sign: int, thresholds: Thresholds
+) -> None:
+    """What was set arrives at the port, the way round that the harness says (``sign``)."""
+    if abs(port_V - sign * PROOF_V) <= PROOF_SHARE * PROOF_V:
         return
-    if -sign * exposed_V > RESIDUAL_V:
+    if -sign * port_V > thresholds.residual_V:
         hint = "the leads are crossed" if sign > 0 else "the leads are not crossed"
     else:
-        hint = "the exposed port is shorted, loaded, or not connected"
+        hint = f"the {port} port is shorted, loaded, or not connected"
     raise Refused(
-        f"with {set_V:g} V set, exposed_voltage reads {exposed_V:.3g} V: {hint}; nothing "
-        "larger is applied"
+        f"with {PROOF_V:g} V set at {NAMES[source]}, {port}_voltage reads {port_V:.3g} V: {hint}; "
+        "nothing larger is applied"
     )
 
 
@@ -60,11 +74,16 @@ def check_direction(exposed_A: float, limit_A: float, sign: int) -> None:
         )
 
 
-def check_mesh(exposed_V: float, guarded_V: float, drop_V: float) -> None:
+def check_mesh(exposed_V: float, guarded_V: float, drop_V: float, thresholds: Thresholds) -> None:
     """Kirchhoff's voltage law holds around the three meter channels."""
     left = exposed_V - guarded_V - drop_V
-    if not abs(left) <= MESH_V + MESH_SHARE * abs(exposed_V):
+    if not abs(left) <= mesh_most_V(exposed_V, thresholds):
         raise Refused(
             f"exposed {exposed_V:.4g} V less guarded {guarded_V:.4g} V less drop {drop_V:.4g} V "
             f"leaves {left:.3g} V, which must be near zero: a measuring lead is off or crossed"
         )
+
+
+def mesh_most_V(exposed_V: float, thresholds: Thresholds) -> float:
+    """How far the three meter channels may contradict one another."""
+    return thresholds.mesh_V + thresholds.mesh_percent / 100 * abs(exposed_V)

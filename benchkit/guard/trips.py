@@ -2,18 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 
-from benchkit.guard.envelope import Envelope
-from benchkit.guard.polarity import MESH_SHARE, MESH_V
+from benchkit.files.guarding import Thresholds
+from benchkit.guard.envelope import Drive, Envelope
+from benchkit.guard.polarity import mesh_most_V
+from benchkit.harness import NAMES, Harness, Source
 from benchkit.protocols import SupplyState
 from benchkit.reading import Reading
 
 Trip = tuple[str, str]
 """What tripped, and the rest of the sentence: reading and threshold."""
-SUPPLY_TRIPPED = "the supply's own protection"
-APART_V, APART_SHARE = 0.5, 0.05
-"""How far the supply's own voltage may be from the meter's at the exposed port: leads drop some."""
+SUPPLY_TRIPPED = "own protection"
 
 
 def above(what: str, value: float, threshold: float, unit: str) -> Iterator[Trip]:
@@ -22,44 +22,48 @@ def above(what: str, value: float, threshold: float, unit: str) -> Iterator[Trip
         yield what, f"is {value:.4g} {unit}, above {threshold:.4g} {unit}"
 
 
-def of_supply(envelope: Envelope, state: SupplyState) -> Iterator[Trip]:
-    """What the supply says of its own output."""
+def of_supply(source: Source, drive: Drive, state: SupplyState) -> Iterator[Trip]:
+    """What a source says of its own output."""
+    name = NAMES[source]
     if state.tripped:
-        yield SUPPLY_TRIPPED, "has tripped"
+        yield f"{name}'s {SUPPLY_TRIPPED}", "has tripped"
     if not state.output_on:
-        yield "the supply's output", "went off by itself"
-    if state.constant_current and not envelope.may_limit:
+        yield f"{name}'s output", "went off by itself"
+    if state.constant_current and not drive.may_limit:
         yield (
-            "the supply",
+            name,
             f"limits its current at {state.current_A:.3g} A, which the step does not expect",
         )
-    yield from above("supply_voltage", abs(state.voltage_V), envelope.over_voltage_V, "V")
-    yield from above("supply_current", abs(state.current_A), envelope.over_current_A, "A")
+    yield from above(f"{source}_voltage", abs(state.voltage_V), drive.over_voltage_V, "V")
+    yield from above(f"{source}_current", abs(state.current_A), drive.over_current_A, "A")
 
 
 def of_voltage(
-    envelope: Envelope, state: SupplyState, reading: Reading, sign: int
+    envelope: Envelope,
+    states: Mapping[Source, SupplyState],
+    reading: Reading,
+    harness: Harness,
+    thresholds: Thresholds,
 ) -> Iterator[Trip]:
-    """The guarded port's sign, or the supply's own voltage against the meter's; ``sign`` of the
-    exposed voltage in this harness."""
-    if reading.point == "guarded_voltage":
-        if not reading.value >= envelope.guarded_min_V:
-            yield (
-                reading.point,
-                f"is {reading.value:.4g} V, below {envelope.guarded_min_V:.4g} V",
-            )
-    elif not state.constant_current:
+    """The guarded port's sign, and every source's own voltage against the meter's at its port."""
+    if reading.point == "guarded_voltage" and not reading.value >= envelope.guarded_min_V:
+        yield reading.point, f"is {reading.value:.4g} V, below {envelope.guarded_min_V:.4g} V"
+    drives = envelope.drives()
+    for source, port in harness.sources():
+        state = states.get(source)
+        if f"{port}_voltage" != reading.point or state is None or state.constant_current:
+            continue
+        sign = harness.sign if port == "exposed" else 1
         apart = abs(sign * reading.value - state.voltage_V)
-        most = APART_V + APART_SHARE * envelope.voltage_V
-        yield from above("supply_voltage against exposed_voltage", apart, most, "V")
+        most = thresholds.apart_V + thresholds.apart_percent / 100 * drives[source].voltage_V
+        yield from above(f"{source}_voltage against {reading.point}", apart, most, "V")
 
 
 def of_ports(
-    envelope: Envelope, exposed_V: float, guarded_V: float, drop_V: float
+    envelope: Envelope, exposed_V: float, guarded_V: float, drop_V: float, thresholds: Thresholds
 ) -> Iterator[Trip]:
     """The guarded port's sign, and Kirchhoff's voltage law around the three meter channels."""
     if not guarded_V >= envelope.guarded_min_V:
         yield "guarded_voltage", f"is {guarded_V:.4g} V, below {envelope.guarded_min_V:.4g} V"
-    left = abs(exposed_V - guarded_V - drop_V)
-    most = MESH_V + MESH_SHARE * abs(exposed_V)
+    left, most = abs(exposed_V - guarded_V - drop_V), mesh_most_V(exposed_V, thresholds)
     yield from above("exposed less guarded voltage less drop (a measuring lead?)", left, most, "V")

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 
+from benchkit.files.guarding import Thresholds
 from benchkit.guard.envelope import Envelope
 from benchkit.guard.trips import Trip, above
 from benchkit.protocols import SupplyState
@@ -13,16 +14,16 @@ BACK_S = 1.0
 """A clock that goes back by more would lengthen a step."""
 LEAST_S = 1.0
 """A rate is taken over this time at least: over less, a thermometer's noise would trip."""
-FROZEN_LOOKS, FROZEN_S, FROZEN_W = 60, 300.0, 1.0
-"""A sensor that reads the very same through so many looks and seconds, while the supply gives more
-than this, is taken to be dead: a live one has noise, and ambient drifts (judgement)."""
+FROZEN_LOOKS, FROZEN_W = 60, 1.0
+"""A sensor that reads the very same through so many looks, while the supply gives more than this,
+may be dead; see ``Thresholds.frozen_s``."""
 
 
 class Watch:
     """Follows one energised step from look to look. blind_s: see ``Guard.blind_s``."""
 
-    def __init__(self, blind_s: float) -> None:
-        self._blind_s = blind_s
+    def __init__(self, blind_s: float, thresholds: Thresholds) -> None:
+        self._blind_s, self._frozen_s = blind_s, thresholds.frozen_s
         self._looked_s = self._compared_s = math.nan
         self._power_W = self._energy_J = 0.0
         self._turn = False
@@ -31,10 +32,10 @@ class Watch:
         self._same_since_s, self._same_looks = math.nan, 0
 
     def trips(
-        self, envelope: Envelope, state: SupplyState, case_C: float, now_s: float
+        self, envelope: Envelope, states: Iterable[SupplyState], case_C: float, now_s: float
     ) -> Iterator[Trip]:
-        """What has passed its threshold since the looks before."""
-        power = abs(state.voltage_V * state.current_A)
+        """What has passed its threshold since the looks before; states: of all that is on."""
+        power = sum(abs(state.voltage_V * state.current_A) for state in states)
         since = now_s - self._looked_s
         if since < -BACK_S:
             yield "the clock", f"went back by {-since:.3g} s"
@@ -70,5 +71,5 @@ class Watch:
         self._same_looks += 1
         if self._same_looks >= FROZEN_LOOKS:
             yield from above(
-                "time the case has not moved", now_s - self._same_since_s, FROZEN_S, "s"
+                "time the case has not moved", now_s - self._same_since_s, self._frozen_s, "s"
             )

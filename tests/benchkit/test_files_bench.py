@@ -90,9 +90,10 @@ def test_a_good_bench() -> None:
          "instruments.thermometer: a thermometer needs its accuracy: temperature = "
          "{ offset_K = ... }"),
         (('kind = "load"', 'kind = "supply"'), "instruments: supply and load are both of kind "
-         "'supply': give one"),
+         "'supply': give one, or say of one of them stands_for = \"battery\""),
         (('kind = "load"', 'kind = "sink"'),
-         "instruments.load.kind is 'sink', it must be 'supply', 'meter', 'thermometer' or 'load'"),
+         "instruments.load.kind is 'sink', it must be 'supply', 'meter', 'thermometer', 'load' or "
+         "'switch'"),
         (("ambient = {", "#"), "points.ambient is missing"),
         (('drop = { instrument = "meter"', 'drop = { instrument = "dvm"'),
          "points.drop.instrument is 'dvm', it must be one of load, meter, supply, thermometer"),
@@ -109,7 +110,7 @@ def test_a_good_bench() -> None:
          "whole or not at all"),
         (("[points]\n", '[points]\nrise = { instrument = "meter" }\n'),
          "points.rise cannot stand here: it must be 'drop', 'exposed_voltage', 'guarded_voltage', "
-         "'exposed_current', 'case' or 'ambient'"),
+         "'exposed_current', 'case', 'ambient' or 'gate_voltage'"),
     ],
 )  # fmt: skip
 def test_a_bench_that_cannot_work_is_named(change: tuple[str, str], message: str) -> None:

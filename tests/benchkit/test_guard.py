@@ -221,13 +221,15 @@ def test_a_declined_caution_energises_nothing() -> None:
 
 
 def test_no_step_may_pass_the_ceilings_of_the_bench() -> None:
-    around = {"case_max_C": 90.0, "loss_max_W": 5.0, "longest_s": 10.0}
-    with pytest.raises(InputError, match=r"bench.voltage_max_V = 30"):
-        Envelope.around("s", 28.0, 1.0, CEILINGS, **around)
-    with pytest.raises(InputError, match=r"bench.current_max_A = 10"):
-        Envelope.around("s", 5.0, 9.9, CEILINGS, **around)
-    with pytest.raises(InputError, match=r"bench.power_max_W = 200"):
-        Envelope.around("s", 25.0, 8.0, CEILINGS, **around)
+    for volts, amps, words in (
+        (28.0, 1.0, r"bench.voltage_max_V = 30"),
+        (5.0, 9.9, r"bench.current_max_A = 10"),
+        (25.0, 8.0, r"bench.power_max_W = 200"),
+    ):
+        with pytest.raises(InputError, match=words):
+            Envelope.around(
+                "s", volts, amps, CEILINGS, case_max_C=90.0, loss_max_W=5.0, longest_s=10.0
+            )
 
 
 def test_no_load_beyond_the_envelope() -> None:

@@ -209,12 +209,12 @@ def test_nothing_by_hand_and_no_second_step_while_energised() -> None:
     guard = guard_of(world)
     with guard.energised(STEP):
         with pytest.raises(Refused, match="while test step is energised"):
-            guard.instruct("turn the board round")
+            guard.refit_fuse("F1")
         with pytest.raises(Refused, match="while test step is energised"), guard.energised(STEP):
             pass
         assert "off" not in world.said
     assert "off" in world.said
-    guard.instruct("take the board out")
+    guard.refit_fuse("F1")
 
 
 @pytest.mark.parametrize(

@@ -9,7 +9,7 @@ import pytest
 from benchkit.errors import OperatorStopped, Refused, Tripped
 from benchkit.guard import Envelope, Guard
 from benchkit.harness import DRAWING, REVERSED, Harness
-from tests.stand_in import Notes, World, guard_of
+from tests.stand_in import Notes, StandInWiring, World, guard_of
 
 TRIAL = Envelope("reverse trial", 12.0, 0.1, 13.7, 0.2, 90.0, 5.0, 60.0, may_limit=True)
 
@@ -85,13 +85,13 @@ def test_no_lead_is_touched_while_anything_is_on_or_charged() -> None:
 
 
 def test_a_declined_rewiring_leaves_nothing_proved() -> None:
-    class Declining:
+    class Declining(StandInWiring):
         def arrange(self, harness: Harness) -> None:
             raise OperatorStopped(f"declined: {harness.sentence()}")
 
     world = World()
     guard = begun(world)
-    guard._wiring = Declining()
+    guard._leads.wiring = Declining(world)
     guard.prove_polarity()
     with pytest.raises(OperatorStopped):
         guard.arrange(REVERSED)
@@ -164,7 +164,7 @@ def test_sentences_say_which_lead_goes_where() -> None:
         "plus terminal (CROSSED, on purpose); connect plus of the load to the guarded plus "
         "terminal and its minus to the guarded minus terminal"
     )
-    assert "leave the exposed port open" in Harness("nothing", "load").sentence()
+    assert "leave the exposed port open" in Harness((), ("load",)).sentence()
 
 
 def test_a_supply_that_trips_at_its_limit_proves_no_direction() -> None:

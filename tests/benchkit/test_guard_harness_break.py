@@ -86,7 +86,7 @@ def test_leads_that_nobody_put_back_are_remembered_as_crossed() -> None:
 
     world = World()
     guard = begun(world)
-    guard._wiring = Declining(world)
+    guard._leads.wiring = Declining(world)
     guard.arrange(REVERSED)
     with pytest.raises(OperatorStopped):
         guard.arrange(DRAWING)
