@@ -38,6 +38,7 @@ from instruments.errors import (
     TransportFault,
 )
 
+DEFAULT_VISA = "@py"
 LONGEST_LINE = 1 << 20
 CHUNK = 1 << 16
 
@@ -65,12 +66,13 @@ _BY_STATUS: dict[int, type[ExchangeError]] = {
 class Link:
     """One VISA resource, opened late, that carries lines ending in ``terminator``.
 
-    ``backend`` is what pyvisa calls the VISA library: '@py' or the path of an installed one. All
-    times are in seconds. Not safe to share between threads: the session above holds the lock.
+    ``backend`` is what pyvisa calls the VISA library: '@py' (pyvisa-py), '@ivi' or the path of an
+    installed one, or 'definitions.yaml@sim' (pyvisa-sim). All times are in seconds. Not safe to
+    share between threads: the session above holds the lock.
     """
 
     def __init__(
-        self, role: str, resource: str, *, terminator: str = "\n", backend: str = "@py"
+        self, role: str, resource: str, *, terminator: str = "\n", backend: str = DEFAULT_VISA
     ) -> None:
         self.role = role
         self.resource = resource
@@ -121,7 +123,8 @@ class Link:
             self.close()
             kind = ConnectionRefused if _kind_of(fault) is ConnectionRefused else CannotOpen
             why = " ".join(str(fault).split()).rstrip(".")
-            raise self._error(kind, f"cannot be opened: {why}", started=started) from fault
+            by = "" if self.backend == DEFAULT_VISA else f" by the VISA library {self.backend!r}"
+            raise self._error(kind, f"cannot be opened{by}: {why}", started=started) from fault
 
     def close(self) -> None:
         """Close; never raises, because there is nothing left that could be done about it."""
@@ -213,7 +216,7 @@ class Link:
     def _check_host(self) -> None:
         # pyvisa-py leaks its socket when the name is unknown, so the name is looked up before.
         parsed = rname.parse_resource_name(self.resource)
-        if self.backend == "@py" and isinstance(parsed, rname.TCPIPSocket):
+        if self.backend == DEFAULT_VISA and isinstance(parsed, rname.TCPIPSocket):
             socket.getaddrinfo(parsed.host_address, int(parsed.port), socket.AF_INET)
 
     def _find_socket(self) -> socket.socket | None:

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from typing import cast
 
 from benchkit.errors import InputError
@@ -15,6 +16,18 @@ from instruments.meter import ScpiMeter
 from instruments.thermometer import ScpiThermometer
 
 QUICK_NPLC = 0.2
+TICK_S = 1e-6
+"""What a meter's timer is set in: an interval in between would drift over a long burst."""
+
+
+@dataclass(frozen=True)
+class _Armed:
+    """A burst that one meter has begun."""
+
+    meter: ScpiMeter
+    points: tuple[str, ...]
+    interval_s: float
+    route_s: float
 
 
 class BenchPoints:
@@ -29,6 +42,7 @@ class BenchPoints:
         """InputError when the bench file declares a range its meter's dialect does not have."""
         self._bench, self._meters, self._thermometers = bench, meters, thermometers
         self._ranges: dict[str, Accuracy] = {}
+        self._armed: list[_Armed] = []
         for name, meter in meters.items():
             strange = [a.range_V for a in self._declared(name) if a.range_V not in meter.ranges_V]
             if strange:
@@ -77,6 +91,17 @@ class BenchPoints:
             status = "overload"
         except NotANumber:
             status = "invalid"
+        return self._reading(point, time_s, volts, status)
+
+    def _worth(self, point: str, time_s: float, volts: float) -> Reading:
+        """A reading of a burst: infinite where it overloaded."""
+        if math.isinf(volts):
+            return self._reading(point, time_s, math.nan, "overload")
+        return self._reading(point, time_s, volts, "invalid" if math.isnan(volts) else "ok")
+
+    def _reading(self, point: str, time_s: float, volts: float, status: Status) -> Reading:
+        """What the volts of a meter are worth at a point."""
+        table, accuracy = self._table(point), self._ranges[point]
         u = accuracy.standard_uncertainty(volts)
         value = volts
         if table.shunt_ohm is not None:
@@ -91,6 +116,50 @@ class BenchPoints:
         for point, table in self._bench.points.items():
             if table.instrument in self._meters:
                 self.expect(point, math.inf)
+
+    def can_burst(self, points: Sequence[str]) -> str | None:
+        """See Points. Points of one meter need a scanner."""
+        for point in points:
+            table = self._bench.points.get(cast("PointName", point))
+            if table is None:
+                return f"points.{point} is not in the bench file"
+            meter = self._meters[table.instrument]
+            if not meter.can_burst:
+                return f"the dialect of {table.instrument} has no [burst]"
+        return None
+
+    def arm_burst(self, points: Sequence[tuple[str, float]], seconds: float) -> None:
+        """See Points. Every meter among them is armed in turn, a message apart."""
+        self._armed = []
+        for point, largest in points:
+            self.expect(point, largest)
+        for name, meter in self._meters.items():
+            mine = [point for point, _ in points if self._table(point).instrument == name]
+            if not mine:
+                continue
+            requests = meter.dialect.burst
+            if requests is None:
+                raise InputError(f"the dialect of {name} has no [burst]")
+            # A long burst is spread thinner: a meter keeps only so many.
+            most = requests.most - 1
+            interval_s = max(meter.shortest_interval_s(len(mine)), seconds / most)
+            interval_s = math.ceil(interval_s / TICK_S - 1e-6) * TICK_S
+            scans = min(math.ceil(seconds / interval_s) + 1, requests.most)
+            routes = [self._table(point).route for point in mine]
+            ranges = [self._ranges[point].range for point in mine]
+            meter.arm_burst(routes, ranges, scans, interval_s)
+            self._armed.append(_Armed(meter, tuple(mine), interval_s, requests.route_s))
+
+    def fetch_burst(self, began_s: float) -> list[Reading]:
+        """See Points; in the order of time, each at the moment its aperture opened."""
+        readings: list[Reading] = []
+        armed, self._armed = self._armed, []
+        for burst in armed:
+            for number, scan in enumerate(burst.meter.fetch_burst()):
+                for place, (point, volts) in enumerate(zip(burst.points, scan, strict=True)):
+                    at = began_s + number * burst.interval_s + place * burst.route_s
+                    readings.append(self._worth(point, round(at, 6), float(volts)))
+        return sorted(readings, key=lambda reading: reading.time_s)
 
     def recover(self, point: str) -> None:
         """Bring the instrument that reads a point back into step, if it is out of it."""

@@ -7,7 +7,7 @@ from dataclasses import replace
 from benchkit.protocols import Protection, SupplyState
 from instruments.dialects.tables import Flag, Programmed, Protecting, SupplyDialect, Switched
 from instruments.errors import NotConfirmed
-from instruments.numbers import format_number, parse_boolean, parse_integer, parse_number
+from instruments.numbers import format_number, parse_boolean, parse_number
 from instruments.session import Session
 from instruments.settings import Setting
 from instruments.switch_off import switch_off
@@ -83,7 +83,7 @@ class ScpiSupply:
         with self._session.reading(message, answers):
             found = Protection(parse_number(answers[0], "V"), parse_number(answers[1], "A"))
             tripped = [
-                _raised(flag, answer)
+                flag.raised(answer)
                 for flag, answer in zip(
                     (d.trip.over_voltage, d.trip.over_current), answers[2:], strict=True
                 )
@@ -102,6 +102,10 @@ class ScpiSupply:
         """Switch the output on, confirmed."""
         self._confirm(self._output(self.dialect.output, on=True))
 
+    def send_off(self) -> None:
+        """Send output-off and wait for nothing."""
+        self._session.blind(self._select + self._output(self.dialect.output, on=False).command)
+
     def disable(self) -> None:
         """Switch the output off: blind first, then confirmed, even when out of step."""
         off = self._output(self.dialect.output, on=False)
@@ -114,7 +118,7 @@ class ScpiSupply:
         by_query = dict(zip(self._state_queries, answers, strict=True))
 
         def raised(flag: Flag) -> bool:
-            return _raised(flag, by_query[self._fill(flag.query)])
+            return flag.raised(by_query[self._fill(flag.query)])
 
         with self._session.reading(self._state_message, answers):
             return SupplyState(
@@ -156,9 +160,3 @@ class ScpiSupply:
     def _output(self, requests: Switched, *, on: bool) -> Setting:
         command = requests.on if on else requests.off
         return Setting(self._fill(command), self._fill(requests.query), expected=on)
-
-
-def _raised(flag: Flag, answer: str) -> bool:
-    if flag.bit is None:
-        return parse_boolean(answer)
-    return bool(parse_integer(answer) >> flag.bit & 1)

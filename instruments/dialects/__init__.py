@@ -17,14 +17,15 @@ from pydantic import BaseModel, ValidationError
 from pydantic_core import ErrorDetails
 
 from benchkit.errors import InputError
+from instruments.dialects.entries import requests_of
 from instruments.dialects.tables import (
     Dialect,
     LoadDialect,
     MeterDialect,
     SupplyDialect,
+    SwitchDialect,
     ThermometerDialect,
     Timing,
-    requests_of,
 )
 
 __all__ = [
@@ -32,6 +33,7 @@ __all__ = [
     "LoadDialect",
     "MeterDialect",
     "SupplyDialect",
+    "SwitchDialect",
     "ThermometerDialect",
     "Timing",
     "load_dialect",
@@ -45,6 +47,7 @@ _KINDS: dict[str, type[Dialect]] = {
     "meter": MeterDialect,
     "thermometer": ThermometerDialect,
     "load": LoadDialect,
+    "switch": SwitchDialect,
 }
 
 
@@ -111,13 +114,24 @@ def _channel_mistakes(raw: dict[str, Any]) -> Iterator[str]:
     """Requests that name a channel where there is none, or do not where there has to be one."""
     channels = raw.get("channels")
     style = channels.get("style") if isinstance(channels, dict) else None
-    tables = {key: table for key, table in raw.items() if key not in {"link", "channels", "about"}}
+    apart = {"link", "channels", "about", "burst"}
+    tables = {key: table for key, table in raw.items() if key not in apart}
     for key, request in requests_of(tables):
         named = "{channel}" in request
         if style == "none" and named:
             yield f"{key}: {{channel}} means nothing with channels.style 'none'"
         if style in {"list", "prefix"} and not named:
             yield f"{key}: the placeholder {{channel}} is missing (channels.style is {style!r})"
+    if isinstance(raw.get("burst"), dict):
+        prepare = str(raw["burst"].get("prepare", ""))
+        named = "{routes}" in prepare
+        if style == "none" and named:
+            yield "burst.prepare: {routes} means nothing with channels.style 'none'"
+        if style in {"list", "prefix"} and prepare and not named:
+            yield (
+                "burst.prepare: the placeholder {routes} is missing "
+                f"(channels.style is {style!r})"
+            )
     if isinstance(raw.get("link"), dict) and "{" in str(raw["link"].get("error_query", "")):
         yield "link.error_query: the error queue belongs to the whole instrument: no placeholder"
 

@@ -1,8 +1,6 @@
 """What a dialect file holds: one model for every table, checked strictly.
 
-A request is the text of one or more SCPI units joined by ';'. Every unit starts at the root
-(':' or '*'), so that requests can be joined into one message. Placeholders are in braces; which
-ones a request has to hold and may hold is written beside it here.
+What a request may look like, and which placeholders it holds, is in ``entries.py``.
 """
 
 from __future__ import annotations
@@ -11,56 +9,28 @@ import re
 from collections.abc import Iterator
 from typing import Annotated, Literal, Self
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validator
+from pydantic import Field, ValidationInfo, field_validator, model_validator
 
 from benchkit.errors import InputError
+from instruments.dialects.entries import (
+    Command,
+    Query,
+    Seconds,
+    Table,
+    Tolerance,
+    ValueCommand,
+    requests_of,
+)
+from instruments.dialects.meter_tables import (
+    ApertureRequests,
+    BurstRequests,
+    MeterReading,
+    RangeRequests,
+)
+from instruments.numbers import parse_boolean, parse_integer
 
 Kind = Literal["identify", "set", "read", "slow"]
-Seconds = Annotated[float, Field(gt=0, le=600, allow_inf_nan=False)]
-Tolerance = Annotated[float, Field(ge=0, allow_inf_nan=False)]
-Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
-_PLACEHOLDER = re.compile(r"\{([^{}]*)\}")
 _CHANNEL = re.compile(r"[0-9A-Za-z_.:]+")
-
-
-def _request(*needed: str, query: bool) -> AfterValidator:
-    def check(text: str) -> str:
-        found = _PLACEHOLDER.findall(text)
-        for name in needed:
-            if name not in found:
-                raise ValueError(f"the placeholder {{{name}}} is missing")
-        for name in found:
-            if name not in {*needed, "channel"}:
-                allowed = ", ".join(f"{{{n}}}" for n in (*needed, "channel"))
-                raise ValueError(f"{{{name}}} means nothing here; only {allowed} may be used")
-        if not text.isascii() or not text.isprintable() or re.search("[{}]", _strip(text)):
-            raise ValueError("only printable ASCII is allowed, and braces only as placeholders")
-        if any(unit[:1] not in {":", "*"} for unit in text.split(";")):
-            raise ValueError("every unit has to start with ':' (the root) or '*'")
-        if query and text.count("?") != 1:
-            raise ValueError("exactly one query (with a '?') is needed here")
-        if not query and "?" in text:
-            raise ValueError("a command is needed here, not a query")
-        return text
-
-    return AfterValidator(check)
-
-
-def _strip(text: str) -> str:
-    return _PLACEHOLDER.sub("", text)
-
-
-Command = Annotated[str, _request(query=False)]
-Query = Annotated[str, _request(query=True)]
-ValueCommand = Annotated[str, _request("value", query=False)]
-RangeCommand = Annotated[str, _request("range", query=False)]
-NplcCommand = Annotated[str, _request("nplc", query=False)]
-
-
-class Table(BaseModel):
-    """A table of a dialect file: nothing unknown, nothing converted, nothing changed later."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid", strict=True)
 
 
 class Timing(Table):
@@ -159,6 +129,12 @@ class Flag(Table):
     query: Query
     bit: Annotated[int, Field(ge=0, le=15)] | None = None
 
+    def raised(self, answer: str) -> bool:
+        """Whether the answer says yes; raises BadNumber for one that says neither."""
+        if self.bit is None:
+            return parse_boolean(answer)
+        return bool(parse_integer(answer) >> self.bit & 1)
+
 
 class Trips(Table):
     """Whether a protection has tripped, and how trips are cleared."""
@@ -183,34 +159,17 @@ class Mode(Table):
     answer: Annotated[str, Field(pattern=r"^[A-Za-z]+$")]
 
 
-class RangeRequests(Table):
-    """Function and range of a meter; ``values`` are the ranges it has, in volts."""
-
-    set: RangeCommand
-    query: Query
-    tolerance: Tolerance
-    values: Annotated[list[Positive], Field(min_length=1)]
-
-
-class ApertureRequests(Table):
-    """Aperture of a meter in power line cycles; ``values`` are those it has."""
-
-    set: NplcCommand
-    query: Query
-    tolerance: Tolerance
-    values: Annotated[list[Positive], Field(min_length=1)]
-
-
-class MeterReading(Table):
-    """One reading; it takes ``apertures`` times the aperture (2 where zero is read as well)."""
-
-    query: Query
-    apertures: Annotated[float, Field(ge=1, le=10)]
-
-
 class PlainReading(Table):
     """One reading."""
 
+    query: Query
+
+
+class RelayRequests(Table):
+    """One relay of a switch unit; ``query`` answers 1 when it is closed and 0 when it is open."""
+
+    close: Command
+    open: Command
     query: Query
 
 
@@ -272,6 +231,18 @@ class MeterDialect(Dialect):
     range: RangeRequests
     aperture: ApertureRequests
     reading: MeterReading
+    burst: BurstRequests | None = None
+
+    @field_validator("burst")
+    @classmethod
+    def _short_enough(
+        cls, burst: BurstRequests | None, info: ValidationInfo
+    ) -> BurstRequests | None:
+        aperture = info.data.get("aperture")
+        if burst and aperture and burst.aperture_nplc not in aperture.values:
+            known = ", ".join(f"{value:g}" for value in aperture.values)
+            raise ValueError(f"aperture_nplc {burst.aperture_nplc:g} is none of {known}")
+        return burst
 
 
 class ThermometerDialect(Dialect):
@@ -291,10 +262,19 @@ class LoadDialect(Dialect):
     measure: Measured
 
 
-def requests_of(tables: dict[str, object], path: str = "") -> Iterator[tuple[str, str]]:
-    """Every text that starts like a request in nested tables, with its dotted key."""
-    for key, entry in tables.items():
-        if isinstance(entry, dict):
-            yield from requests_of(entry, f"{path}{key}.")
-        elif isinstance(entry, str) and entry[:1] in {":", "*"}:
-            yield f"{path}{key}", entry
+class SwitchDialect(Dialect):
+    """A switch unit: relays, each with its route, and digital inputs, each with its name.
+
+    Both stand where a request says ``{channel}``.
+    """
+
+    kind: Literal["switch"]
+    relay: RelayRequests
+    input: Flag
+
+    @field_validator("channels")
+    @classmethod
+    def _has_routes(cls, channels: Channels) -> Channels:
+        if channels.style == "none":
+            raise ValueError("style 'none' cannot name a relay; 'list', 'prefix' or 'select' can")
+        return channels

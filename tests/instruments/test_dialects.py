@@ -45,6 +45,7 @@ def test_the_shipped_dialects_are_these() -> None:
         "supply-list",
         "supply-plain",
         "supply-select",
+        "switch-plain",
         "thermometer-scan",
     )
 
@@ -130,10 +131,31 @@ def test_all_mistakes_are_told_at_once_with_file_and_key(tmp_path: Path) -> None
         ("supply-plain", '":SYST:ERR?"', '":SYST:ERR? {channel}"', "link.error_query: the error"),
         ("supply-plain", 'kind = "supply"', 'name = "x"\nkind = "supply"', "name: leave it out"),
         ("supply-plain", "[output]", "[outputs]", "outputs: unknown key; did you mean 'output'?"),
+        ("meter-scan", "(@{routes})", "(@101)", "burst.prepare: the placeholder {routes} is miss"),
+        ("meter-scan", "{scans}", "{channel}", "burst.prepare: the placeholder {scans} is missing"),
+        ("meter-scan", '":ABOR"', '":ABOR {channel}"', "burst.abort: {channel} means nothing here"),
+        ("meter-scan", '":FETC?"', '":FETC"', "burst.fetch: exactly one query"),
+        ("meter-scan", "nplc = 0.02", "nplc = 0.03", "burst: aperture_nplc 0.03 is none of 0.02,"),
+        ("meter-scan", "most = 10000", "most = 0", "burst.most: "),
+        ("meter-scan", "route_s = 0.001", "", "burst.route_s: this entry is missing"),
+        (
+            "meter-single",
+            ":COUN {scans}",
+            ":COUN {scans},{routes}",
+            "burst.prepare: {routes} means",
+        ),
+        ("switch-plain", 'style = "list"', 'style = "none"', "channels: style 'none' cannot name"),
+        ("switch-plain", ":ROUT:OPEN (@{channel})", ":ROUT:OPEN", "relay.open: the placeholder"),
     ],
 )
 def test_a_mistake_is_named(tmp_path: Path, name: str, old: str, new: str, told: str) -> None:
     assert told in mistakes(edited(tmp_path, name, (old, new)))
+
+
+def test_a_meter_may_have_no_burst(tmp_path: Path) -> None:
+    path = tmp_path / "own.toml"
+    path.write_text(shipped_text("meter-scan").partition("[burst]")[0], encoding="utf-8")
+    assert load_dialect(path, MeterDialect).burst is None
 
 
 def test_a_missing_file_is_named(tmp_path: Path) -> None:

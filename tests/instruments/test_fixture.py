@@ -52,7 +52,7 @@ def test_a_person_who_declines_stops_the_run(what: str) -> None:
         if what == "arrange":
             fixture.arrange(REVERSED)
         else:
-            fixture.place("S-1", Path("stage.toml"))
+            fixture.place("S-1", Path("stage.toml"), DRAWING)
 
 
 def test_the_simulated_bench_is_wired_and_given_boards_by_command() -> None:
@@ -62,15 +62,16 @@ def test_the_simulated_bench_is_wired_and_given_boards_by_command() -> None:
         with closing(Session(link, CONTROL_TIMING, CONTROL_IDENTITY)) as session:
             session.open()
             fixture: Fixture = SimulatedFixture(session)
-            for harness in (REVERSED, Harness("nothing", "load"), DRAWING):
+            for harness in (REVERSED, Harness((), ("load",)), DRAWING):
                 fixture.arrange(harness)
                 assert world.harness == harness
-                exposed, guarded, crossed = session.ask(":SIM:WIRE?").split(",")
-                assert (exposed, guarded) == (f'"{harness.exposed}"', f'"{harness.guarded}"')
+                exposed, guarded, crossed, _ = session.ask(":SIM:WIRE?").split(",")
+                wanted = ["+".join(at) for at in (harness.exposed, harness.guarded)]
+                assert [exposed, guarded] == [f'"{at}"' for at in wanted]
                 assert crossed == str(int(harness.crossed))
             with pytest.raises(InstrumentError, match="the load cannot be at both ports"):
-                fixture.arrange(Harness("load", "load"))
-            fixture.place("S-1", Path("stage.toml"))
+                fixture.arrange(Harness(("load",), ("load",)))
+            fixture.place("S-1", Path("stage.toml"), DRAWING)
             assert world.inserted[-1][0] == "S-1"
             with pytest.raises(InputError, match="cannot build board S-2"):
-                fixture.place("S-2", Path("stage.json"))
+                fixture.place("S-2", Path("stage.json"), DRAWING)
