@@ -6,6 +6,7 @@ Sentences of the world about what cannot be done come back as -224 with the sent
 
 from __future__ import annotations
 
+import math
 from typing import get_args
 
 from benchkit.errors import InputError
@@ -18,6 +19,10 @@ from instruments.simulated.tree import Entry
 
 LONGEST_ADVANCE_S = 1e7
 CONTROL = "control"
+NOT_A_NUMBER = "9.91E37"
+"""SCPI-1999 volume 1, 7.2.1.5 (from memory)."""
+OHMS = Number(0.0, 1e9, unit="OHM", optional=True)
+"""Of a bleeder; 0 is none."""
 
 
 class Control(Device):
@@ -37,8 +42,9 @@ class Control(Device):
                 self.core.elapse,
                 (Number(0.0, LONGEST_ADVANCE_S, unit="S"),),
             ),
-            Entry("SIMulation:WIRE", self._wire, (Text(), Text(), Switch())),
+            Entry("SIMulation:WIRE", self._wire, (Text(), Text(), Switch(), OHMS)),
             Entry("SIMulation:WIRE?", self._wired),
+            Entry("SIMulation:FUSE", self._refit, (Text(),)),
             Entry("SIMulation:INSert", self._insert, (Text(), Text())),
             Entry(
                 "SIMulation:FAULt",
@@ -55,16 +61,25 @@ class Control(Device):
         except (ValueError, InputError) as error:
             raise ScpiError(-224, str(error)) from None
 
-    def _wire(self, exposed: str, guarded: str, crossed: bool) -> None:
+    def _wire(self, exposed: str, guarded: str, crossed: bool, bleeder_ohm: float | None) -> None:
         try:
-            self.core.world.wire(Harness(_at("exposed", exposed), _at("guarded", guarded), crossed))
+            ports = _at("exposed", exposed), _at("guarded", guarded)
+            self.core.world.wire(Harness(*ports, crossed, bleeder_ohm or None))
+        except ValueError as error:
+            raise ScpiError(-224, str(error)) from None
+        self.core.watch()
+
+    def _refit(self, reference: str) -> None:
+        try:
+            self.core.world.refit(reference)
         except ValueError as error:
             raise ScpiError(-224, str(error)) from None
         self.core.watch()
 
     def _wired(self) -> str:
         harness = self.core.world.harness
-        return f'"{harness.exposed}","{harness.guarded}",{int(harness.crossed)}'
+        ports = ",".join(f'"{"+".join(at)}"' for at in (harness.exposed, harness.guarded))
+        return f"{ports},{int(harness.crossed)},{harness.bleeder_ohm or 0:g}"
 
     def _fault(self, name: str, at_s: float, value: float | None) -> None:
         try:
@@ -79,15 +94,20 @@ class Control(Device):
 
     def _truth(self, name: str) -> str:
         try:
-            return f"{self.core.world.truth(name):.12E}"
+            value = self.core.world.truth(name)
         except KeyError:
             raise ScpiError(-224, f"there is no true value named {name!r}") from None
+        return NOT_A_NUMBER if math.isnan(value) else f"{value:.12E}"
 
 
-def _at(port: str, name: str) -> At:
-    """What somebody wants at a port; ValueError for anything that is not on the bench."""
-    known: tuple[At, ...] = get_args(At)
-    for at in known:
-        if at == name:
-            return at
-    raise ValueError(f"{name!r} cannot be at the {port} port: it must be {', '.join(known)}")
+def _at(port: str, joined: str) -> tuple[At, ...]:
+    """Who somebody wants at a port; ValueError for anything that is no instrument to connect."""
+    known: dict[str, At] = {at: at for at in get_args(At)}
+    names = [name.strip() for name in joined.split("+")] if joined else []
+    for name in names:
+        if name not in known:
+            raise ValueError(
+                f"{name!r} cannot be at the {port} port: it must be {', '.join(known)}, several "
+                "joined by '+', or empty for an open port"
+            )
+    return tuple(known[name] for name in names)

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 from benchkit.errors import InputError
 from benchkit.files.bench import BenchFile
+from instruments.simulated.burst import Burst
 from instruments.simulated.core import Core, error_generator, noise_generator
 from instruments.simulated.parameters import Channels, Limit, Number
 from instruments.simulated.scpi import Device
@@ -19,6 +20,10 @@ OVERLOAD = "9.9E37"
 OVER_RANGE = 1.2
 """A value beyond this many times the range is an overload."""
 ROUTING_S = 0.0005
+BURST_STEP_S = 0.001
+"""From one channel of a scan to the next in a burst, with the shortest aperture."""
+BURST_SAMPLE_S = 0.0005
+"""The same for a meter that has one input: its fastest pace."""
 FIRST_CHANNEL, LAST_CHANNEL = 101, 120
 NOISE_OF_RANGE = 1e-6
 NOISE_FLOOR_V = 0.3e-6
@@ -55,6 +60,9 @@ class Meter(Device):
     short-circuited: it reads the meter's own offset.
     """
 
+    burst_step_s = BURST_SAMPLE_S
+    routing_s = 0.0
+
     def __init__(self, core: Core, name: str, bench: BenchFile) -> None:
         table = bench.instruments[name]
         self._probes = probes(bench, name)
@@ -66,6 +74,14 @@ class Meter(Device):
             offset = generator.uniform(-1, 1) * accuracy.range_percent / 100 * accuracy.range_V
             self._errors[accuracy.range_V] = (1 + gain, offset)
         self._ranges = tuple(self._errors)
+        self._burst = Burst(
+            core,
+            self.burst_channels(),
+            self.burst_step_s,
+            self.routing_s,
+            lambda channel: self._input(channel).aperture / self._line_Hz,
+            self._reading,
+        )
         super().__init__(core, name, table.identity)
         self.reset()
         self.inserted()
@@ -74,15 +90,25 @@ class Meter(Device):
     def reset(self) -> None:
         """*RST: every channel in the highest range at 1 NPLC."""
         self._inputs: dict[int | None, _Input] = {}
+        self._burst.preset()
 
     def inserted(self) -> None:
-        """A board was put into the fixture: the noise starts anew."""
+        """A board was put into the fixture: the noise starts anew, a burst ends."""
+        self._burst.abort()
         self._noise = noise_generator(self.core.seed, self.name, self.core.serial)
 
+    def burst_channels(self) -> Sequence[int | None]:
+        """The channels of a burst before any were listed."""
+        return ()
+
     def read(self, channel: int | None) -> str:
-        """Let the aperture pass and return the reading as a response."""
+        """Let the aperture pass and return the reading as a response; READ? ends a burst."""
+        self._burst.abort()
+        self.core.elapse(self._input(channel).aperture / self._line_Hz)
+        return self._reading(channel)
+
+    def _reading(self, channel: int | None) -> str:
         setup = self._input(channel)
-        self.core.elapse(setup.aperture / self._line_Hz)
         probe = self._probes.get(channel)
         true = 0.0 if probe is None else self.core.world.voltage(probe)
         factor, offset = self._errors[setup.range_V]
@@ -100,7 +126,12 @@ class Meter(Device):
         return found
 
     def _configure(self, expected: float | None, channels: Sequence[int | None]) -> None:
-        """CONFigure presets everything: the smallest range that holds the value, 1 NPLC."""
+        """CONFigure presets everything: the smallest range that holds the value, 1 NPLC, and one
+        reading at once, so that a burst is over."""
+        self._burst.preset()
+        self._preset(expected, channels)
+
+    def _preset(self, expected: float | None, channels: Sequence[int | None]) -> None:
         size = self._ranges[-1] if expected is None else abs(expected)
         for channel in channels:
             range_V = next(r for r in self._ranges if r >= size * (1 - 1e-9))
@@ -109,7 +140,7 @@ class Meter(Device):
     def _set_range(self, expected: float, channels: Sequence[int | None]) -> None:
         for channel in channels:
             aperture = self._input(channel).aperture
-            self._configure(expected, [channel])
+            self._preset(expected, [channel])
             self._inputs[channel].aperture = aperture
 
     def _set_aperture(self, value: float, channels: Sequence[int | None]) -> None:
@@ -128,6 +159,9 @@ class ScanMeter(Meter):
     """``meter-scan``: channels 101 to 120 by list; each channel has its own range and aperture,
     and going to it takes 0.5 ms."""
 
+    burst_step_s = BURST_STEP_S
+    routing_s = ROUTING_S
+
     def table(self) -> list[Entry]:
         """The commands with a channel list."""
         named = [channel for channel in self._probes if channel is not None]
@@ -141,6 +175,8 @@ class ScanMeter(Meter):
             Entry(f"{sense}:NPLCycles", self._set_aperture, (self._aperture_number(), channels)),
             Entry(f"{sense}:NPLCycles?", self._apertures_of, (channels,)),
             Entry("READ?", self._scan, (channels,)),
+            Entry("ROUTe:SCAN", self._burst.list_channels, (channels,)),
+            *self._burst.entries("TRIGger[:SEQuence]"),
         ]
 
     def _scan(self, channels: Sequence[int]) -> str:
@@ -159,6 +195,10 @@ class ScanMeter(Meter):
 
 class SingleMeter(Meter):
     """``meter-single``: one input."""
+
+    def burst_channels(self) -> Sequence[int | None]:
+        """That input."""
+        return (next(iter(self._probes), None),)
 
     def table(self) -> list[Entry]:
         """The commands without a channel."""
@@ -193,4 +233,5 @@ class SingleMeter(Meter):
             ),
             Entry(f"{sense}:NPLCycles?", aperture_of, (steps,)),
             Entry("READ?", lambda: self.read(only)),
+            *self._burst.entries("SAMPle"),
         ]

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 RISE_S = 0.004
 FALL_S, FALL_STEP_S = 0.02, 0.04
-NOTHING_V = 1e-6
+NOTHING_V = 1e-3
 
 
 @dataclass
@@ -30,6 +30,17 @@ class RegulatedOutput:
     def restart(self) -> None:
         """Nothing left of what was before: a board was put in."""
         self.emf_V = self.at_switch_V = self.since_switch_s = 0.0
+
+    def steady_s(self) -> float:
+        """How long its voltage stays what it is."""
+        if self.on:
+            if self.emf_V == self.volts:
+                return math.inf
+            return max(0.0, RISE_S - self.since_switch_s)
+        if self.emf_V == 0:
+            return math.inf
+        steps = math.floor(self.since_switch_s / FALL_STEP_S)
+        return (steps + 1) * FALL_STEP_S - self.since_switch_s
 
     def pass_time(self, seconds: float) -> None:
         """Up after a dead time; down like a capacitor that discharges, in steps, because every

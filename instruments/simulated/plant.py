@@ -8,31 +8,28 @@ constants than any fit assumes.
 
 from __future__ import annotations
 
-import math
 import random
 from pathlib import Path
 
 from benchkit.errors import InputError
 from benchkit.files import BenchFile
-from benchkit.harness import DRAWING, Harness
+from benchkit.harness import Harness, Source
 from instruments.simulated.armed import (
     CONDUCTS_BACK,
     CROSSING_STUCK,
-    LEAD_RESISTANCE,
+    LOOP_OPEN,
     ArmedFaults,
 )
-from instruments.simulated.board import Board, make_board, seed_of
-from instruments.simulated.circuit import Hookup, Moment, PortCircuit
+from instruments.simulated.board import make_board, seed_of
+from instruments.simulated.drives import Drives
 from instruments.simulated.heat import LONGEST_STEP_S
-from instruments.simulated.output import RegulatedOutput
+from instruments.simulated.hookup import Hookup
+from instruments.simulated.leads import Leads
+from instruments.simulated.mounted import Mounted, State
 from instruments.simulated.timebase import Timebase
 
-LOAD_LAG_S = 0.003
-LEAD_OHM = 0.018
-LAWS_END_C = 250.0
-"""The laws of the parts are not valid beyond; a real part would soon be dead."""
-NEAR_K = 2.0
 ROUNDING_S = 1e-6
+SHORTEST_STEP_S = 1e-9
 HOT_V = 0.5
 """More than this at a port, and nobody should touch the leads."""
 FLOATING_V = 0.0137
@@ -46,7 +43,6 @@ class Plant:
             raise InputError(f"{bench_path}: has no [simulated] table, so it cannot be simulated")
         self._time = timebase
         self._settings = bench.simulated
-        self._bleeder_ohm = bench.bench.bleeder_ohm
         draw = random.Random(seed_of(self._settings.seed, "wiring"))
         current, drop = bench.points["exposed_current"], bench.points["drop"]
         share = current.shunt_tolerance_percent / 100
@@ -56,16 +52,11 @@ class Plant:
         )
         self._thermal_V_per_K = draw.uniform(-1, 1) * drop.thermoelectric_V_per_K
         self._faults = ArmedFaults()
-        self._board: Board | None = None
-        self._circuit: PortCircuit | None = None
-        self._age_s = 0.0
+        self._drives, self._leads = Drives(bench), Leads(bench)
+        self._loop = bench.wiring.loop if bench.wiring is not None else None
+        self._mounted: Mounted | None = None
         self._lived_until = timebase.now()
-        self._output = RegulatedOutput()
-        self._command_load = ("CURR", 0.0, False)
-        self._amps = 0.0
-        self._harness = DRAWING
         self._hot_rewirings = 0
-        self._moment: Moment | None = None
 
     # World: time
 
@@ -94,32 +85,44 @@ class Plant:
     def _live_through(self, seconds: float) -> None:
         left = seconds
         while left > 0:
-            step = min(left, LONGEST_STEP_S)
-            self._live(step)
-            left -= step
-        self._age_s += seconds
+            left -= self._live(left)
+        if self._mounted is not None:
+            self._mounted.age_s += seconds
 
-    def _live(self, seconds: float) -> None:
-        self._output.pass_time(seconds)
-        self._amps = _towards(self._amps, self._target_amps(), seconds / LOAD_LAG_S)
-        if self._board is not None:
-            self._board.heat.pass_time(seconds, max(self._quantity("loss"), 0.0))
+    def _live(self, at_most_s: float) -> float:
+        """Live through one step, and say how long it was.
 
-    def _target_amps(self) -> float:
-        mode, value, drawing = self._command_load
-        return value if drawing and mode == "CURR" else 0.0
+        Where a fate hangs on the moment, the currents at its beginning hold for a step in which
+        they do not change; elsewhere the state at its end holds for the whole of it.
+        """
+        mounted, drives, step = self._mounted, self._drives, min(at_most_s, LONGEST_STEP_S)
+        if mounted is None:
+            drives.pass_time(step)
+            return step
+        wear = mounted.board.wear
+        if wear.fine:
+            state = self._state(mounted)
+            fitting = min(drives.steady_s(), wear.step_s(*mounted.currents(state)))
+            step = min(step, max(fitting, SHORTEST_STEP_S))
+            mounted.wear(step, state)
+        drives.pass_time(step)
+        state = self._state(mounted)
+        if not wear.fine:
+            mounted.wear(step, state)
+        mounted.board.heat.pass_time(step, max(state.value("loss"), 0.0))
+        return step
 
     # World: what the instruments do
 
-    def command_supply(self, voltage_V: float, current_A: float, on: bool) -> None:
-        """Take the supply's new set-points."""
+    def command_supply(self, source: Source, voltage_V: float, current_A: float, on: bool) -> None:
+        """Take a supply's new set-points."""
         self._catch_up()
-        self._output.command(voltage_V, current_A, on)
+        self._drives.outputs[source].command(voltage_V, current_A, on)
 
     def command_load(self, mode: str, value: float, on: bool) -> None:
         """Take the load's new set-point."""
         self._catch_up()
-        self._command_load = (mode, value, on)
+        self._drives.load = (mode, value, on)
 
     # World: what a person does
 
@@ -127,7 +130,7 @@ class Plant:
         """Put a board in, right way round; everything at ambient, board time 0."""
         self._lived_until = self.now()
         try:
-            self._board = make_board(
+            board = make_board(
                 Path(stage_path),
                 serial,
                 self._settings.seed,
@@ -136,29 +139,46 @@ class Plant:
             )
         except InputError as error:
             raise ValueError(str(error)) from None
-        self._circuit = PortCircuit(self._board)
-        self._age_s = self._amps = 0.0
-        self._output.restart()
-        self._harness = DRAWING
-        self._moment = None
+        self._mounted = Mounted(board)
+        self._drives.restart()
+        self._leads.restart(self._leads.normal(board.stage))
         self._faults.arm_spelled(self._settings.faults)
 
     def wire(self, harness: Harness) -> None:
-        """Connect supply and load otherwise; done with anything hot it is counted."""
-        for name in ("supply", "load"):
-            if harness.exposed == harness.guarded == name:
-                raise ValueError(f"the {name} cannot be at both ports: the bench has one")
-        if harness == self._harness:
+        """Connect the instruments otherwise; done with anything hot it is counted."""
+        self._leads.check(harness)
+        if harness == self._leads.by_hand:
             return
-        ports = [abs(self._read(f"{port}_voltage")) for port in ("exposed", "guarded")]
-        self._hot_rewirings += self._output.on or max(ports) > HOT_V
+        self._count_hot()
         if self.active(CROSSING_STUCK) is None:
-            self._harness = harness
+            self._leads.wire(harness)
+
+    def refit(self, reference: str) -> None:
+        """Put a new fuse in; done with anything hot it is counted."""
+        if self._mounted is None:
+            raise ValueError("there is no board in the fixture")
+        self._mounted.refit(reference)
+        self._count_hot()
+
+    def relay(self, route: str, closed: bool) -> None:
+        """Open or close a route of the switch unit; a relay moved hot is counted too."""
+        if self._leads.moves(route, closed):
+            self._count_hot()
+            self._leads.relay(route, closed)
+
+    def _count_hot(self) -> None:
+        ports = [abs(self._read(f"{port}_voltage")) for port in ("exposed", "guarded")]
+        on = any(output.on for output in self._drives.outputs.values())
+        self._hot_rewirings += on or max(ports) > HOT_V
+
+    def line(self, name: str) -> bool:
+        """Whether a digital input is high."""
+        return name == self._loop and self.active(LOOP_OPEN) is None
 
     @property
     def harness(self) -> Harness:
-        """What is connected where."""
-        return self._harness
+        """What is connected where, through leads and relays."""
+        return self._leads.connected
 
     def fault(self, name: str, at_s: float, value: float) -> None:
         """Arm a fault of wiring, instrument or link."""
@@ -172,13 +192,17 @@ class Plant:
         """The value of a fault whose time has come, or None."""
         return self._faults.active(name, self._age_s)
 
+    @property
+    def _age_s(self) -> float:
+        return self._mounted.age_s if self._mounted is not None else 0.0
+
     # World: true quantities
 
-    def supply_terminals(self) -> tuple[float, float, bool]:
-        """True volts and amperes of the supply, and whether it limits its current."""
-        amps = self._read("supply_current")
-        limits = self._output.on and amps >= 0.999 * self._output.limit_A
-        return self._read("supply_voltage"), amps, limits
+    def supply_terminals(self, source: Source) -> tuple[float, float, bool]:
+        """True volts and amperes of a source, and whether it limits its current."""
+        amps, output = self._read(f"{source}_current"), self._drives.outputs[source]
+        limits = output.on and amps >= 0.999 * output.limit_A
+        return self._read(f"{source}_voltage"), amps, limits
 
     def load_terminals(self) -> tuple[float, float]:
         """True volts and amperes of the load."""
@@ -190,86 +214,74 @@ class Plant:
             return FLOATING_V
         if probe == "exposed_current":
             return self._read("exposed_current") * self._shunt
+        mounted = self._mounted
         if probe == "drop":
-            board = self._board
-            warm = board.heat.case_K if board else 0.0
+            warm = mounted.board.heat.case_K if mounted else 0.0
             fixture = self._fixture_ohm * self._read("exposed_current")
             return self._read("drop") + fixture + self._thermal_V_per_K * warm
+        if probe == "gate_voltage" and (mounted is None or mounted.board.stage.gate_nodes is None):
+            return FLOATING_V
         return self._read(probe)
 
     def temperature(self, probe: str) -> float | None:
         """True degrees Celsius at a sensor; None when it is open."""
         if self.active(f"sensor-open:{probe}") is not None:
             return None
-        return self._ambient() + (
-            self._board.heat.sensor_K if probe == "case" and self._board else 0.0
-        )
+        mounted = self._mounted
+        if mounted is None:
+            return self._settings.ambient_C
+        return mounted.ambient_C + (mounted.board.heat.sensor_K if probe == "case" else 0.0)
 
     def truth(self, name: str) -> float:
-        """For campaigns: ``drop@3.0`` (V at 3 A, now), ``thermal_resistance@0.5`` (K/W at 0.5 W),
-        ``case_K``, ``junction_C``, ``hot_rewirings``, or a quantity of the circuit such as
-        ``loss`` or ``gate_voltage``."""
-        what, _, at = name.partition("@")
-        board, circuit = self._board, self._circuit
-        if what == "hot_rewirings":
+        """For campaigns; KeyError for a name that the board or the bench has nothing for.
+
+        Of the bench: ``hot_rewirings``, ``relay_shorts``. Of the board: ``drop@3.0`` (V at 3 A,
+        now), ``thermal_resistance@0.5`` (K/W at 0.5 W), ``case_K``, ``junction_C``, ``part_dead``
+        (0 or 1), and of its fuse ``fuse_open`` (0 or 1), ``fuse_cleared_s`` (s from the current's
+        rise above the opening current until it was open; not a number before) and ``fuse_A2s``
+        (let through in that time; so far, before); with several, ``fuse_open:F2``. Or a quantity
+        of the circuit, such as ``loss``, ``gate_voltage``, ``battery_current``.
+        """
+        if name == "hot_rewirings":
             return float(self._hot_rewirings)
-        if board is None or circuit is None:
+        if name == "relay_shorts":
+            return float(self._leads.shorts)
+        mounted = self._mounted
+        if mounted is None:
             raise KeyError(name)
-        if what == "drop" and at:
-            return circuit.at(self._hookup(), float(at), self._junction()).values["drop"]
-        if what == "thermal_resistance":
-            loss = float(at)
-            return board.heat.final_case_K(loss) / loss
-        if what in ("case_K", "junction_C"):
-            return board.heat.case_K if what == "case_K" else self._junction()
-        return self._read(what)
-
-    def _ambient(self) -> float:
-        if self._board is None:
-            return self._settings.ambient_C
-        age = self._age_s
-        swing = math.sin(age / 290.0 + self._board.ambient_phase)
-        return self._board.ambient_C + self._board.ambient_swing_K * swing
-
-    def _junction(self) -> float:
-        heat = self._board.heat if self._board else None
-        warm = self._ambient() + (heat.case_K + heat.junction_K if heat else 0.0)
-        return min(warm, LAWS_END_C)
+        self._catch_up()
+        known = mounted.truth(name, self._hookup())
+        return self._read(name) if known is None else known
 
     def _read(self, name: str) -> float:
         self._catch_up()
-        return self._quantity(name)
-
-    def _quantity(self, name: str) -> float:
-        if self._circuit is None:
+        mounted = self._mounted
+        if mounted is None:
             return self._empty(name)
-        hookup, junction, moment = self._hookup(), self._junction(), self._moment
-        if moment is None or moment.hookup != hookup or abs(junction - moment.junction_C) > NEAR_K:
-            # At the current the load is going to: on the way there the straight line serves.
-            moment = self._moment = self._circuit.at(hookup, self._target_amps(), junction)
-        return moment.at(name, self._amps, junction)
+        return self._state(mounted).value(name)
+
+    def _state(self, mounted: Mounted) -> State:
+        return mounted.state(self._hookup(), self._drives.target_A, self._drives.amps)
 
     def _empty(self, name: str) -> float:
         """A quantity of a fixture with no board in it."""
-        if name == "supply_voltage":
-            return self._output.emf_V
-        if name == "exposed_voltage" and self._harness.exposed == "supply":
-            return self._harness.sign * self._output.emf_V
-        return 0.0
+        what, _, quantity = name.partition("_")
+        if quantity != "voltage":
+            return 0.0
+        outputs = self._drives.outputs
+        for source, output in outputs.items():
+            if source == what:
+                return output.emf_V
+        held = [outputs[s].emf_V for s, port in self.harness.sources() if port == what]
+        return max(held, default=0.0) * (self.harness.sign if what == "exposed" else 1)
 
     def _hookup(self) -> Hookup:
-        output, lead = self._output, LEAD_OHM + (self.active(LEAD_RESISTANCE) or 0.0)
+        leads, faults, age = self._leads, self._faults, self._age_s
         return Hookup(
-            self._harness, output.emf_V, output.limit_A, output.on, *self._command_load,
-            self._shunt, lead, self.active(CONDUCTS_BACK) is not None,
-            self._bleeder_ohm if self._harness.crossed else None,
+            faults.connected(leads.connected, age), leads.shorted,
+            self._drives.feeds(faults, age), *self._drives.load,
+            self.active(CONDUCTS_BACK) is not None, self._shunt,
         )  # fmt: skip
-
-
-def _towards(value: float, target: float, time_constants: float) -> float:
-    """First-order approach, exact once it is within a part in a billion."""
-    moved = target + (value - target) * math.exp(-time_constants)
-    return target if abs(moved - target) <= 1e-9 * max(abs(target), 1.0) else moved
 
 
 def build_plant(bench: BenchFile, bench_path: Path, timebase: Timebase) -> Plant:

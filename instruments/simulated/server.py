@@ -23,6 +23,7 @@ from instruments.simulated.message import end_of_message
 from instruments.simulated.meter import ScanMeter, SingleMeter
 from instruments.simulated.scpi import Device
 from instruments.simulated.supply_tables import ListSupply, PlainSupply, SelectSupply
+from instruments.simulated.switch import SwitchUnit
 from instruments.simulated.thermometer import Thermometer
 from instruments.simulated.world import World
 
@@ -41,6 +42,7 @@ PERSONALITIES: dict[str, dict[str, Maker]] = {
     "meter": {"meter-single": SingleMeter, "meter-scan": ScanMeter},
     "thermometer": {"thermometer-scan": Thermometer},
     "load": {"load-plain": Load},
+    "switch": {"switch-plain": SwitchUnit},
 }
 """By kind of instrument; the first of a kind serves dialects of the user's own."""
 

@@ -9,6 +9,7 @@ import random
 
 from benchkit.errors import InputError
 from benchkit.files.bench import BenchFile
+from benchkit.harness import Source
 from instruments.simulated.core import Core, error_generator, noise_generator
 from instruments.simulated.scpi import Device
 
@@ -63,6 +64,7 @@ class Supply(Device):
 
     def __init__(self, core: Core, name: str, bench: BenchFile) -> None:
         table = bench.instruments[name]
+        self.source: Source = table.stands_for or "supply"
         try:
             self.wired = int(table.channel or "1")
         except ValueError:
@@ -109,7 +111,7 @@ class Supply(Device):
             voltage = max(0.0, output.voltage * factor + offset)
             factor, offset = self._set_current
             current = max(0.0, output.current * factor + offset)
-            self.core.world.command_supply(voltage, current, output.closed)
+            self.core.world.command_supply(self.source, voltage, current, output.closed)
 
     def _relay_stuck(self) -> bool:
         active = self.core.world.active
@@ -127,7 +129,7 @@ class Supply(Device):
     def terminals(self, output: Output) -> tuple[float, float, bool]:
         """True voltage, current, and whether the current is limited."""
         if output is self.outputs[self.wired]:
-            return self.core.world.supply_terminals()
+            return self.core.world.supply_terminals(self.source)
         return (output.voltage if output.closed else 0.0), 0.0, False
 
     def measured(self, output: Output, which: int) -> float:
@@ -159,7 +161,7 @@ class Supply(Device):
             return
         if not (output.voltage_guarded or output.current_guarded):
             return
-        voltage, current, limited = self.core.world.supply_terminals()
+        voltage, current, limited = self.core.world.supply_terminals(self.source)
         over = limited if self.trips_at_limit else current > output.current_level
         if not (output.current_guarded and over):
             output.over_since = None

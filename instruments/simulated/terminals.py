@@ -12,7 +12,8 @@ from benchkit.circuit.network import Branch
 Floats = NDArray[np.float64]
 
 SUPPLY_OHM = 0.005
-PRELOAD_A, NARROW_A = 0.05, 0.01
+SUPPLY_EDGES, BATTERY_EDGES = (0.05, 0.01), (0.005, 0.001)
+"""The preload that an output sinks at most, and how softly it ends, in amperes."""
 FADE_V = 0.05
 VOLT_MODE_OHM = 0.05
 BLEED_S = 5e-6
@@ -75,12 +76,15 @@ class SupplyOutput:
     limit_A: float
     ohms: float
     """Its own, and those of the lead (and of the shunt, where that is) up to the port."""
+    preload_A: float = SUPPLY_EDGES[0]
+    narrow_A: float = SUPPLY_EDGES[1]
 
     def branches(self, volts: Floats) -> list[Branch]:
         """Smoothed at both ends (softplus), so that it can be solved."""
         wide = 0.02 * self.limit_A + 0.005
         asked = (self.emf_V - volts[0] + volts[1]) / self.ohms
-        low, high = (asked + PRELOAD_A) / NARROW_A, (asked - self.limit_A) / wide
-        given = NARROW_A * np.logaddexp(0.0, low) - PRELOAD_A - wide * np.logaddexp(0.0, high)
+        narrow, preload = self.narrow_A, self.preload_A
+        low, high = (asked + preload) / narrow, (asked - self.limit_A) / wide
+        given = narrow * np.logaddexp(0.0, low) - preload - wide * np.logaddexp(0.0, high)
         slope = 0.5 * (np.tanh(0.5 * low) - np.tanh(0.5 * high)) / self.ohms
         return [Branch(0, 1, -given, ((0, 1, slope),))]

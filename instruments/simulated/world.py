@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from typing import Protocol
 
-from benchkit.harness import Harness
+from benchkit.harness import Harness, Source
 
 
 class World(Protocol):
@@ -20,11 +20,11 @@ class World(Protocol):
     def elapse(self, seconds: float) -> None:
         """Let bench time pass: at once with a virtual clock, by sleeping in real time."""
 
-    def command_supply(self, voltage_V: float, current_A: float, on: bool) -> None:
-        """What the supply's regulator now tries to hold."""
+    def command_supply(self, source: Source, voltage_V: float, current_A: float, on: bool) -> None:
+        """What a source's regulator now tries to hold."""
 
-    def supply_terminals(self) -> tuple[float, float, bool]:
-        """True voltage and current at the supply's terminals, and whether it limits current."""
+    def supply_terminals(self, source: Source) -> tuple[float, float, bool]:
+        """True voltage and current at a source's terminals, and whether it limits current."""
 
     def command_load(self, mode: str, value: float, on: bool) -> None:
         """What the load now tries to hold: mode "CURR", "VOLT" or "RES"."""
@@ -41,14 +41,27 @@ class World(Protocol):
 
     @property
     def harness(self) -> Harness:
-        """Which instrument is at which port of the board, and which way round."""
+        """Which instrument is at which port of the board, and which way round: as leads and
+        relays together have it."""
 
     def wire(self, harness: Harness) -> None:
-        """Connect supply and load otherwise, as a person or a relay does; ValueError with a plain
-        sentence when nobody could."""
+        """Connect the instruments otherwise, as a person does with the leads; ValueError with a
+        plain sentence when nobody could."""
+
+    def refit(self, reference: str) -> None:
+        """Put a new fuse in the place of this one; ValueError for a part that is none."""
+
+    def relay(self, route: str, closed: bool) -> None:
+        """Open or close a route of the switch unit; one that [wiring] does not name leads
+        nowhere."""
+
+    def line(self, name: str) -> bool:
+        """Whether a digital input of the switch unit is high: the interlock loop's is, unless it
+        is open; one that [wiring] does not name is low."""
 
     def insert(self, serial: str, stage_path: str) -> None:
-        """Put a board into the fixture, the right way round: everything at ambient, board time 0.
+        """Put a board into the fixture, connected as it is used, relays the right way round:
+        everything at ambient, board time 0.
 
         Raises ValueError with a plain sentence when the stage file cannot be used."""
 

@@ -5,13 +5,14 @@
 
 from __future__ import annotations
 
+import math
 import sys
 from dataclasses import dataclass, field
 from pathlib import Path
 
 from benchkit.files.bench import BenchFile
 from benchkit.files.loading import parse
-from benchkit.harness import DRAWING, Harness
+from benchkit.harness import DRAWING, Harness, Source
 from instruments.simulated.core import Core
 from instruments.simulated.server import build_devices
 from instruments.simulated.timebase import Timebase, VirtualTime
@@ -72,6 +73,37 @@ seed = 7
 serial = "T-1"
 """
 
+BATTERY = """
+[instruments.battery]
+kind = "supply"
+resource = "simulated"
+dialect = "supply-plain"
+identity = "Northlight,NL-36"
+calibration_due = 2031-01-31
+stands_for = "battery"
+bleeder_ohm = 100.0
+"""
+
+SWITCH = """
+[instruments.switch]
+kind = "switch"
+resource = "simulated"
+dialect = "switch-plain"
+identity = "Weir,R8"
+calibration_due = 2031-01-31
+
+[wiring]
+instrument = "switch"
+loop = "loop"
+straight = "301"
+crossed = "302"
+bleeder = "303"
+"""
+WITH_BATTERY = ("[simulated]", BATTERY + "[simulated]")
+WITH_SWITCH = ("[simulated]", SWITCH + "[simulated]")
+WITH_BLEEDER = ("power_max_W = 100.0", "power_max_W = 100.0\nbleeder_ohm = 1000.0")
+"""Swaps for ``bench_file``: a battery's stand-in; relays and the loop, which need the bleeder."""
+
 
 def bench_file(*swaps: tuple[str, str]) -> BenchFile:
     """The bench above, after replacing one text by another, pair by pair."""
@@ -92,12 +124,15 @@ class FakeWorld:
         default_factory=lambda: {"case": 40.0, "ambient": 25.0}
     )
     supply: tuple[float, float, bool] = (0.0, 0.0, False)
+    battery: tuple[float, float, bool] = (0.0, 0.0, False)
     load: tuple[str, float, bool] = ("CURR", 0.0, False)
     current: float = 0.0
     limits: bool = False
     faults: dict[str, tuple[float, float]] = field(default_factory=dict)
     inserted: list[tuple[str, str]] = field(default_factory=list)
     harness: Harness = DRAWING
+    relays: dict[str, bool] = field(default_factory=dict)
+    lines: dict[str, bool] = field(default_factory=dict)
 
     def now(self) -> float:
         return self.timebase.now()
@@ -105,18 +140,18 @@ class FakeWorld:
     def elapse(self, seconds: float) -> None:
         self.timebase.elapse(seconds)
 
-    def command_supply(self, voltage_V: float, current_A: float, on: bool) -> None:
-        self.supply = (voltage_V, current_A, on)
+    def command_supply(self, source: Source, voltage_V: float, current_A: float, on: bool) -> None:
+        setattr(self, source, (voltage_V, current_A, on))
 
-    def supply_terminals(self) -> tuple[float, float, bool]:
-        voltage, _, on = self.supply
+    def supply_terminals(self, source: Source) -> tuple[float, float, bool]:
+        voltage, _, on = self.supply if source == "supply" else self.battery
         return (voltage, self.current, self.limits) if on else (0.0, 0.0, False)
 
     def command_load(self, mode: str, value: float, on: bool) -> None:
         self.load = (mode, value, on)
 
     def load_terminals(self) -> tuple[float, float]:
-        return self.supply_terminals()[0], self.current
+        return self.supply_terminals("supply")[0], self.current
 
     def voltage(self, probe: str) -> float:
         return self.volts.get(probe, 0.0)
@@ -125,14 +160,25 @@ class FakeWorld:
         return self.temperatures[probe]
 
     def wire(self, harness: Harness) -> None:
-        if harness.exposed == harness.guarded == "load":
+        if "load" in harness.exposed and "load" in harness.guarded:
             raise ValueError("the load cannot be at both ports")
         self.harness = harness
+
+    def relay(self, route: str, closed: bool) -> None:
+        self.relays[route] = closed
+
+    def line(self, name: str) -> bool:
+        return self.lines.get(name, False)
 
     def insert(self, serial: str, stage_path: str) -> None:
         if not stage_path.endswith(".toml"):
             raise ValueError(f'{stage_path}: there is no such file, give a "stage" file')
         self.inserted.append((serial, stage_path))
+
+    def refit(self, reference: str) -> None:
+        if not reference.startswith("F"):
+            raise ValueError(f"{reference} is no fuse of this board that could be replaced")
+        self.inserted.append((reference, "new"))
 
     def fault(self, name: str, at_s: float, value: float) -> None:
         if ":" not in name:
@@ -147,7 +193,7 @@ class FakeWorld:
         return value if value is not None and self.now() >= at_s else None
 
     def truth(self, name: str) -> float:
-        return {"drop": 0.345}[name]
+        return {"drop": 0.345, "never": math.nan}[name]
 
 
 class Bench:

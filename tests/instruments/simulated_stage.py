@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from pathlib import Path
 
 from benchkit.harness import REVERSED
@@ -13,13 +13,25 @@ from tests.instruments.simulated_fake import bench_file
 
 Make = Callable[..., Plant]
 VOLTS, LIMIT = 12.0, 1.0
+EMPTY: Mapping[str, str | None] = {}
 
 
-def plant_with(folder: Path, topology: str, *faults: str, wiring: tuple[str, ...] = ()) -> Plant:
-    """One name for every stage, so that a mirror is made of the same parts."""
+def plant_with(
+    folder: Path,
+    topology: str,
+    *faults: str,
+    wiring: tuple[str, ...] = (),
+    bench_has: tuple[tuple[str, str], ...] = (),
+    parts: Mapping[str, str | None] = EMPTY,
+) -> Plant:
+    """One name for every stage, so that a mirror is made of the same parts.
+
+    wiring: faults of the bench. bench_has: swaps for ``bench_file``. parts: as of ``text``.
+    """
     path = folder / f"{topology}.toml"
-    path.write_text(text(topology).replace(f"Buoy charger, {topology}", "Buoy"), "utf-8")
-    bench = bench_file()
+    told = text(topology, "", "", **parts).replace(f"Buoy charger, {topology}", "Buoy")
+    path.write_text(told, "utf-8")
+    bench = bench_file(*bench_has)
     assert bench.simulated is not None
     bench.simulated.boards["S-1"] = list(faults)
     bench.simulated.faults.extend(wiring)
@@ -29,7 +41,7 @@ def plant_with(folder: Path, topology: str, *faults: str, wiring: tuple[str, ...
 
 
 def energise(plant: Plant, volts: float = VOLTS, limit: float = LIMIT, load: float = 0.0) -> None:
-    plant.command_supply(volts, limit, True)
+    plant.command_supply("supply", volts, limit, True)
     plant.command_load("CURR", load, load > 0)
     plant.elapse(0.5)
 
@@ -38,3 +50,11 @@ def crossed(plant: Plant, volts: float = VOLTS, limit: float = LIMIT, load: floa
     plant.wire(REVERSED)
     energise(plant, volts, limit, load)
     return plant
+
+
+def kick(plant: Plant, volts: float = 6.0, limit: float = 0.5) -> None:
+    """Switch the battery's stand-in on for a moment, and off again."""
+    plant.command_supply("battery", volts, limit, True)
+    plant.elapse(0.5)
+    plant.command_supply("battery", volts, limit, False)
+    plant.elapse(1)

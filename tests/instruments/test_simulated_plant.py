@@ -31,7 +31,8 @@ def test_a_stage_in_the_minus_lead_is_the_mirror_of_one_in_the_plus_lead(
         plant.wire(wiring)
         energise(plant, limit=5.0, load=2.0)
         names = ("drop", "exposed_voltage", "exposed_current", "guarded_voltage")
-        seen.append([*(plant.voltage(name) for name in names), *plant.supply_terminals()[:2]])
+        seen.append([plant.voltage(name) for name in names])
+        seen[-1] += plant.supply_terminals("supply")[:2]
         seen[-1] += [plant.truth("loss"), abs(plant.truth("gate_voltage"))]
     assert seen[0] == pytest.approx(seen[1], rel=1e-6, abs=1e-9)
     assert abs(seen[0][0]) > 0.02
@@ -42,7 +43,7 @@ def test_a_crossed_supply_sees_its_own_volts_and_the_port_the_reverse(
     make: Make, topology: str
 ) -> None:
     plant = crossed(make(topology), load=2.0)
-    volts, amps, limits = plant.supply_terminals()
+    volts, amps, limits = plant.supply_terminals("supply")
     assert volts == pytest.approx(VOLTS, abs=1e-3)
     assert not limits
     assert plant.voltage("exposed_voltage") == pytest.approx(-VOLTS, abs=1e-3)
@@ -83,9 +84,9 @@ def test_a_series_diode_leaks_into_what_is_on_the_guarded_side(make: Make) -> No
 def test_a_short_lets_the_reverse_through(make: Make, topology: str) -> None:
     plant = crossed(make(topology, "short"))
     assert plant.voltage("guarded_voltage") == pytest.approx(-VOLTS, abs=1e-3)
-    assert not plant.supply_terminals()[2]  # nothing on the guarded side takes it
+    assert not plant.supply_terminals("supply")[2]  # nothing on the guarded side takes it
     plant = crossed(make(topology, "short", wiring=("load-conducts-back",)))
-    volts, amps, limits = plant.supply_terminals()
+    volts, amps, limits = plant.supply_terminals("supply")
     assert limits
     assert amps == pytest.approx(LIMIT, rel=1e-3)
     assert plant.truth("exposed_current") == pytest.approx(-LIMIT, rel=1e-3)
@@ -99,13 +100,13 @@ def test_a_board_that_works_keeps_its_supply_out_of_its_limit_whatever_the_load(
     make: Make, topology: str
 ) -> None:
     plant = crossed(make(topology, wiring=("load-conducts-back",)))
-    assert not plant.supply_terminals()[2]
+    assert not plant.supply_terminals("supply")[2]
     assert plant.voltage("guarded_voltage") > -0.6
 
 
 def test_a_clamp_takes_all_that_a_crossed_supply_can_give(make: Make) -> None:
     plant = crossed(make("clamp"))
-    _, amps, limits = plant.supply_terminals()
+    _, amps, limits = plant.supply_terminals("supply")
     assert limits
     assert amps == pytest.approx(LIMIT, rel=1e-3)
     assert plant.truth("exposed_current") == pytest.approx(-LIMIT, rel=1e-3)
@@ -184,7 +185,7 @@ def test_what_goes_in_at_the_terminals_is_what_comes_out_and_what_warms(
     plant.wire(wiring)
     energise(plant, limit=5.0, load=2.0)
     into = plant.voltage("exposed_voltage") * plant.truth("exposed_current")
-    volts, amps, _ = plant.supply_terminals()
+    volts, amps, _ = plant.supply_terminals("supply")
     lead = 0.018 + plant.voltage("exposed_current") / plant.truth("exposed_current")
     assert volts * amps == pytest.approx(into + lead * amps**2, rel=1e-6, abs=1e-9)
     load_volts, load_amps = plant.load_terminals()

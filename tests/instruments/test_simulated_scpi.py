@@ -109,10 +109,16 @@ def test_control_port(bench: Bench) -> None:
     bench.tell("control", ":SIM:FAUL:CLE")
     assert bench.world.faults == {}
     assert float(bench.ask("control", ':SIM:TRUT? "drop"')) == 0.345
-    assert bench.ask("control", ":SIM:WIRE?") == '"supply","load",0'
-    bench.tell("control", ':SIM:WIRE "nothing","load",1')
-    assert bench.world.harness == Harness("nothing", "load", crossed=True)
-    assert bench.ask("control", ":SIMULATION:WIRE?") == '"nothing","load",1'
+    assert bench.ask("control", ':SIM:TRUT? "never"') == "9.91E37"
+    assert bench.ask("control", ":SIM:WIRE?") == '"supply","load",0,0'
+    bench.tell("control", ':SIM:WIRE "","load",1')
+    assert bench.world.harness == Harness((), ("load",), crossed=True)
+    assert bench.ask("control", ":SIMULATION:WIRE?") == '"","load",1,0'
+    bench.tell("control", ':SIM:WIRE "battery+load","supply",0,1 KOHM')
+    assert bench.world.harness == Harness(("battery", "load"), ("supply",), bleeder_ohm=1000.0)
+    assert bench.ask("control", ":SIM:WIRE?") == '"battery+load","supply",0,1000'
+    bench.tell("control", ':SIM:WIRE "supply","load",0,0')
+    assert bench.world.harness == Harness(("supply",), ("load",))
 
 
 @pytest.mark.parametrize(
@@ -122,7 +128,13 @@ def test_control_port(bench: Bench) -> None:
         (':SIM:FAUL "gremlin",0', "there is no fault named 'gremlin'"),
         (
             ':SIM:WIRE "lamp","load",0',
-            "'lamp' cannot be at the exposed port: it must be supply, load, nothing",
+            "'lamp' cannot be at the exposed port: it must be supply, battery, load, several "
+            "joined by '+', or empty for an open port",
+        ),
+        (
+            ':SIM:WIRE "load","supply+",0',
+            "'' cannot be at the guarded port: it must be supply, battery, load, several joined "
+            "by '+', or empty for an open port",
         ),
         (':SIM:WIRE "load","load",0', "the load cannot be at both ports"),
         (':SIM:TRUT? "beauty"', "there is no true value named 'beauty'"),

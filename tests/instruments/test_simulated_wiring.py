@@ -2,18 +2,15 @@
 
 from __future__ import annotations
 
+import dataclasses
 from functools import partial
 from pathlib import Path
 
 import numpy as np
 import pytest
 
-from benchkit.harness import DRAWING, REVERSED, Harness
-from instruments.simulated.plant import Plant
+from benchkit.harness import CHARGING, DRAWING, REVERSED, Harness
 from instruments.simulated.terminals import BLEED_S
-from instruments.simulated.timebase import VirtualTime
-from tests.benchkit.nine_stages import text
-from tests.instruments.simulated_fake import bench_file
 from tests.instruments.simulated_stage import LIMIT, VOLTS, Make, crossed, energise, plant_with
 
 
@@ -27,11 +24,11 @@ def test_an_output_runs_down_across_its_own_terminals(make: Make, wiring: Harnes
     plant = make("nmos-pass")
     plant.wire(wiring)
     energise(plant)
-    plant.command_supply(VOLTS, LIMIT, False)
+    plant.command_supply("supply", VOLTS, LIMIT, False)
     volts = []
     for _ in range(12):
         plant.elapse(0.02)
-        volts.append(plant.supply_terminals()[0])
+        volts.append(plant.supply_terminals("supply")[0])
         assert plant.voltage("exposed_voltage") == pytest.approx(wiring.sign * volts[-1], abs=0.02)
     assert (np.diff(volts) < 1e-9).all()
     assert volts[0] > 1
@@ -60,7 +57,7 @@ def test_moving_leads_with_something_on_is_counted(make: Make, tmp_path: Path) -
     plant.wire(REVERSED)
     assert plant.truth("hot_rewirings") == 1
     assert plant.voltage("exposed_voltage") == pytest.approx(-VOLTS, abs=1e-3)
-    plant.command_supply(VOLTS, LIMIT, False)
+    plant.command_supply("supply", VOLTS, LIMIT, False)
     plant.wire(DRAWING)  # off, and its output has not run down
     assert plant.truth("hot_rewirings") == 2
     plant.elapse(1)
@@ -73,11 +70,11 @@ def test_moving_leads_with_something_on_is_counted(make: Make, tmp_path: Path) -
 def test_an_instrument_is_at_one_port(make: Make) -> None:
     plant = make("pmos-pass")
     with pytest.raises(ValueError, match="the supply cannot be at both ports"):
-        plant.wire(Harness("supply", "supply"))
-    plant.wire(Harness("nothing", "nothing"))
+        plant.wire(Harness(("supply",), ("supply",)))
+    plant.wire(Harness((), ()))
     energise(plant)
     assert plant.voltage("exposed_voltage") == pytest.approx(0, abs=1e-6)
-    volts, amps, limits = plant.supply_terminals()
+    volts, amps, limits = plant.supply_terminals("supply")
     assert volts == pytest.approx(VOLTS)
     assert (amps, limits) == (0.0, False)
 
@@ -85,14 +82,14 @@ def test_an_instrument_is_at_one_port(make: Make) -> None:
 def test_supply_and_load_may_change_places(make: Make) -> None:
     """As at a charger's output: the current flows out of the exposed plus, through the shunt."""
     plant = make("clamp")
-    plant.wire(Harness("load", "supply"))
+    plant.wire(CHARGING)
     energise(plant, load=0.5)
     volts, amps = plant.load_terminals()
     assert amps == pytest.approx(0.5 + BLEED_S * volts, rel=1e-6)
     assert plant.truth("exposed_current") == pytest.approx(-amps, rel=1e-6)
     shunt = plant.voltage("exposed_current") / plant.truth("exposed_current")
     assert plant.voltage("exposed_voltage") - volts == pytest.approx(amps * shunt, rel=1e-6)
-    assert plant.supply_terminals()[0] - plant.voltage("guarded_voltage") == pytest.approx(
+    assert plant.supply_terminals("supply")[0] - plant.voltage("guarded_voltage") == pytest.approx(
         0.018 * amps, rel=1e-3
     )
 
@@ -100,34 +97,25 @@ def test_supply_and_load_may_change_places(make: Make) -> None:
 @pytest.mark.parametrize("topology", ["pmos-sensed", "nmos-sensed"])
 def test_a_charger_gives_nothing_while_there_is_no_battery(make: Make, topology: str) -> None:
     plant = make(topology)
-    plant.wire(Harness("nothing", "supply"))
+    plant.wire(Harness((), ("supply",)))
     energise(plant)
     assert plant.voltage("guarded_voltage") == pytest.approx(VOLTS, abs=0.01)
     assert abs(plant.voltage("exposed_voltage")) < 0.6
     assert abs(plant.truth("gate_voltage")) < 0.5
 
 
-def test_a_resistor_is_across_the_guarded_port_while_the_leads_are_crossed(tmp_path: Path) -> None:
-    """A leak and the resistor divide what is applied; the right way round there is none."""
-    bench = bench_file()
-    assert bench.simulated is not None
-    bench.simulated.boards["S-1"] = ["leaky=100"]
-    told = bench.model_copy(
-        update={"bench": bench.bench.model_copy(update={"bleeder_ohm": 1000.0})}
-    )
-    path = tmp_path / "diode.toml"
-    path.write_text(text("series-diode"), "utf-8")
+def test_a_resistor_across_the_guarded_port_divides_with_a_leak(make: Make) -> None:
     found = {}
-    for name, file in (("open", bench), ("resistor", told)):
-        plant = Plant(file, tmp_path / "bench.toml", VirtualTime())
-        plant.insert("S-1", str(path))
+    for bleeder_ohm in (None, 1000.0):
+        plant = make("series-diode", "leaky=100")
+        plant.wire(dataclasses.replace(REVERSED, bleeder_ohm=bleeder_ohm))
         energise(plant)
-        assert plant.truth("exposed_current") < 1e-3
-        plant.command_supply(VOLTS, LIMIT, False)
-        plant.elapse(1)
-        crossed(plant)
-        found[name] = plant.voltage("guarded_voltage"), plant.truth("exposed_current")
-    assert found["open"][0] == pytest.approx(-VOLTS, abs=0.05)
-    assert abs(found["open"][1]) < 1e-3
-    assert found["resistor"][0] == pytest.approx(-VOLTS * 1000 / 1100, abs=0.1)
-    assert found["resistor"][1] == pytest.approx(-VOLTS / 1100, rel=0.02)
+        found[bleeder_ohm] = plant.voltage("guarded_voltage"), plant.truth("exposed_current")
+    assert found[None][0] == pytest.approx(-VOLTS, abs=0.05)
+    assert abs(found[None][1]) < 1e-3
+    assert found[1000.0][0] == pytest.approx(-VOLTS * 1000 / 1100, abs=0.1)
+    assert found[1000.0][1] == pytest.approx(-VOLTS / 1100, rel=0.02)
+    plant = make("series-diode")
+    plant.wire(dataclasses.replace(DRAWING, bleeder_ohm=1000.0))  # right way round too
+    energise(plant)
+    assert plant.truth("exposed_current") == pytest.approx(VOLTS / 1000, rel=0.05)
