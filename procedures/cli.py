@@ -92,12 +92,24 @@ def verify(
     out: OutOption = None,
     dry_run: DryRunOption = False,
     json: JsonOption = False,
+    unattended: Annotated[
+        bool,
+        typer.Option(
+            "--unattended",
+            help="Nobody is there: the board is in already. Needs an interlock loop and relays.",
+        ),
+    ] = False,
 ) -> None:
     """Measure one board, judge it, and write its report."""
     from procedures.commands import verify_board
 
     with leaving():
-        raise typer.Exit(verify_board(stage, bench, serial, out, dry_run=dry_run, as_json=json))
+        raise typer.Exit(
+            verify_board(
+                stage, bench, serial, out,
+                dry_run=dry_run, as_json=json, unattended=unattended,
+            )
+        )  # fmt: skip
 
 
 @app.command()

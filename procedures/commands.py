@@ -17,10 +17,16 @@ from procedures.batch import Lot, conclude, prepare, run_lot
 from procedures.exits import report_error
 from procedures.inputs import BoardInputs, check_writable, read_board, read_lot, read_serial
 from procedures.interrupts import Interrupts
-from procedures.operators import ConsoleOperator, SimulatedOperator, check_somebody_is_there
+from procedures.operators import (
+    ConsoleOperator,
+    SimulatedOperator,
+    UnattendedOperator,
+    check_somebody_is_there,
+)
 from procedures.plan import Plan
 from procedures.screen import Screen
 from procedures.tell import tell_board, tell_lot
+from procedures.unattended import check_unattended
 from procedures.verify import Done, free_folder, run_board, write_report
 
 CODES = {"pass": 0, "fail": 1, "undecided": 1}
@@ -37,16 +43,19 @@ class _NoJournal:
 
 
 @contextmanager
-def opened(inputs: BoardInputs, screen: Screen) -> Iterator[Bench]:
+def opened(inputs: BoardInputs, screen: Screen, *, unattended: bool = False) -> Iterator[Bench]:
     """The bench of a command, with its operator, live readings and signals.
 
-    InputError, before anything is opened, for a real bench with nobody at the terminal.
+    InputError, before anything is opened, for a real bench with nobody at the terminal, unless
+    that is meant and the bench can do without.
     """
-    if not inputs.bench.is_simulated:
+    operator: Operator = SimulatedOperator(screen)
+    if unattended:
+        check_unattended(inputs)
+        operator = UnattendedOperator()
+    elif not inputs.bench.is_simulated:
         check_somebody_is_there()
-    operator: Operator = (
-        SimulatedOperator(screen) if inputs.bench.is_simulated else ConsoleOperator(screen)
-    )
+        operator = ConsoleOperator(screen)
     interrupts = Interrupts()
     with (
         interrupts.listening(),
@@ -55,6 +64,7 @@ def opened(inputs: BoardInputs, screen: Screen) -> Iterator[Bench]:
             inputs.bench_path,
             operator,
             _NoJournal(),
+            unattended=unattended,
             shield=interrupts.shield,
             watcher=screen.reading,
         ) as bench,
@@ -63,17 +73,20 @@ def opened(inputs: BoardInputs, screen: Screen) -> Iterator[Bench]:
 
 
 def verify_board(
-    stage: Path, bench_path: Path, serial: str, out: Path | None, *, dry_run: bool, as_json: bool
-) -> int:
+    stage: Path, bench_path: Path, serial: str, out: Path | None, *,
+    dry_run: bool, as_json: bool, unattended: bool = False,
+) -> int:  # fmt: skip
     """`benchkit verify`."""
     serial = read_serial(serial)
     inputs = read_board(stage, bench_path)
+    if unattended:
+        check_unattended(inputs)
     screen = Screen(quiet=as_json)
     if dry_run:
         return _show_plan(inputs.job.plan, as_json=as_json)
     check_writable(out or Path("runs"))
     folder = free_folder(out or Path("runs"), serial)
-    with opened(inputs, screen) as bench:
+    with opened(inputs, screen, unattended=unattended) as bench:
         done = run_board(bench, inputs.job, serial, folder, screen)
     if isinstance(done.error, NotConfirmedOff):
         raise done.error  # nothing comes before making the bench safe; `report` draws it later

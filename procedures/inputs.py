@@ -17,9 +17,6 @@ from instruments.simulated.board import parse_faults
 from procedures.plan import plan_board
 from procedures.verify import Job
 
-MEASURED = ("series-diode", "pmos-pass", "pmos-pass-zener", "nmos-pass", "nmos-pass-zener")
-"""What the procedures of this package measure."""
-
 
 @dataclass(frozen=True)
 class BoardInputs:
@@ -50,7 +47,7 @@ def read_board(
     stage = build_stage(stage_file, str(stage_path))
     _check_measurable(stage, stage_path)
     try:
-        plan = plan_board(stage, bench)
+        plan = plan_board(stage, bench, bench_path.parent)
     except InputError as error:
         raise InputError(f"{stage_path} on {bench_path}: {error}") from None
     inputs = {"bench.toml": bench_path, "stage.toml": stage_path, **(extra or {})}
@@ -69,20 +66,27 @@ def read_lot(lot_path: Path, bench_path: Path) -> tuple[LotFile, BoardInputs]:
 
 
 def _check_measurable(stage: Stage, path: Path) -> None:
-    """InputError for a stage that can be predicted, but that no procedure measures yet."""
+    """InputError for a stage that can be predicted, but that no procedure measures, or not so."""
     working = stage.file.stage
-    if working.topology not in MEASURED or stage.guards != "load":
+    if working.topology == "network":
         raise InputError(
-            f"{path}: stage.topology is {working.topology!r}, guarding a {stage.guards}: what is "
-            f"measured so far is {', '.join(MEASURED)} guarding a load; `benchkit predict` answers "
-            "for every topology"
+            f'{path}: stage.topology is "network": a circuit of your own is predicted, not '
+            "measured, since nothing says what its readings would mean; `benchkit predict` "
+            "answers for it"
+        )
+    if stage.file.soak is None:
+        return
+    if stage.conducts == "lead":
+        raise InputError(
+            f"{path}: soak is given, but in a {working.topology} the working current does not "
+            f"flow through {stage.main}, whose case is measured: leave [soak] out"
         )
     between = [stage.names[role] for role in ("fuse", "lead") if role in stage.names]
     if between:
         raise InputError(
-            f"{path}: parts.{between[0]} is in the way of the current: its drop and heat would be "
-            f"taken for those of {stage.main}; put the drop point's taps across {stage.main} and "
-            f"measure with a file that leaves {' and '.join(between)} out"
+            f"{path}: parts.{between[0]} is in the way of the current: its heat would be "
+            f"taken for that of {stage.main}. Leave [soak] out, or put the drop point's taps "
+            f"across {stage.main} and measure with a file that leaves {' and '.join(between)} out"
         )
 
 

@@ -43,6 +43,20 @@ class ConsoleOperator:
                 return "stop"
 
 
+class UnattendedOperator:
+    """Nobody: who gave --unattended accepted the cautions of the plan; nothing can be asked."""
+
+    def acknowledge(self, caution: str) -> bool:
+        """Accepted beforehand; the caution is in the record."""
+        del caution
+        return True
+
+    def instruct(self, text: str) -> bool:
+        """Nobody does it."""
+        del text
+        return False
+
+
 class SimulatedOperator:
     """Nobody can be hurt on the simulated bench: cautions are recorded, and shown once."""
 

@@ -11,14 +11,15 @@ from benchkit.circuit import Emf, Resistor
 from benchkit.errors import InputError
 from benchkit.files import BenchFile
 from benchkit.files.bench import PointName
-from benchkit.files.stage import Reverse
+from benchkit.files.guarding import Thresholds
+from benchkit.files.trials import Reverse
 from benchkit.guard import Ceilings, Envelope
-from benchkit.guard.envelope import GUARDED_MIN_V
-from benchkit.harness import DRAWING, reversed_harness
+from benchkit.harness import Harness, reversed_from
 from benchkit.prediction.connections import Connection, surroundings
 from benchkit.prediction.operating_point import reached
 from benchkit.prediction.scenarios import scenario
 from benchkit.stage import Stage
+from procedures.cooling import COOL_K, longest_cool_s
 
 READINGS = 4
 POINTS: tuple[PointName, ...] = (
@@ -40,12 +41,6 @@ SMALL_RESISTOR_W = 0.25
 SMALL_SHARE, SMALL_J = 0.1, 1.0
 """A stage that blocks lets next to nothing through: a step may take this share of what the current
 limit would allow, and what a supply's read-back of no current adds up to (judgement)."""
-COOL_K = 1.0
-"""A case that is this much warmer above ambient than before the sweep is as good as cold: a drop
-changes by some 2 mV/K at most (common practice, no source)."""
-COOL_CONSTANTS = 6.0
-"""A case has cooled down after so many of its time constants, or never will."""
-COOL_GAP_S = 2.0
 CAUTION = (
     "about to apply {volts} V THE WRONG WAY ROUND to the exposed port: the supply's leads are "
     "crossed there, plus of the supply on the minus terminal, in {steps} step(s) from {first} V "
@@ -70,8 +65,9 @@ class ReversePlan:
     rungs_s: float
     largest_A: float
     """What the current's range is chosen for: twice the limit, which takes a while to hold."""
-    bleeder_ohm: float | None = None
-    """Across the guarded port while the leads are crossed."""
+    home: Harness
+    harness: Harness
+    """How the leads are while they are crossed."""
 
     @property
     def full_V(self) -> float:
@@ -81,8 +77,8 @@ class ReversePlan:
     @property
     def crossing(self) -> str:
         """Which lead goes where, and what the resistor there has to stand."""
-        told = [reversed_harness(self.bleeder_ohm).sentence()]
-        if watts := heating(self.bleeder_ohm, self.full_V):
+        told = [self.harness.sentence()]
+        if watts := heating(self.harness.bleeder_ohm, self.full_V):
             told.append(watts)
         return ", ".join(told)
 
@@ -104,7 +100,7 @@ class ReversePlan:
 
 
 def plan_reverse(
-    stage: Stage, bench: BenchFile, sweep: Envelope, aperture_s: float
+    stage: Stage, bench: BenchFile, sweep: Envelope, home: Harness, aperture_s: float
 ) -> ReversePlan | None:
     """The trial that the stage file asks for, if any.
 
@@ -124,10 +120,17 @@ def plan_reverse(
         bench.points[point].aperture_nplc / bench.bench.line_frequency_Hz for point in POINTS
     )
     rung_s = bench.bench.settle_s + watched_s(bench.bench.poll_s) + visits_s
-    ceilings = Ceilings.of(bench.bench)
+    ceilings = Ceilings.of(bench)
     rungs = tuple(
         _rung(
-            stage, reverse, volts, sweep, rung_s, reverse.dwell if volts == full else 0.0, bleeder
+            stage,
+            reverse,
+            volts,
+            sweep,
+            rung_s,
+            reverse.dwell if volts == full else 0.0,
+            bleeder,
+            ceilings.thresholds,
         )
         for volts in ladder
     )
@@ -138,12 +141,7 @@ def plan_reverse(
     nominal = min(currents, key=lambda a: abs(a - working.current_nominal_A))
     drops = tuple(sorted({currents[0], nominal, currents[-1]}))
     after_s = 60.0 + 5 * len(drops) * (bench.bench.settle_s + aperture_s)
-    after = replace(
-        sweep,
-        name="drop after the reverse trial",
-        longest_s=after_s,
-        energy_max_J=sweep.voltage_V * sweep.current_limit_A * after_s,
-    )
+    after = again(sweep, "drop after the reverse trial", after_s)
     caution = CAUTION.format(
         volts=f"{full:g}",
         steps=reverse.steps,
@@ -153,10 +151,16 @@ def plan_reverse(
     if watts := heating(bleeder, full):
         caution += f" The resistor across the guarded port of {bleeder:g} ohm is to be {watts}."
     return ReversePlan(
-        rungs, reverse.dwell, after, drops, caution, COOL_CONSTANTS * file.heat.time_constant_s,
+        rungs, reverse.dwell, after, drops, caution, longest_cool_s(file.heat.time_constant_s),
         len(rungs) * rung_s + reverse.dwell, 2 * reverse.current_limit_A,
-        bleeder,
+        home, reversed_from(home, bleeder),
     )  # fmt: skip
+
+
+def again(sweep: Envelope, name: str, longest_s: float) -> Envelope:
+    """A few drops more, inside the envelope of the sweep."""
+    energy = sweep.voltage_V * sweep.current_limit_A * longest_s
+    return replace(sweep, name=name, longest_s=longest_s, energy_max_J=energy)
 
 
 def heating(bleeder_ohm: float | None, full_V: float) -> str:
@@ -179,7 +183,7 @@ def steps_around(plan: ReversePlan) -> tuple[tuple[str, str, float], ...]:
         ("zero/reverse", "zero readings of exposed current and both ports' voltages", 1.0),
         ("polarity/reversed", f"{proof}; a stage that conducts is not asked for more", 0.5),
         ("reverse trial", plan.text(), plan.rungs_s),
-        ("leads put back", f"{ports}, {DRAWING.sentence()}", 1.0),
+        ("leads put back", f"{ports}, {plan.home.sentence()}", 1.0),
         ("polarity", proof, 0.5),
         ("after", f"drop at {drops} A again, to see what the trial did to the part", 1.0),
     )
@@ -199,6 +203,7 @@ def _rung(
     rung_s: float,
     dwell_s: float,
     bleeder_ohm: float | None,
+    thresholds: Thresholds,
 ) -> Envelope:
     longest_s = 60.0 + 5 * rung_s + 2 * dwell_s
     limit = reverse.current_limit_A
@@ -213,12 +218,15 @@ def _rung(
         sweep.loss_max_W,
         longest_s,
         may_limit=False,
-        guarded_min_V=_guarded_min_V(stage, volts, bleeder_ohm),
+        guarded_min_V=_guarded_min_V(stage, volts, bleeder_ohm, thresholds),
+        case_rise_max_K_per_s=thresholds.case_rise_max_K_per_s,
         energy_max_J=SMALL_J + SMALL_SHARE * volts * limit * longest_s,
     )
 
 
-def _guarded_min_V(stage: Stage, volts: float, bleeder_ohm: float | None) -> float:
+def _guarded_min_V(
+    stage: Stage, volts: float, bleeder_ohm: float | None, thresholds: Thresholds
+) -> float:
     """Where the guarded port trips: beyond its limit, and beyond what the leakage that the sheet
     allows does to a port from which nothing is drawn.
 
@@ -236,7 +244,7 @@ def _guarded_min_V(stage: Stage, volts: float, bleeder_ohm: float | None) -> flo
     ambient = stage.file.stage.ambient_nominal_C
     point = reached(stage, boards, [Connection((source,), (unloaded,))], ambient, ambient)
     leaks = -float(point.guarded_V.min())
-    return round(-BEYOND * max(-GUARDED_MIN_V if limit is None else limit, leaks), 3)
+    return round(-BEYOND * max(-thresholds.guarded_min_V if limit is None else limit, leaks), 3)
 
 
 def _check_ratings(stage: Stage, volts: float, limit_A: float) -> None:

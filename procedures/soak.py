@@ -6,38 +6,33 @@ import numpy as np
 
 from benchkit.evaluation.soak import heating_of, read_rest
 from benchkit.evaluation.sweep import drop_at, read_sweep
-from benchkit.files import BenchFile
-from benchkit.guard import Guard
+from benchkit.guard import Envelope
 from benchkit.records.record import read_record
-from benchkit.records.run_folder import RunFolder
-from benchkit.stage import Stage
-from procedures.plan import Plan
-from procedures.screen import Screen
+from procedures.trial import Run, feeding
 
 LOOK_AT_FIT_S = 10.0
 SLOW_EVERY = 5
 """Drop, current and ambient move slowly: they are read at every so many looks."""
 
 
-def run_soak(
-    guard: Guard, stage: Stage, bench: BenchFile, plan: Plan, run: RunFolder, screen: Screen
-) -> None:
-    """Soak, unless the measured loss says that the part would get too hot."""
-    settings, heat = stage.file.soak, stage.file.heat
-    if settings is None or plan.soak is None:
+def run_soak(run: Run, envelope: Envelope | None, stop_C: float) -> None:
+    """Soak, unless the measured loss says that the part would get hotter than ``stop_C``."""
+    settings, heat = run.stage.file.soak, run.stage.file.heat
+    if settings is None or envelope is None:
         return
-    record = read_record(run.path)
+    guard, bench, screen = run.guard, run.bench, run.screen
+    record = read_record(run.folder.path)
     sweep = read_sweep(record)
     if sweep is None:
         return
     nearest = min(sweep.targets, key=lambda a: abs(a - settings.current_A))
     loss = drop_at(sweep, bench, nearest).drop_V / nearest * settings.current_A**2
     forecast = sweep.ambient_C + heat.case_to_ambient_max_K_per_W * loss
-    if forecast > plan.soak_stop_C:
+    if forecast > stop_C:
         guard.remark(
             "soak-skipped",
             f"heat: the loss of {loss:.2g} W that the sweep measured could take the case to "
-            f"{forecast:.0f} C at {settings.current_A:g} A, beyond {plan.soak_stop_C:.0f} C, so "
+            f"{forecast:.0f} C at {settings.current_A:g} A, beyond {stop_C:.0f} C, so "
             "the soak was left out",
         )
         return
@@ -48,10 +43,12 @@ def run_soak(
     guard.step("soak")
     with (
         screen.progress("soak", settings.longest_s),
-        guard.energised(plan.soak, plan.cautions[0]) as live,
+        feeding(run, envelope, run.forward.caution) as feed,
     ):
+        live = feed.live
         ambient_now = live.read("ambient").value
-        live.draw(settings.current_A)
+        guard.step("soak")
+        feed.draw(settings.current_A)
         began = guard.now()
         guard.remark("soak-begins", f"{settings.current_A:g} A")
         next_fit = 3 * LOOK_AT_FIT_S

@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-from benchkit.files import BenchFile, StageFile
 from benchkit.guard import Envelope, Guard, Live
-from procedures.plan import REST_GAP_S, REST_READINGS, ZEROS, Plan
-from procedures.screen import Screen
+from procedures.trial import ZEROS, Feed, Run, feeding
 
 ZERO_V = 0.005
 """Ports within this of zero volts are dead enough for a zero reading."""
 DISCHARGE_S = 20.0
+REST_READINGS, REST_GAP_S = 8, 0.25
 TURN_BACK_K = 10.0
 """The sweep turns back this far below the case temperature that would trip."""
 
@@ -41,73 +40,49 @@ def read_zeros(guard: Guard, when: str, largest_drop_V: float, largest_A: float)
         guard.read("exposed_current")
 
 
-def run_sweep(
-    guard: Guard, stage: StageFile, bench: BenchFile, plan: Plan, screen: Screen
-) -> list[float]:
-    """Do the sweep and both sets of zeros; returns the currents that every way up reached."""
-    currents = stage.sweep.currents_A
-    read_zeros(guard, "before", plan.largest_drop_V, currents[-1])
-    total = 2 * len(currents) * stage.sweep.repeats
+def run_sweep(run: Run) -> None:
+    """Do the sweep and both sets of zeros; ``run.carried_A`` are the currents that every way up
+    reached."""
+    guard, screen, forward, sweep = run.guard, run.screen, run.forward, run.stage.file.sweep
+    currents = sweep.currents_A
+    read_zeros(guard, "before", forward.largest_drop_V, currents[-1])
     reached = len(currents)
     guard.step("forward sweep")
     with (
-        screen.progress("forward sweep", total),
-        guard.energised(plan.sweep, plan.cautions[0]) as live,
+        screen.progress("forward sweep", 2 * len(currents) * sweep.repeats),
+        feeding(run, forward.sweep, forward.caution) as feed,
     ):
-        live.wait(bench.bench.settle_s)
         done = 0
-        for repeat in range(1, stage.sweep.repeats + 1):
-            top = _way(guard, live, f"sweep/{repeat}/up", currents, bench, screen, done)
+        for repeat in range(1, sweep.repeats + 1):
+            top = _way(run, feed, f"sweep/{repeat}/up", currents, done)
             reached = min(reached, top)
-            _way(
-                guard,
-                live,
-                f"sweep/{repeat}/down",
-                currents[:top][::-1],
-                bench,
-                screen,
-                done + len(currents),
-            )
+            _way(run, feed, f"sweep/{repeat}/down", currents[:top][::-1], done + len(currents))
             done += 2 * len(currents)
-        live.rest()
-    read_zeros(guard, "after", plan.largest_drop_V, currents[-1])
-    return currents[:reached]
+        feed.live.rest()
+    read_zeros(guard, "after", forward.largest_drop_V, currents[-1])
+    run.carried_A = currents[:reached]
 
 
 def read_drops(
-    guard: Guard,
-    name: str,
-    currents: list[float],
-    envelope: Envelope,
-    caution: str,
-    bench: BenchFile,
-    screen: Screen,
+    run: Run, name: str, currents: list[float], envelope: Envelope, caution: str
 ) -> None:
     """The drop at a few currents, on the ranges in force, in steps ``name/current``."""
-    with screen.progress(name, len(currents)), guard.energised(envelope, caution) as live:
-        live.wait(bench.bench.settle_s)
-        _way(guard, live, name, currents, bench, screen, 0)
-        live.rest()
+    with run.screen.progress(name, len(currents)), feeding(run, envelope, caution) as feed:
+        _way(run, feed, name, currents, 0)
+        feed.live.rest()
 
 
-def _way(
-    guard: Guard,
-    live: Live,
-    name: str,
-    currents: list[float],
-    bench: BenchFile,
-    screen: Screen,
-    done: int,
-) -> int:
+def _way(run: Run, feed: Feed, name: str, currents: list[float], done: int) -> int:
     """One way through the currents; returns how many were reached before it was too warm."""
+    guard, live = run.guard, feed.live
     for number, current in enumerate(currents, start=1):
         guard.step(f"{name}/{current!r}")
-        live.draw(current)
-        live.wait(bench.bench.settle_s)
-        drop = _drop(guard, live)
+        feed.draw(current)
+        live.wait(run.bench.bench.settle_s)
+        drop = read_drop(guard, live)
         amps = live.read("exposed_current").value
         live.check_loss(drop, amps)
-        screen.advance(done + number)
+        run.screen.advance(done + number)
         warm = guard.latest_case_C()
         if name.endswith("up") and warm > live.envelope.case_max_C - TURN_BACK_K:
             guard.remark(
@@ -118,8 +93,8 @@ def _way(
     return len(currents)
 
 
-def _drop(guard: Guard, live: Live) -> float:
-    """A drop reading on the sweep's range, or on a larger one for a part that drops too much."""
+def read_drop(guard: Guard, live: Live) -> float:
+    """A drop reading on the range in force, or on a larger one for a part that drops too much."""
     reading = guard.read("drop")
     while reading.status == "overload" and reading.range < live.envelope.voltage_V:
         guard.expect("drop", 1.01 * reading.range)

@@ -20,16 +20,15 @@ from benchkit.errors import (
 )
 from benchkit.evaluation.evaluate import Evaluation, evaluate
 from benchkit.guard import Guard
-from benchkit.harness import DRAWING
 from benchkit.records.record import read_json, read_record
 from benchkit.records.run_folder import RunFolder, write_text
 from benchkit.stage import Stage
 from instruments.bench import Bench
 from procedures.plan import Plan
-from procedures.reverse import run_reverse
 from procedures.screen import Screen
 from procedures.soak import run_soak
 from procedures.sweep import read_rest, run_sweep
+from procedures.trial import Run
 
 PACKAGES = ("protection-benchkit", "numpy", "scipy", "pyvisa", "PyVISA-py", "matplotlib")
 
@@ -108,21 +107,24 @@ def _secured(guard: Guard, stopped: BaseException) -> BenchkitError:
     raise stopped
 
 
-def _measure(bench: Bench, job: Job, serial: str, run: RunFolder, screen: Screen) -> None:
-    guard, file = bench.guard, bench.file
+def _measure(bench: Bench, job: Job, serial: str, folder: RunFolder, screen: Screen) -> None:
+    guard, forward = bench.guard, job.plan.forward
     if guard.begun:
         guard.clear_for_hands()
-    guard.begin(run)
+    guard.begin(folder)
     if guard.harness.crossed or guard.maybe_crossed:
-        guard.arrange(DRAWING)  # left so by the run before
-    bench.fixture.place(serial, job.stage_path)
+        guard.arrange(forward.home)  # left so by the run before
+    bench.fixture.place(serial, job.stage_path, forward.home)
+    guard.placed(forward.home)
+    run = Run(guard, job.stage, bench.file, forward, folder, screen)
     guard.step("permissives")
     guard.permit()
-    rest_K = read_rest(guard)
-    guard.prove_polarity()
-    carried = run_sweep(guard, job.stage.file, file, job.plan, screen)
-    run_soak(guard, job.stage, file, job.plan, run, screen)
-    run_reverse(guard, file, job.plan, carried, rest_K, screen)
+    run.rest_K = read_rest(guard)
+    guard.prove_polarity(forward.caution)
+    run_sweep(run)
+    run_soak(run, job.plan.soak, job.plan.soak_stop_C)
+    for trial in job.plan.trials:
+        trial.do(run)
     guard.step("end")
     guard.make_safe("end of run")
 

@@ -76,7 +76,7 @@ PUBLIC = {
         "LimitedSource", "Network", "Resistor", "Solution", "network", "solve",
     },
     "benchkit.files": {"BenchFile", "LotFile", "StageFile", "load"},
-    "benchkit.guard": {"Ceilings", "Envelope", "Guard", "Live"},
+    "benchkit.guard": {"Burst", "Ceilings", "Drive", "Envelope", "Guard", "Live"},
     "benchkit.topologies": {
         "TOPOLOGIES", "Ports", "Topology", "Wiring", "wire", "wire_network",
     },

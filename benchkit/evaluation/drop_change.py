@@ -13,7 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from benchkit.evaluation.sources import accuracy_of, gain, rectangular
+from benchkit.evaluation.sources import accuracy_of, flow_of, gain, rectangular
 from benchkit.evaluation.sweep import Sweep, local_slope, temperatures
 from benchkit.metrology import Budget, Component
 from benchkit.prediction.forward import forward
@@ -65,6 +65,7 @@ def owed_currents(
 
 def drop_changes(record: Record, stage: Stage, sweep: Sweep) -> Iterator[DropChange]:
     """One for each current measured again that the sweep had visited on its way up, rising."""
+    flow = flow_of(record.stage)
     for name in sorted(record.steps("after/"), key=lambda name: float(name.partition("/")[2])):
         amps = float(name.partition("/")[2])
         drops, currents = record.at(name, "drop"), record.at(name, "exposed_current")
@@ -73,9 +74,9 @@ def drop_changes(record: Record, stage: Stage, sweep: Sweep) -> Iterator[DropCha
             continue
         drop_zero, current_zero = sweep.drop_zero, sweep.current_zero
         read_A = float(np.mean([r.value for r in currents]))
-        read_A -= current_zero.value if current_zero.used else 0.0
+        read_A = flow * (read_A - (current_zero.value if current_zero.used else 0.0))
         read_V = float(np.mean([r.value for r in drops]))
-        read_V -= drop_zero.value if drop_zero.used else 0.0
+        read_V = flow * (read_V - (drop_zero.value if drop_zero.used else 0.0))
         read_V -= record.bench.points["drop"].lead_ohm * read_A
         slope = local_slope(sweep, amps)
         after = read_V - slope * (read_A - amps)
@@ -102,12 +103,14 @@ def drop_changes(record: Record, stage: Stage, sweep: Sweep) -> Iterator[DropCha
 
 
 def _per_kelvin(stage: Stage, amps: float, drop_V: float, case_C: float) -> float:
-    """dV/dT of a typical part where this one was measured, in V/K."""
+    """dV/dT in V/K where this part was measured: a typical one's, in proportion to the drop where
+    it is a channel's, whose resistance has it."""
     junction = min(case_C + stage.junction_to_case_K_per_W * drop_V * amps, HOTTEST_C - STEP_K)
     warm = np.array([junction, junction + STEP_K])
     supply = stage.file.stage.supply_nominal_V
     volts = forward(stage, stage.typical(), amps, supply, warm).drop_V[0]
-    return float(volts[1] - volts[0]) / STEP_K
+    like = drop_V / float(volts[0]) if stage.conducts == "channel" else 1.0
+    return like * float(volts[1] - volts[0]) / STEP_K
 
 
 def _instruments(

@@ -2,20 +2,28 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+import math
+from collections.abc import Callable, Iterator
 from dataclasses import asdict, dataclass
 
 import numpy as np
 
-from benchkit.evaluation.findings import gravest_first, remarks_of
+from benchkit.evaluation.battery_trial_judged import judge_battery_trial
+from benchkit.evaluation.clamp_trial import judge_clamp
+from benchkit.evaluation.findings import gravest_first, of_band, remarks_of
+from benchkit.evaluation.fused_trial import judge_fused
 from benchkit.evaluation.hottest import Hottest, hottest
+from benchkit.evaluation.part import Part
 from benchkit.evaluation.promised import Promised, promised
 from benchkit.evaluation.reverse import Trial, read_trial
 from benchkit.evaluation.reverse_band import ReverseBand, reverse_bands
 from benchkit.evaluation.reverse_judged import reverse_remarks, reverse_rows, strongest, untested
+from benchkit.evaluation.scenarios_found import scenarios_found
 from benchkit.evaluation.soak import Soak, read_soak
+from benchkit.evaluation.supply_sweep_judged import judge_supply_sweep
 from benchkit.evaluation.sweep import DropAt, Sweep, drop_at, junctions_C, read_sweep
 from benchkit.evaluation.verdict import Promise, judged, missing, summary
+from benchkit.prediction.ratings import Rating
 from benchkit.records.record import Record
 from benchkit.records.result import Measurand, Result
 from benchkit.stage import Stage
@@ -34,6 +42,14 @@ class Evaluation:
     trial: Trial | None = None
     bands: tuple[ReverseBand, ...] = ()
     """What the datasheets promise at each rung of the trial, and at its last state."""
+    parts: tuple[Part, ...] = ()
+
+
+PARTS: tuple[Callable[[Record, Promised], Part | None], ...] = (
+    judge_supply_sweep, judge_clamp, judge_fused, judge_battery_trial,
+)  # fmt: skip
+"""The further parts of a run, in the order of their rows; each gives None for a run whose stage
+file does not ask for it."""
 
 
 def evaluate(record: Record, serial: str) -> Evaluation:
@@ -49,15 +65,23 @@ def evaluate(record: Record, serial: str) -> Evaluation:
     trial = read_trial(record, stage, sweep)
     bands = _bands(stage, trial, record.bench.bench.bleeder_ohm)
     last = strongest(bands, trial)
+    parts = tuple(part for judge in PARTS if (part := judge(record, promise)) is not None)
+    forward_drops = list(_drops(promise, drops))
     measurands = [
-        *_drops(promise, drops),
+        *forward_drops,
         *_thermal(promise, soak if usable else None, extreme),
         *reverse_rows(stage, trial, last),
+        *(row for part in parts for row in part.rows),
     ]
     told = remarks_of(record, stage, promise.scenarios, sweep, drops, soak, extreme)
-    # A part that was not what it should be before the trial is not asked whether it changed it.
-    sound = not any(remark.weight == "fault" for remark in told)
-    remarks = gravest_first([*told, *reverse_remarks(record, stage, trial, bands, sound=sound)])
+    # A part that was not what it should be before the trial is not asked whether that changed it:
+    # how its drop moves with temperature is not known.
+    sound = not any(remark.weight == "fault" for remark in told) and not of_band(stage, drops)
+    remarks = gravest_first([
+        *told,
+        *reverse_remarks(record, stage, trial, bands, sound=sound),
+        *(remark for part in parts for remark in part.remarks),
+    ])  # fmt: skip
     verdict, why = summary(measurands, remarks, stopped)
     result = Result(
         serial,
@@ -67,10 +91,11 @@ def evaluate(record: Record, serial: str) -> Evaluation:
         why,
         measurands,
         [remark.text for remark in remarks],
-        _not_tested(record, trial),
-        [{"scenario": s.name, **asdict(r)} for s in promise.scenarios for r in s.ratings],
+        [*_not_tested(record, stage, trial), *(text for part in parts for text in part.untested)],
+        [{"scenario": s.name, **_rating(r)} for s in promise.scenarios for r in s.ratings],
+        [asdict(one) for one in scenarios_found(promise, forward_drops, trial, last, parts)],
     )
-    return Evaluation(result, stage, sweep, drops, soak, extreme, trial, bands)
+    return Evaluation(result, stage, sweep, drops, soak, extreme, trial, bands, parts)
 
 
 def _bands(stage: Stage, trial: Trial | None, bleeder_ohm: float | None) -> tuple[ReverseBand, ...]:
@@ -198,17 +223,39 @@ def _thermal(promise: Promised, soak: Soak | None, extreme: Hottest | None) -> I
     )
 
 
-def _not_tested(record: Record, trial: Trial | None) -> list[str]:
-    """What a signature on this run does not cover."""
-    told = [
-        *untested(trial, record.stage.reverse.current_limit_A if record.stage.reverse else 0.0),
-        "back-feed from the guarded side, and a battery at the exposed port",
-        f"supply voltages other than {record.stage.stage.supply_nominal_V:g} V (what is said of "
-        "others rests on the datasheets)",
+def _rating(one: Rating) -> dict[str, object]:
+    """JSON-ready: null for a junction that runs away."""
+    values = asdict(one)
+    for key in ("value", "margin"):
+        if not math.isfinite(values[key]):
+            values[key] = None
+    return values
+
+
+def _not_tested(record: Record, stage: Stage, trial: Trial | None) -> list[str]:
+    """What a signature on this run does not cover, beside what each part says of itself."""
+    file = record.stage
+    told = []
+    crossed = file.battery_trial is not None and any(
+        name.startswith("reversed") for name in file.battery_trial.scenarios
+    )
+    if trial is not None or (file.reverse is None and not crossed):
+        told += untested(trial, file.reverse.current_limit_A if file.reverse else 0.0)
+    if file.battery_trial is None:
+        told.append(
+            "a battery at the exposed port, either way round, and what the stage feeds back"
+        )
+    if file.supply_sweep is None:
+        told.append(
+            f"supply voltages other than {file.stage.supply_nominal_V:g} V (what is said of others "
+            "rests on the datasheets)"
+        )
+    if "fuse" in stage.names and file.fused_trial is None:
+        told.append(f"whether {stage.names['fuse']} opens in time: it was not blown")
+    told.append(
         "the drop when warm at currents other than the soak's: the sweep is short, and its drops "
-        "are those of a part near room temperature",
-    ]
-    if record.stage.soak is None:
+        "are those of a part near room temperature"
+    )
+    if file.soak is None:
         told.append("heat: the stage file has no [soak]")
-    told += record.said("soak-skipped")
-    return told
+    return [*told, *record.said("soak-skipped")]

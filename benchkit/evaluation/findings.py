@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
@@ -16,6 +17,7 @@ from benchkit.evaluation.sweep import DropAt, Sweep, junctions_C
 from benchkit.fits.drop import diagnose
 from benchkit.metrology import Accuracy
 from benchkit.prediction.forward import forward
+from benchkit.prediction.ratings import Rating
 from benchkit.prediction.scenarios import Scenario
 from benchkit.records.record import Record
 from benchkit.stage import Stage
@@ -57,7 +59,7 @@ def remarks_of(
     told += _of_ratings(scenarios, measured_heat=extreme is not None)
     if sweep is not None:
         told += _of_sweep(record, stage, sweep)
-        told += _of_band(stage, drops)
+        told += of_band(stage, drops)
     if soak is not None and not soak.heating.usable:
         why = soak.heating.why
         told.append(Remark("note", f"the soak does not say where the rise ends: {why}"))
@@ -92,7 +94,7 @@ def _of_ratings(scenarios: Sequence[Scenario], *, measured_heat: bool) -> list[R
     return [
         Remark(
             "doubt",
-            f"{r.part}: its {r.rating} can reach {r.value:.4g} {r.unit} ({found.name}), beyond its "
+            f"{r.part}: its {r.rating} {_reaches(r)} ({found.name}), beyond its "
             f"rating of {r.limit:.4g} {r.unit}: the stage as its file describes it does not keep "
             "its parts inside their datasheets",
         )
@@ -102,7 +104,11 @@ def _of_ratings(scenarios: Sequence[Scenario], *, measured_heat: bool) -> list[R
     ]
 
 
-def _of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:
+def _reaches(one: Rating) -> str:
+    return f"can reach {one.value:.4g} {one.unit}" if math.isfinite(one.value) else "runs away"
+
+
+def of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:
     """Is this the part that the stage file says? Limits alone cannot tell: a short across a diode
     meets every upper limit of its drop."""
     amps = np.array([d.current_A for d in drops])
@@ -149,7 +155,7 @@ def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[Remark]:
     current = accuracy_of(record.bench, "exposed_current", sweep.current_range_V)
     tolerance = record.bench.points["exposed_current"].shunt_tolerance_percent
     found = diagnose(
-        "channel" if stage.conducts == "channel" else "junction",
+        "junction" if stage.conducts == "junction" else "channel",
         sweep.current_A,
         sweep.drop_V,
         junction_of(stage, sweep),

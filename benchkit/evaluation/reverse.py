@@ -4,6 +4,7 @@ the trial did to the forward drop."""
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -20,6 +21,7 @@ from benchkit.stage import Stage
 
 Floats = NDArray[np.float64]
 
+CLAMPS = ("clamp", "fused-clamp")
 TAIL = 4
 """A dwell is judged by its last so many readings."""
 UNKNOWN_DRIFT = 0.25
@@ -82,7 +84,7 @@ class Trial:
 def read_trial(record: Record, stage: Stage, sweep: Sweep | None) -> Trial | None:
     """Take a record's trial apart; None when its stage file has no [reverse] table."""
     settings, bench = record.stage.reverse, record.bench
-    if settings is None:
+    if settings is None or record.stage.stage.topology in CLAMPS:
         return None
     full = settings.voltage_V or record.stage.stage.supply_max_V
     shunt = bench.points["exposed_current"].shunt_ohm or 1.0
@@ -114,15 +116,22 @@ def read_trial(record: Record, stage: Stage, sweep: Sweep | None) -> Trial | Non
         owed = owed_currents(record, sweep, changes)
         at = " and ".join(f"{amps:g} A" for amps in owed)
         short = f"the drop was not measured again after it, at {at}" if owed else ""
-    trips = tuple(
-        str(e.get("text", "")) for e in record.events
-        if e.get("kind") == "trip"
-        and str(e.get("step", "")).startswith(("reverse", "polarity/reversed"))
-    )  # fmt: skip
+    trips = tuple(_trips(record))
     return Trial(
         full, settings.dwell if kept else lasted, rungs, last, changes, zeros["exposed_current"],
         zeros["guarded_voltage"], trips, short,
     )  # fmt: skip
+
+
+def _trips(record: Record) -> Iterator[str]:
+    """What the guard said when it ended the trial: while the leads were crossed for it."""
+    inside = False
+    for event in record.events:
+        kind, text = event.get("kind"), str(event.get("text", ""))
+        if kind == "step" and text in ("leads crossed", "leads put back"):
+            inside = text == "leads crossed"
+        if kind == "trip" and inside:
+            yield text
 
 
 def _dwelt_s(record: Record) -> float:

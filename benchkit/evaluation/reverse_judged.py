@@ -7,11 +7,9 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Literal
 
-import numpy as np
-
 from benchkit.evaluation.findings import Remark
 from benchkit.evaluation.reverse import Figure, Trial
-from benchkit.evaluation.reverse_band import ReverseBand, crossed
+from benchkit.evaluation.reverse_band import ReverseBand
 from benchkit.evaluation.verdict import judged, missing
 from benchkit.prefixes import spoken
 from benchkit.records.record import Record
@@ -29,7 +27,6 @@ FLOWS_A = 1e-3
 """Below this nothing is said to conduct."""
 UNSAID_A = 10e-6
 """What a part whose sheet gives no leakage may leak without remark (judgement)."""
-PROOF_V = 1.0
 CERTAIN = 0.999
 """Coverage at which a leak or a change of drop is remarked on: several are looked at of every
 board, and chance has its share."""
@@ -126,14 +123,7 @@ def _blocking(
     record: Record, stage: Stage, trial: Trial, bands: Sequence[ReverseBand]
 ) -> Iterator[Remark]:
     for text in record.said("reverse-conducts"):
-        if _clamps(stage):
-            yield Remark(
-                "doubt",
-                f"in reverse it conducts, as its datasheets say it must ({text}): what a clamp and "
-                "its fuse do at full current is not proved here",
-            )
-        else:
-            yield Remark("fault", f"the stage does not block in reverse: {text}")
+        yield Remark("fault", f"the stage does not block in reverse: {text}")
     for text in trial.trips:
         if _OF_THE_BENCH.match(text):
             yield Remark("doubt", f"the bench, not the stage, ended the trial in reverse: {text}")
@@ -247,15 +237,6 @@ def _changed(trial: Trial) -> Iterator[Remark]:
             f"{spoken(abs(change.change_V), 'V')} {way} than before, and no more than "
             f"{spoken(U, 'V', 2)} can be the measurement's",
         )
-
-
-def _clamps(stage: Stage) -> bool:
-    """Whether a sound stage is meant to conduct when reversed."""
-    point = crossed(
-        stage, stage.typical(), np.array([PROOF_V]), np.array([stage.file.stage.ambient_nominal_C]),
-        1e6,
-    )  # fmt: skip
-    return stage.conducts == "lead" or bool(-point.exposed_A[0] > FLOWS_A * FAR)
 
 
 def untested(trial: Trial | None, file_limit_A: float) -> list[str]:

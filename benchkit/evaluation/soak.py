@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.evaluation.sources import rectangular
+from benchkit.evaluation.sources import flow_of, rectangular
 from benchkit.evaluation.sweep import Sweep, reading_components
 from benchkit.files.bench import BenchFile
 from benchkit.fits.heating import Heating, fit_heating
@@ -120,10 +120,12 @@ def read_soak(record: Record, sweep: Sweep | None) -> Soak | None:
     )
     drops, currents = record.at("soak", "drop"), record.at("soak", "exposed_current")
     size = min(len(drops), len(currents))
+    flow = flow_of(record.stage)
     amps = np.array([r.value for r in currents[:size]])
-    amps -= sweep.current_zero.value if sweep.current_zero.used else 0.0
-    volts = np.array([r.value for r in drops[:size]]) - record.bench.points["drop"].lead_ohm * amps
-    volts -= sweep.drop_zero.value if sweep.drop_zero.used else 0.0
+    amps = flow * (amps - (sweep.current_zero.value if sweep.current_zero.used else 0.0))
+    volts = np.array([r.value for r in drops[:size]])
+    volts = flow * (volts - (sweep.drop_zero.value if sweep.drop_zero.used else 0.0))
+    volts -= record.bench.points["drop"].lead_ohm * amps
     loss = volts * amps
     at = np.array([r.time_s for r in drops[:size]]) - begun[0]
     late = at >= (1 - LATE_SHARE) * at[-1]

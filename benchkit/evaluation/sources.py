@@ -8,8 +8,10 @@ from __future__ import annotations
 
 import math
 
+from benchkit.files import StageFile
 from benchkit.files.bench import BenchFile, PointName
 from benchkit.metrology import Accuracy, Component
+from benchkit.topologies import TOPOLOGIES
 
 ROOT3 = math.sqrt(3.0)
 
@@ -31,3 +33,11 @@ def gain(bench: BenchFile, point: PointName, range_V: float, effect: float) -> C
 def rectangular(name: str, limit: float) -> Component:
     """A declared limit of error, already multiplied by its sensitivity."""
     return Component(name, limit / ROOT3, "rectangular")
+
+
+def flow_of(stage: StageFile) -> int:
+    """Sign of exposed current and drop while the stage is driven the right way round: a stage that
+    guards a supply is fed at its guarded port."""
+    topology = TOPOLOGIES.get(stage.stage.topology)
+    usual = topology.guards if topology is not None else "load"
+    return 1 if (stage.stage.guards or usual) == "load" else -1

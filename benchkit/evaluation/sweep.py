@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.evaluation.sources import accuracy_of, gain, rectangular
+from benchkit.evaluation.sources import accuracy_of, flow_of, gain, rectangular
 from benchkit.files.bench import BenchFile, PointName
 from benchkit.metrology import Budget, Component
 from benchkit.reading import Reading
@@ -96,14 +96,14 @@ def read_sweep(record: Record) -> Sweep | None:
     shunt = record.bench.points["exposed_current"].shunt_ohm or 1.0
     current_zero = read_zero(record, "exposed_current", ranges[1], 1 / shunt)
     lead = record.bench.points["drop"].lead_ohm
-    warm = temperatures(record, "case")
+    warm, flow = temperatures(record, "case"), flow_of(record.stage)
     rows = []
     for step, (drops, currents) in zip(steps, taken, strict=True):
         _, _, way, target = step.split("/")
         if not drops or not currents:
             continue
-        amps = _mean(currents) - (current_zero.value if current_zero.used else 0.0)
-        volts = _mean(drops) - (drop_zero.value if drop_zero.used else 0.0) - lead * amps
+        amps = flow * (_mean(currents) - (current_zero.value if current_zero.used else 0.0))
+        volts = flow * (_mean(drops) - (drop_zero.value if drop_zero.used else 0.0)) - lead * amps
         at_s = float(np.mean([r.time_s for r in drops]))
         rows.append((float(target), way == "up", amps, volts, float(np.interp(at_s, *warm))))
     target_A, rising, current_A, drop_V, case_C = (np.array(c) for c in zip(*rows, strict=True))

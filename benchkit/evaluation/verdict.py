@@ -13,6 +13,15 @@ from benchkit.records.result import BudgetLine, Measurand, Verdict
 SPELLED = {
     "reverse_leakage": "leakage in reverse",
     "reverse_guarded": "the guarded port below zero",
+    "on_from": "the supply voltage from which it is on",
+    "useful_from": "the supply voltage from which the drop keeps its limit",
+    "supply_drop": "drop",
+    "battery_current": "the battery's current",
+    "battery_guarded": "the guarded port with a battery at the exposed one",
+    "clamp_drop": "the clamp's drop",
+    "clamp_peak": "the guarded port below zero while the fuse opened",
+    "fuse_clears": "the time until the fuse had cleared",
+    "fuse_let_through": "the I2t that the fuse let through",
 }
 """Measurands whose name is not yet what they are called in a sentence."""
 

@@ -11,6 +11,7 @@ from pydantic import Field, field_validator, model_validator
 from benchkit.files.loading import FileModel
 from benchkit.files.parts import Part
 from benchkit.files.surroundings import Battery, Equipment, NetworkPart, Source
+from benchkit.files.trials import BatteryTrial, FusedTrial, Reverse, SupplySweep
 
 Positive = Annotated[float, Field(gt=0)]
 Celsius = Annotated[float, Field(ge=-80, le=250)]
@@ -109,28 +110,6 @@ class Soak(FileModel):
     the report warns that natural convection changes with rise."""
 
 
-AUTOMOTIVE_DWELL_S = 60.0
-"""Reversed voltage for 60 s: ISO 16750-2, -14 V in 12 V systems and -28 V in 24 V ones (from
-memory: look the clause up before quoting it)."""
-
-
-class Reverse(FileModel):
-    """[reverse]: the trial in the wrong direction, supply leads crossed at the exposed port."""
-
-    voltage_V: Positive | None = None
-    """The full reverse voltage; the stage's highest supply voltage unless given."""
-    steps: Annotated[int, Field(ge=1, le=20)] = 4
-    """Rungs of the ladder up to it."""
-    current_limit_A: Annotated[float, Field(gt=0, le=1)] = 0.1
-    dwell_s: Annotated[float, Field(ge=0, le=600)] | Literal["automotive"] = 5.0
-    """How long the full reverse voltage stays; "automotive" is AUTOMOTIVE_DWELL_S."""
-
-    @property
-    def dwell(self) -> float:
-        """In seconds."""
-        return AUTOMOTIVE_DWELL_S if self.dwell_s == "automotive" else float(self.dwell_s)
-
-
 class DropLimit(FileModel):
     """One line of limits.drop: the most the stage may drop at a current."""
 
@@ -147,8 +126,35 @@ class Limits(FileModel):
     leakage_max_A: Positive | None = None
     """Into the exposed port at the full reverse voltage."""
     guarded_reverse_max_V: Positive | None = None
-    """How far below zero the guarded port may be, at the full reverse voltage."""
+    """How far below zero the guarded port may be, the wrong way round."""
+    on_from_max_V: Positive | None = None
+    """The supply voltage from which the stage is really on."""
+    useful_from_max_V: Positive | None = None
+    """The supply voltage from which the drop stays within limits.drop at the supply sweep's
+    current."""
+    gate_margin_min_V: Annotated[float, Field(ge=0)] | None = None
+    """Between the gate-source rating and the gate-source voltage measured, at the highest voltage
+    of the supply sweep."""
+    fuse_clears_max_s: Positive | None = None
+    """From the onset of the full current until the fuse has cleared it."""
+    clamp_peak_max_V: Positive | None = None
+    """How far below zero the guarded port may be meanwhile."""
+    battery_current_max_A: Positive | None = None
+    """What a reversed battery, or one that feeds equipment which is off, may drive."""
     rule: Literal["guarded", "simple"] = "guarded"
+
+
+MEASURED_IN = {
+    "leakage_max_A": "reverse",
+    "guarded_reverse_max_V": "reverse",
+    "on_from_max_V": "supply_sweep",
+    "useful_from_max_V": "supply_sweep",
+    "gate_margin_min_V": "supply_sweep",
+    "fuse_clears_max_s": "fused_trial",
+    "clamp_peak_max_V": "fused_trial",
+    "battery_current_max_A": "battery_trial",
+}
+"""Limits that only one trial measures, and its table."""
 
 
 class StageFile(FileModel):
@@ -163,7 +169,10 @@ class StageFile(FileModel):
     heat: Heat
     sweep: Sweep
     soak: Soak | None = None
+    supply_sweep: SupplySweep | None = None
     reverse: Reverse | None = None
+    fused_trial: FusedTrial | None = None
+    battery_trial: BatteryTrial | None = None
     limits: Limits = Limits()
 
     @field_validator("parts")
@@ -227,13 +236,31 @@ class StageFile(FileModel):
                 )
         if self.limits.case_max_C is not None and self.soak is None:
             raise ValueError("limits.case_max_C needs a [soak] table, or it is never measured")
-        for key in ("leakage_max_A", "guarded_reverse_max_V"):
-            if getattr(self.limits, key) is not None and self.reverse is None:
-                raise ValueError(f"limits.{key} needs a [reverse] table, or it is never measured")
+        for key, table in MEASURED_IN.items():
+            if getattr(self.limits, key) is not None and getattr(self, table) is None:
+                raise ValueError(f"limits.{key} needs a [{table}] table, or it is never measured")
         self._told_apart()
+        self._swept()
         if self.limits.junction_margin_min_K is not None and self.soak is None:
             raise ValueError(
                 "limits.junction_margin_min_K needs a [soak] table, or it is never measured"
+            )
+        return self
+
+    @model_validator(mode="after")
+    def _fused(self) -> StageFile:
+        topology = self.stage.topology
+        if self.fused_trial is None:
+            return self
+        if topology != "fused-clamp":
+            raise ValueError(
+                f'fused_trial is given, but stage.topology is "{topology}": only a fused-clamp has '
+                "a fuse that opens through its clamp; leave [fused_trial] out"
+            )
+        if self.reverse is None:
+            raise ValueError(
+                "fused_trial needs a [reverse] table: the clamp's leakage and drop, before and "
+                "after, show whether blowing the fuse hurt it"
             )
         return self
 
@@ -254,4 +281,28 @@ class StageFile(FileModel):
                 f"limits.leakage_max_A is {leaks:g}: it must be below reverse.current_limit_A "
                 f"{reverse.current_limit_A:g}, beyond which nothing flows; amperes, not "
                 "milliamperes"
+            )
+
+    def _swept(self) -> None:
+        """A supply sweep stays inside the stage's own range, and is asked what it measures."""
+        settings, working = self.supply_sweep, self.stage
+        if settings is None:
+            return
+        top = settings.voltages_V[-1]
+        if not working.supply_min_V <= top <= working.supply_max_V:
+            raise ValueError(
+                f"supply_sweep.voltages_V ends at {top:g}: it must end between stage.supply_min_V "
+                f"{working.supply_min_V:g} and stage.supply_max_V {working.supply_max_V:g}"
+            )
+        amps = settings.current_A or working.current_nominal_A
+        if amps > working.current_max_A:
+            raise ValueError(
+                f"supply_sweep.current_A is {amps:g}: it must not be above "
+                f"stage.current_max_A {working.current_max_A:g}"
+            )
+        judged = any(abs(limit.current_A / amps - 1) < 1e-6 for limit in self.limits.drop)
+        if self.limits.useful_from_max_V is not None and not judged:
+            raise ValueError(
+                "limits.useful_from_max_V needs a limit in limits.drop at the current of the "
+                f"supply sweep, {amps:g} A: that limit is what it is useful by"
             )

@@ -23,6 +23,7 @@ from benchkit.guard.looking import Looking
 from benchkit.guard.off import discharged, doubts_of, say
 from benchkit.guard.outputs import Outputs
 from benchkit.guard.permissives import (
+    DEAD_POINTS,
     check_calibration,
     check_dead,
     check_loop,
@@ -30,14 +31,13 @@ from benchkit.guard.permissives import (
 )
 from benchkit.guard.trips import Trip, above, of_ports
 from benchkit.guard.watch import Watch
-from benchkit.harness import Harness, Port, Source
+from benchkit.harness import Harness, Source
 from benchkit.prediction.coordination import Coordination
 from benchkit.protocols import Clock, Interlock, Journal, Load, Operator, Points, Supply, Wiring
 from benchkit.reading import Reading
 
 SLACK_S = 1.0
 """What arithmetic, disk and screen may take between two looks, beside the instruments."""
-PORTS: tuple[Port, ...] = ("exposed", "guarded")
 
 
 class Guard:
@@ -234,7 +234,7 @@ class Guard:
 
         began = self.now()
         while self.now() - began < thresholds.discharge_s:
-            if all(abs(read(f"{port}_voltage")) <= thresholds.residual_V for port in PORTS):
+            if all(abs(read(point)) <= thresholds.residual_V for point in DEAD_POINTS):
                 break
             self._sleep(0.05)
         check_dead(read, thresholds)

@@ -13,6 +13,7 @@ from benchkit.files.guarding import Thresholds
 from benchkit.prediction.coordination import Coordination
 from benchkit.protocols import Interlock
 
+DEAD_POINTS = ("exposed_voltage", "guarded_voltage", "drop")
 Read = Callable[[str], float]
 
 
@@ -49,7 +50,7 @@ def check_fuse(declared: Coordination | None, *, in_place: bool) -> None:
 
 def check_dead(read: Read, thresholds: Thresholds) -> None:
     """Both ports are dead with everything off, by all three meter channels."""
-    for point in ("exposed_voltage", "guarded_voltage", "drop"):
+    for point in DEAD_POINTS:
         value = read(point)
         if not abs(value) <= thresholds.residual_V:
             raise Refused(

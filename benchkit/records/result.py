@@ -56,6 +56,9 @@ class Result:
     ratings: list[dict[str, object]] = field(default_factory=list)
     """Predicted, at the worst of tolerance and supply: scenario, part, rating, unit, value,
     limit, margin, holds."""
+    scenarios: list[dict[str, object]] = field(default_factory=list)
+    """What was predicted of a scenario beside what was found: scenario, what, predicted, found,
+    agrees."""
 
     def document(self) -> dict[str, object]:
         """JSON-ready, with the contract's keys first."""
@@ -70,4 +73,5 @@ class Result:
             "findings": self.findings,
             "not_tested": self.not_tested,
             "ratings": self.ratings,
+            "scenarios": self.scenarios,
         }

@@ -2,19 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import groupby
 
 from benchkit.evaluation.evaluate import Evaluation
 from benchkit.records.record import Record
 from benchkit.records.result import Measurand
+from benchkit.reports.battery_trial import battery_trial_section
 from benchkit.reports.budgets import budget_tables, drop_tables
+from benchkit.reports.clamp_trial import clamp_section
 from benchkit.reports.figures import board_figure, thinned
 from benchkit.reports.front import front_page
+from benchkit.reports.fused_trial import fused_section
 from benchkit.reports.law import FittedLaw, fitted_law
 from benchkit.reports.pages import render
 from benchkit.reports.reverse import reverse_section
+from benchkit.reports.scenarios import scenarios_section
+from benchkit.reports.section import Section
+from benchkit.reports.supply_sweep import supply_sweep_section
 from benchkit.reports.words import (
     Figures,
     Strip,
@@ -38,8 +44,20 @@ NOTABLE = {
     "reverse-skipped": "Trial in reverse skipped",
     "left-reversed": "Leads left crossed",
     "harness": "Leads",
+    "clamp-cut": "Clamp trial cut short",
+    "fuse-stayed": "The fuse did not open",
+    "new-fuse": "New fuse",
+    "not-cooled": "Still warm",
+    "supply-sweep-ends": "Supply sweep ended",
+    "battery-conducts": "Conducts at a battery",
+    "battery-skipped": "Battery trial skipped",
     "load": "Load",
 }
+SECTIONS: tuple[Callable[[Record, Evaluation], Section | None], ...] = (
+    supply_sweep_section, clamp_section, fused_section, battery_trial_section,
+    scenarios_section,
+)  # fmt: skip
+"""Of the further parts of a run, in order; each gives None for a run that has no such part."""
 ANSWERS = {
     "pass": "Yes, for what was tested here.",
     "fail": "No: the board does not meet what it must.",
@@ -124,10 +142,26 @@ def board_report(record: Record, evaluation: Evaluation, manifest: Mapping[str, 
         instruments=instruments, overdue=overdue,
         events=_events(record), not_off=not_off, crossed=crossed,
         reverse=reverse, ladder=Markup(reverse.figure) if reverse is not None else "",
+        tried=_tried(record),
+        sections=[s for draw in SECTIONS if (s := draw(record, evaluation)) is not None],
         simulated=simulated,
         conditions=_conditions(record, evaluation), versions=_versions(manifest),
         promises=evaluation.stage.notes,
     )  # fmt: skip
+
+
+def _tried(record: Record) -> str:
+    """What kinds of trial the stage file asked for, in words."""
+    file = record.stage
+    words = [
+        "forward drop",
+        *(["heat"] if file.soak else []),
+        *(["supply voltage"] if file.supply_sweep else []),
+        *(["reversed supply"] if file.reverse else []),
+        *(["blown fuse"] if file.fused_trial else []),
+        *(["battery"] if file.battery_trial else []),
+    ]
+    return words[0] if len(words) == 1 else f"{', '.join(words[:-1])} and {words[-1]}"
 
 
 def _groups(rows: Sequence[Measurand]) -> list[Group]:

@@ -2,21 +2,16 @@
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 from benchkit.evaluation.drop_change import DropChange
 from benchkit.evaluation.evaluate import Evaluation
-from benchkit.evaluation.promised import promised
 from benchkit.evaluation.reverse import Figure, Rung, Trial
 from benchkit.evaluation.reverse_band import ReverseBand
+from benchkit.evaluation.spelled import minus, paired, small, spanned
 from benchkit.evaluation.verdict import rounded
-from benchkit.prefixes import spoken
 from benchkit.records.record import Record
 from benchkit.reports.reverse_figure import reverse_figure
-from benchkit.reports.words import NONE
-
-LEAST_A, LEAST_V = 1e-12, 1e-6
 
 
 @dataclass(frozen=True)
@@ -41,16 +36,6 @@ class ChangeRow:
 
 
 @dataclass(frozen=True)
-class ScenarioRow:
-    """What was predicted of a scenario, beside what was found."""
-
-    scenario: str
-    what: str
-    predicted: str
-    found: str
-
-
-@dataclass(frozen=True)
 class Section:
     """``figure`` is SVG, and all the rest is text."""
 
@@ -58,7 +43,6 @@ class Section:
     figure: str
     rungs: list[RungRow]
     changes: list[ChangeRow]
-    scenarios: list[ScenarioRow]
 
 
 def reverse_section(record: Record, evaluation: Evaluation) -> Section | None:
@@ -73,7 +57,6 @@ def reverse_section(record: Record, evaluation: Evaluation) -> Section | None:
         reverse_figure(trial, evaluation.bands[: len(trial.rungs)], record.stage.limits),
         [_rung(trial, *pair) for pair in pairs],
         [_change(change) for change in trial.changes],
-        _scenarios(record, trial),
     )
 
 
@@ -108,37 +91,18 @@ def _rung(trial: Trial, rung: Rung, band: ReverseBand) -> RungRow:
     return RungRow(
         f"{rung.voltage_V:.2f} V{held}",
         (
-            _pair(rung.leakage, "A"), _small(band.leakage.nominal, "A"),
-            f"{_small(band.leakage.low, 'A')} to {_small(band.leakage.high, 'A')}",
+            _pair(rung.leakage, "A"), small(band.leakage.nominal, "A"),
+            spanned(band.leakage.low, band.leakage.high, "A"),
         ),
         (
-            _pair(rung.guarded, "V"), _small(band.guarded.nominal, "V"),
-            f"{_small(band.guarded.low, 'V')} to {_small(band.guarded.high, 'V')}",
+            _pair(rung.guarded, "V"), small(band.guarded.nominal, "V"),
+            spanned(band.guarded.low, band.guarded.high, "V"),
         ),
     )  # fmt: skip
 
 
 def _pair(figure: Figure, unit: str) -> str:
-    """Both numbers in the unit of the larger, to the decimal place that U allows."""
-    U = figure.budget.expanded().U
-    most = max(abs(figure.value), U if math.isfinite(U) else 0.0)
-    factor, prefix = next(
-        ((f, p) for f, p in ((1.0, ""), (1e3, "m"), (1e6, "µ")) if f * most >= 1.0), (1e9, "n")
-    )
-    value, spread = rounded(factor * figure.value, factor * U)
-    return f"{_minus(value)} ± {spread} {prefix}{unit}"
-
-
-def _minus(number: str) -> str:
-    """A minus sign instead of a hyphen, and none before a zero."""
-    return number.replace("-", "−") if number.strip("-0.") else number.lstrip("-")
-
-
-def _small(value: float, unit: str) -> str:
-    if not math.isfinite(value):
-        return NONE
-    least = LEAST_A if unit == "A" else LEAST_V
-    return f"0 {unit}" if abs(value) < least else spoken(value, unit, 2).replace("-", "−")
+    return paired(figure.value, figure.budget.expanded().U, unit)
 
 
 def _change(change: DropChange) -> ChangeRow:
@@ -146,27 +110,6 @@ def _change(change: DropChange) -> ChangeRow:
     places = len(value.partition(".")[2])
     return ChangeRow(
         f"{change.current_A:g} A", f"{1e3 * change.before_V:.{places}f}",
-        f"{1e3 * change.after_V:.{places}f}", _minus(value), spread,
-        f"{_minus(f'{change.after_C - change.before_C:.1f}')} K",
+        f"{1e3 * change.after_V:.{places}f}", minus(value), spread,
+        f"{minus(f'{change.after_C - change.before_C:.1f}')} K",
     )  # fmt: skip
-
-
-def _scenarios(record: Record, trial: Trial) -> list[ScenarioRow]:
-    """The predictions for a stage connected the wrong way round, beside what was found."""
-    if trial.last is None:
-        return []
-    leakage, guarded = trial.last.leakage, trial.last.guarded
-    rows = []
-    for found in promised(record).scenarios:
-        if found.name == "reversed-source":
-            rows += [
-                ScenarioRow(
-                    found.name, "current out of the exposed plus terminal",
-                    _small(-found.exposed_current_A, "A"), _pair(leakage, "A"),
-                ),
-                ScenarioRow(
-                    found.name, "guarded port below zero", _small(-found.guarded_V, "V"),
-                    _pair(guarded, "V"),
-                ),
-            ]  # fmt: skip
-    return rows

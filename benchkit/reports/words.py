@@ -20,8 +20,22 @@ NAMES = {
     "reverse_leakage": "Leakage in reverse",
     "reverse_guarded": "Guarded port below zero, in reverse",
     "drop_change": "Change of the drop by the trial in reverse",
+    "on_from": "Supply voltage from which it is on",
+    "useful_from": "Supply voltage from which the drop keeps its limit",
+    "gate_voltage": "Gate to source",
+    "gate_margin": "Gate margin",
+    "supply_drop": "Drop at the ends of the supply sweep",
+    "battery_current": "Current out of a battery, into a flat one",
+    "battery_guarded": "Guarded port, with a battery at the exposed one",
+    "clamp_leakage": "Leakage of the clamp",
+    "clamp_drop": "Drop of the clamp, reversed",
+    "clamp_peak": "Guarded port below zero while the fuse opened",
+    "clamp_drop_change": "Change of the clamp's drop by the fused trial",
+    "clamp_leakage_change": "Change of the clamp's leakage by the fused trial",
+    "fuse_clears": "Time until the fuse had cleared",
+    "fuse_let_through": "I²t that the fuse let through",
 }
-UNITS = {"C": "°C"}
+UNITS = {"C": "°C", "A2s": "A²s"}
 VERDICTS = {"pass": "PASS", "fail": "FAIL", "undecided": "UNDECIDED"}
 NONE = "–"
 AS_MEASURED = {"reverse_guarded"}

@@ -163,7 +163,9 @@ def terminals(hookup: Hookup, ports: Ports, solution: Solution) -> dict[str, Flo
         given = currents["battery.lead"] if source == "battery" else -currents["supply"]
         at_port = guarded if port == "guarded" else harness.sign * rail
         found[f"{source}_voltage"] = at_port + hookup.behind_ohm(source) * given
-        found[f"{source}_current"] = given
+        # The stand-in's output feeds the resistor across it as well.
+        own = -currents.get("battery", none) if source == "battery" else given
+        found[f"{source}_current"] = own
         if port == "exposed" and hookup.folded:
             found["exposed_current"] = harness.sign * given
     return found

@@ -124,19 +124,6 @@ def test_a_stage_that_conducts_at_one_volt_fails(tmp_path: Path) -> None:
     assert rows(made, "reverse_leakage")[0].verdict == "undecided"
 
 
-def test_a_clamp_conducts_by_its_nature(tmp_path: Path) -> None:
-    clamp = JUNCTION.replace('"series-diode"', '"clamp"').replace(
-        "[limits]\n", "[reverse]\n[limits]\n"
-    )
-    board = Board(
-        stage=clamp, reversal=Reversal(rungs=(), dwell=0, currents=()),
-        events=(("reverse-conducts", CONDUCTS),),
-    )  # fmt: skip
-    told = [t for t in judged(tmp_path, board).result.why if CONDUCTS in t]
-    assert len(told) == 1
-    assert told[0].startswith("in reverse it conducts, as its datasheets say it must")
-
-
 @pytest.mark.parametrize(
     ("text", "verdict"),
     [

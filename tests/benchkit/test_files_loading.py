@@ -37,8 +37,9 @@ def complaint(text: str, *changes: tuple[str, str]) -> str:
         ),
         (
             ("[heat]", "[bonus]\nx = 1\n[heat]"),
-            "bonus is not a key here; the keys here are battery, equipment, heat, limits, network, "
-            "parts, reverse, soak, source, stage, sweep",
+            "bonus is not a key here; the keys here are battery, battery_trial, equipment, "
+            "fused_trial, heat, limits, network, parts, reverse, soak, source, stage, "
+            "supply_sweep, sweep",
         ),
         # wrong units: a key with another unit is an unknown key
         (

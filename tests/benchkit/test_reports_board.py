@@ -220,13 +220,15 @@ def test_a_trial_in_reverse_has_its_section(tmp_path: Path) -> None:
     wanted = (
         "Wrong way round", "raised to 5, 10 and 15\u00a0V behind a current limit of 0.1\u00a0A, "
         "and stayed at 15\u00a0V for 6\u00a0s", "<svg role", "15.00 V, after 6 s",
-        "Forward drop before and after, leads put right", "reversed-source", "Caution.",
+        "Forward drop before and after, leads put right", "Caution.",
     )  # fmt: skip
     places = [section.find(text) for text in wanted]
     assert -1 not in places
     assert places == sorted(places)
     last = section[section.index("15.00 V, after 6 s") :]
     assert "2.97 ± 0.15 mV" in last[: last.index("</tr>")]
+    table = html[html.index('id="scenarios"') :]
+    assert "reversed-source" in table[: table.index("</section>")]
     assert board_report(record, evaluation, MANIFEST) == html
 
 

@@ -314,7 +314,9 @@ def record(folder: Path, board: Board) -> Record:
         pair("zero/after", 0.0, 0.0)
     if board.reversal is not None:
         log.now += 30.0
+        log.event("step", "leads crossed", time_s=log.now)
         _reverse(log, board.reversal, board.trip, ambient, pair)
+        log.event("step", "leads put back", time_s=log.now)
         for amps in board.reversal.currents:
             log.now += 1.0
             log.degrees(f"after/{amps!r}", "case", ambient + 0.2)

@@ -87,7 +87,9 @@ def test_both_sources_count_in_the_exposed_current(make: Make) -> None:
     plant.command_supply("supply", VOLTS, 1.5, True)
     on(plant, VOLTS - 0.3, load=3.0)
     volts, amps, limits = plant.supply_terminals("supply")
-    battery_volts, battery_amps, _ = plant.supply_terminals("battery")
+    battery_volts, output_amps, _ = plant.supply_terminals("battery")
+    # Its output feeds the resistor across it as well.
+    battery_amps = output_amps - battery_volts / BLEEDER_OHM
     assert limits
     assert amps == pytest.approx(1.5, rel=1e-3)
     load_volts, load_amps = plant.load_terminals()
@@ -102,22 +104,25 @@ def test_both_sources_count_in_the_exposed_current(make: Make) -> None:
 
 
 def test_a_stand_in_does_not_sink_and_its_bleeder_does(make: Make) -> None:
-    """Its current, out of its plus, is what its bleeder takes, and when on its small preload."""
+    """What is driven into it its bleeder takes, and when it is on its small preload."""
     plant = make("pmos-pass")
     plant.wire(BOTH)
     plant.command_supply("supply", VOLTS, 1.5, True)
     plant.elapse(1)
     volts, amps, limits = plant.supply_terminals("battery")
     assert volts == pytest.approx(VOLTS, abs=0.01)
-    assert amps == pytest.approx(-volts / BLEEDER_OHM, rel=1e-6)
+    assert amps == 0
+    assert plant.truth("exposed_current") == pytest.approx(
+        plant.supply_terminals("supply")[1] - volts / BLEEDER_OHM, rel=1e-6
+    )
     assert not limits
     on(plant, 5.0)
-    more = plant.supply_terminals("battery")[1]
-    assert -amps < -more < -amps + 0.006
+    assert -0.006 < plant.supply_terminals("battery")[1] <= 0
     plant.command_supply("supply", VOLTS, 1.5, False)
     plant.elapse(1)  # now the stand-in feeds the port, and the supply's own discharger
     assert plant.supply_terminals("battery")[0] == pytest.approx(5.0, abs=0.01)
-    assert plant.supply_terminals("battery")[1] == pytest.approx(0.1, abs=0.01)
+    # Into the supply's discharger of 50 ohm, and into its own resistor.
+    assert plant.supply_terminals("battery")[1] == pytest.approx(0.1 + 5.0 / BLEEDER_OHM, abs=0.01)
 
 
 def test_off_and_alone_its_terminals_are_dead(make: Make) -> None:

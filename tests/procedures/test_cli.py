@@ -230,10 +230,10 @@ def test_two_simulated_benches_can_be_served_at_once(served: Path) -> None:
     second = start("simulate", "bench.toml", cwd=served)
     try:
         assert second.stdout is not None
-        lines = [second.stdout.readline() for _ in range(6)]
+        lines = [second.stdout.readline() for _ in range(7)]
         assert lines[-1].startswith("in real time")
         first = (served / "real.toml").read_text()
-        assert not any(line.split()[1] in first for line in lines[:4])
+        assert not any(line.split()[1] in first for line in lines[:5])
     finally:
         second.kill()
         second.communicate()

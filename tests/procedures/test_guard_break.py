@@ -31,13 +31,15 @@ from benchkit.errors import (
     Tripped,
 )
 from benchkit.guard import Guard
+from benchkit.harness import Harness
 from benchkit.protocols import SupplyState
 from benchkit.records.record import read_record
 from benchkit.records.run_folder import RunFolder
-from instruments.bench import Traffic, longest_waits_s
 from instruments.dialects import load_dialect
 from instruments.dialects.tables import Dialect
 from instruments.errors import WrongInstrument
+from instruments.traffic import Traffic
+from instruments.waits import longest_waits_s
 from procedures.commands import opened
 from procedures.exits import leaving, report_error
 from procedures.interrupts import REPEAT_S, Interrupts
@@ -278,9 +280,9 @@ def test_an_output_found_on_is_off_before_a_board_is_put_in(
     with opened(inputs_of(folder), Screen(quiet=True)) as bench:
         honest = bench.fixture.place
 
-        def place(serial: str, stage_path: Path) -> None:
-            found.append(bench.guard._Guard__supply.state())  # type: ignore[attr-defined]
-            honest(serial, stage_path)
+        def place(serial: str, stage_path: Path, harness: Harness) -> None:
+            found.append(bench.guard._Guard__outputs.state("supply"))  # type: ignore[attr-defined]
+            honest(serial, stage_path, harness)
             raise Refused("enough")
 
         monkeypatch.setattr(bench.fixture, "place", place)
@@ -327,12 +329,18 @@ def test_the_blind_time_is_that_of_the_dialects(tmp_path: Path) -> None:
         "thermometer": "thermometer-scan",
     }
     dialects = {
-        name: load_dialect(shipped[item.kind], Dialect) for name, item in file.instruments.items()
+        name: load_dialect("supply-plain" if item.stands_for else shipped[item.kind], Dialect)
+        for name, item in file.instruments.items()
     }
     slowest = max(point.aperture_nplc for point in file.points.values())
-    # range and aperture set (2 s), reading (2 s and two apertures at 50 Hz); supply and case
-    # looked at (2 s each) and one voltage (4 s); the supply opened again twice (5 s each).
-    assert longest_waits_s(file, dialects) == pytest.approx(4 + 2 * slowest / 50 + 8 + 10)
+    supplies = 1 if file.battery is None else 2
+    # A burst ended (2 s), range and aperture set (2 s), reading (2 s and two apertures at 50 Hz);
+    # every supply and the case looked at (2 s each) and one voltage (4 s); every supply opened
+    # again twice (5 s each).
+    looked = 2 * supplies + 2 + 4
+    assert longest_waits_s(file, dialects) == pytest.approx(
+        6 + 2 * slowest / 50 + looked + 10 * supplies
+    )
 
 
 @pytest.mark.parametrize(

@@ -12,15 +12,10 @@ from benchkit.records.record import read_json
 from benchkit.records.run_folder import hashes
 from procedures import commands
 from procedures.cli import app
-from procedures.inputs import MEASURED as MEASURED_TOPOLOGIES
 from procedures.inputs import read_board
 from tests.benchkit.nine_stages import PARTS, STAGES, text
 from tests.simulated_bench import GOOD, measure, workshop
 
-MEASURED = (
-    "what is measured so far is series-diode, pmos-pass, pmos-pass-zener, nmos-pass, "
-    "nmos-pass-zener guarding a load"
-)
 LEAD = 'kind = "lead"\nvalue_ohm = 0.01\n'
 LIMITS = """
 [soak]
@@ -60,24 +55,17 @@ def refused(folder: Path, stage: str, monkeypatch: pytest.MonkeyPatch) -> str:
     return line.removeprefix(f"{path}: ")
 
 
-@pytest.mark.parametrize(
-    ("topology", "guards"),
-    [("pmos-sensed", "supply"), ("nmos-sensed", "supply"), ("clamp", "supply")],
-)
-def test_a_topology_that_is_not_measured_yet_is_refused(
-    topology: str, guards: str, folder: Path, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    assert refused(folder, text(topology), monkeypatch) == (
-        f"stage.topology is {topology!r}, guarding a {guards}: {MEASURED}; `benchkit predict` "
-        "answers for every topology"
-    )
-
-
-def test_a_measured_topology_that_guards_a_supply_is_refused(
+def test_a_circuit_of_one_s_own_is_predicted_and_not_measured(
     folder: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    said = refused(folder, text("pmos-pass", stage='guards = "supply"'), monkeypatch)
-    assert said.startswith(f"stage.topology is 'pmos-pass', guarding a supply: {MEASURED}")
+    stage = (folder / "stage-network.toml").read_text("utf-8")
+    said = refused(folder, stage, monkeypatch)
+    assert said.startswith('stage.topology is "network": a circuit of your own is predicted')
+
+
+def test_a_clamp_is_not_soaked(folder: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    said = refused(folder, text("clamp") + "[soak]\ncurrent_A = 1.0\n", monkeypatch)
+    assert said.startswith("soak is given, but in a clamp the working current does not flow")
 
 
 @pytest.mark.parametrize(
@@ -92,14 +80,15 @@ def test_a_part_whose_drop_would_be_taken_for_the_main_part_s_is_refused(
     parts: dict[str, str], named: str, left_out: str, folder: Path,
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:  # fmt: skip
-    assert refused(folder, text("pmos-pass", **parts), monkeypatch) == (
-        f"parts.{named} is in the way of the current: its drop and heat would be taken for those "
-        "of Q1; put the drop point's taps across Q1 and measure with a file that leaves "
-        f"{left_out} out"
+    soaked = text("pmos-pass", **parts) + "[soak]\ncurrent_A = 1.0\n"
+    assert refused(folder, soaked, monkeypatch) == (
+        f"parts.{named} is in the way of the current: its heat would be taken for that of Q1. "
+        "Leave [soak] out, or put the drop point's taps across Q1 and measure with a file that "
+        f"leaves {left_out} out"
     )
 
 
-@pytest.mark.parametrize("topology", MEASURED_TOPOLOGIES)
+@pytest.mark.parametrize("topology", sorted(STAGES))
 def test_what_is_measured_is_planned(topology: str, folder: Path) -> None:
     path = folder / "mine.toml"
     path.write_text(text(topology), encoding="utf-8")

@@ -6,6 +6,7 @@ import json
 import os
 import signal
 from pathlib import Path
+from typing import cast
 
 import pytest
 
@@ -13,19 +14,22 @@ import procedures.reverse as reverse_module
 from benchkit.errors import NotConfirmedOff, OperatorStopped, Refused, Tripped
 from benchkit.files import BenchFile, load
 from benchkit.guard import Guard
-from benchkit.harness import DRAWING, Harness, reversed_harness
+from benchkit.harness import DRAWING, Harness, reversed_from
 from benchkit.records.record import Record, read_json, read_record
+from benchkit.records.run_folder import RunFolder
 from procedures.commands import opened, verify_board
 from procedures.inputs import read_board
 from procedures.plan import plan_board
-from procedures.reverse import LEFT, run_reverse
+from procedures.rewired import left_crossed
 from procedures.screen import Screen
+from procedures.trial import Run
 from procedures.verify import Done, run_board
 from tests.benchkit.nine_stages import made, text
 from tests.simulated_bench import GOOD, workshop
 from tests.stand_in import Notes, StandInOperator, StandInWiring, World, guard_of
 
-REVERSED = reversed_harness(1000.0)
+REVERSED = reversed_from(DRAWING, 1000.0)
+LEFT = left_crossed(DRAWING)
 
 REVERSE = "[reverse]\nsteps = 3\ndwell_s = 3.0\n"
 BOARD = "TG-0050"
@@ -213,12 +217,20 @@ def test_leads_that_a_run_left_crossed_are_put_back_before_the_next_board(tmp_pa
 def tries(folder: Path, world: World, notes: Notes, guard: Guard | None = None) -> Guard:
     """The trial alone on the scripted bench."""
     bench = load(BenchFile, workshop(folder, trial=True) / "bench.toml")
-    plan = plan_board(made("pmos-pass", tables=REVERSE), bench)
     guard = guard or guard_of(world, notes)
     guard.begin(notes)
     guard.make_safe("at the start")
-    run_reverse(guard, bench, plan, [0.1, 0.5, 1.0, 2.0, 3.0], 0.0, QUIET)
+    does(guard, bench, [0.1, 0.5, 1.0, 2.0, 3.0])
     return guard
+
+
+def does(guard: Guard, bench: BenchFile, carried_A: list[float]) -> None:
+    """The planned trial; nothing of it goes to a folder."""
+    stage = made("pmos-pass", tables=REVERSE)
+    plan = plan_board(stage, bench)
+    nowhere = cast("RunFolder", None)
+    [trial] = plan.trials
+    trial.do(Run(guard, stage, bench, plan.forward, nowhere, QUIET, carried_A=carried_A))
 
 
 def test_a_case_that_the_soak_left_warm_is_waited_for(tmp_path: Path) -> None:
@@ -256,7 +268,7 @@ def test_a_person_who_declines_is_told_that_the_leads_may_be_crossed(
 
     world, notes = World(), Notes()
     guard = guard_of(world, notes)
-    guard._wiring = Declining(world)
+    guard._leads.wiring = Declining(world)
     with pytest.raises(OperatorStopped):
         tries(tmp_path / "w", world, notes, guard)
     assert notes.events[-1] == ("left-reversed", LEFT)
@@ -292,8 +304,7 @@ def test_ports_that_hold_a_charge_are_not_told_as_crossed(tmp_path: Path) -> Non
     guard.make_safe("at the start")
     world.residual_V = 0.8
     bench = load(BenchFile, workshop(tmp_path / "w", trial=True) / "bench.toml")
-    plan = plan_board(made("pmos-pass", tables=REVERSE), bench)
     with pytest.raises(Refused, match="with everything off"):
-        run_reverse(guard, bench, plan, [0.1], 0.0, QUIET)
+        does(guard, bench, [0.1])
     assert world.wired == []
     assert "left-reversed" not in notes.kinds()

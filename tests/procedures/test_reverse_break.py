@@ -12,18 +12,20 @@ import procedures.reverse as reverse_module
 from benchkit.errors import InputError, OperatorStopped, Refused, Stopped, Tripped
 from benchkit.files import BenchFile, load
 from benchkit.guard import Guard
-from benchkit.harness import DRAWING, Harness, reversed_harness
+from benchkit.harness import DRAWING, Harness, reversed_from
 from benchkit.reading import Reading
 from procedures.commands import opened
 from procedures.inputs import read_board
 from procedures.plan import plan_board
+from procedures.reverse_plan import ReversePlan
 from procedures.verify import _measure, run_board
 from tests.benchkit.nine_stages import made
 from tests.procedures.test_reverse import BOARD, QUIET, REVERSE, shop, tried, tries
+from tests.procedures.test_reverse_plan import trial_of
 from tests.simulated_bench import workshop
 from tests.stand_in import Notes, StandInPoints, StandInWiring, World, guard_of
 
-REVERSED = reversed_harness(1000.0)
+REVERSED = reversed_from(DRAWING, 1000.0)
 
 
 DROP = "[limits]\ndrop = [{ current_A = 2, max_V = 2 }]\n"
@@ -131,7 +133,7 @@ def test_a_trip_stays_a_trip_when_the_leads_are_not_put_back(tmp_path: Path) -> 
 
     world = Breaking()
     guard = guard_of(world)
-    guard._wiring = Declining(world)
+    guard._leads.wiring = Declining(world)
     with pytest.raises(Stopped) as caught:
         tries(tmp_path / "w", world, Notes(), guard)
     assert isinstance(caught.value, Tripped)
@@ -144,7 +146,7 @@ def test_a_trip_stays_a_trip_when_the_leads_are_not_put_back(tmp_path: Path) -> 
 def test_leads_stuck_crossed_are_said_to_be_crossed(conducts: bool, tmp_path: Path) -> None:
     world, notes = World(conducts_reversed=conducts), Notes()
     guard = guard_of(world, notes)
-    guard._wiring = StickingCrossed(world)
+    guard._leads.wiring = StickingCrossed(world)
     with pytest.raises((Refused, Tripped)):
         tries(tmp_path / "w", world, notes, guard)
     assert "left-reversed" in notes.kinds()
@@ -153,7 +155,7 @@ def test_leads_stuck_crossed_are_said_to_be_crossed(conducts: bool, tmp_path: Pa
 def test_leads_stuck_crossed_are_the_benchs_fault(tmp_path: Path) -> None:
     world = World(conducts_reversed=True)
     guard = guard_of(world)
-    guard._wiring = StickingCrossed(world)
+    guard._leads.wiring = StickingCrossed(world)
     with pytest.raises(Refused):
         tries(tmp_path / "w", world, Notes(), guard)
 
@@ -165,15 +167,16 @@ class Hands:
     world: World
     found_V: list[float]
 
-    def place(self, serial: str, stage_path: Path) -> None:
-        del serial, stage_path
+    def place(self, serial: str, stage_path: Path, harness: Harness) -> None:
+        del serial, stage_path, harness
         self.found_V.append(max(abs(self.world.guarded_V()), abs(self.world.port_V())))
         raise OperatorStopped("far enough")
 
 
 def measured(guard: Guard, fixture: Hands) -> None:
     bench = SimpleNamespace(guard=guard, file=None, fixture=fixture)
-    job = SimpleNamespace(stage_path=Path("mine.toml"))
+    plan = SimpleNamespace(forward=SimpleNamespace(home=DRAWING))
+    job = SimpleNamespace(stage_path=Path("mine.toml"), plan=plan)
     _measure(bench, job, BOARD, Notes(), QUIET)  # type: ignore[arg-type]
 
 
@@ -211,15 +214,17 @@ def test_no_board_is_changed_while_the_guarded_port_holds_its_charge() -> None:
 # stage files with odd values
 
 
-def planned(folder: Path, tables: str) -> object:
-    return plan_board(made("pmos-pass", tables=tables), load(BenchFile, folder / "bench.toml"))
+def planned(folder: Path, tables: str) -> ReversePlan:
+    return trial_of(
+        plan_board(made("pmos-pass", tables=tables), load(BenchFile, folder / "bench.toml"))
+    )
 
 
 def test_the_last_rung_is_the_full_voltage_and_lasts_its_dwell(tmp_path: Path) -> None:
     folder = workshop(tmp_path / "w", trial=True)
     odd = next(v / 100 for v in range(1200, 1500) if v / 100 * 3 / 3 != v / 100)
     plan = planned(folder, f"[reverse]\nvoltage_V = {odd}\nsteps = 3\ndwell_s = 600\n")
-    last = plan.reverse.rungs[-1]  # type: ignore[attr-defined]
+    last = plan.rungs[-1]
     assert last.longest_s > 600
     assert last.voltage_V == odd
 
@@ -233,7 +238,7 @@ def test_a_guarded_limit_beyond_the_voltage_applied_is_refused(tmp_path: Path) -
 def test_the_smallest_trial_does_not_exceed_what_is_harmless(tmp_path: Path) -> None:
     folder = workshop(tmp_path / "w", trial=True)
     plan = planned(folder, "[reverse]\nvoltage_V = 0.001\nsteps = 20\ncurrent_limit_A = 1e-6\n")
-    rungs = plan.reverse.rungs  # type: ignore[attr-defined]
+    rungs = plan.rungs
     assert max(rung.voltage_V for rung in rungs) <= 0.001
     assert max(rung.over_current_A for rung in rungs) <= 1e-6
 

@@ -9,9 +9,11 @@ import pytest
 
 from benchkit.errors import InputError
 from benchkit.files import BenchFile, load
-from benchkit.harness import DRAWING, reversed_harness
+from benchkit.harness import DRAWING, reversed_from
 from procedures.inputs import read_board
 from procedures.plan import Plan, plan_board
+from procedures.reverse import ReverseTrial
+from procedures.reverse_plan import ReversePlan
 from tests.benchkit.nine_stages import made, text
 from tests.simulated_bench import workshop
 
@@ -30,11 +32,17 @@ def planned(
     return plan_board(made(topology, tables=tables), bench)
 
 
+def trial_of(plan: Plan) -> ReversePlan:
+    [trial] = plan.trials
+    assert isinstance(trial, ReverseTrial)
+    return trial.plan
+
+
 def test_the_plan_says_what_will_be_done(tmp_path: Path) -> None:
     plan = planned(tmp_path / "w")
     said = "\n".join(plan.lines())
     for words in (
-        reversed_harness(None).sentence(),
+        reversed_from(DRAWING, None).sentence(),
         DRAWING.sentence(),
         "5, 10, 15 V the wrong way round, the last for 3 s",
         "current limit 0.1 A",
@@ -44,9 +52,8 @@ def test_the_plan_says_what_will_be_done(tmp_path: Path) -> None:
         "Wear eye protection",
     ):
         assert words in said
-    assert plan.reverse is not None
-    assert plan.reverse.full_V == 15.0
-    for rung in plan.reverse.rungs:
+    assert trial_of(plan).full_V == 15.0
+    for rung in trial_of(plan).rungs:
         assert not rung.may_limit
         assert rung.over_current_A == rung.current_limit_A == 0.1
         # 1.5 times 0.6 V, or 1.5 times what 0.7 uA of 1 uA at 30 V do in 1 Mohm.
@@ -57,30 +64,27 @@ def test_the_plan_says_what_will_be_done(tmp_path: Path) -> None:
         "reverse 5 V", "reverse 10 V", "reverse 15 V",
     ]  # fmt: skip
     without = planned(tmp_path / "v", tables="")
-    assert without.reverse is None
+    assert without.trials == ()
     assert "wrong way round" not in "\n".join(without.lines())
 
 
 def test_the_guarded_port_trips_beyond_its_limit_and_beyond_honest_leakage(tmp_path: Path) -> None:
     limit = REVERSE + "[limits]\nguarded_reverse_max_V = 0.8\n"
     plan = planned(tmp_path / "w", limit)
-    assert plan.reverse is not None
-    assert plan.reverse.rungs[0].guarded_min_V == pytest.approx(-1.2)
+    assert trial_of(plan).rungs[0].guarded_min_V == pytest.approx(-1.2)
     # A Schottky diode's 200 uA, of which next to nothing is needed to take 1 Mohm all the way down.
     plan = planned(tmp_path / "v", topology="series-diode")
-    assert plan.reverse is not None
-    assert plan.reverse.rungs[-1].guarded_min_V < -15
-    assert "the current limit is what watches" in plan.reverse.text()
+    assert trial_of(plan).rungs[-1].guarded_min_V < -15
+    assert "the current limit is what watches" in trial_of(plan).text()
 
 
 def test_a_resistor_brings_the_trip_of_a_schottky_within_reach(tmp_path: Path) -> None:
     plan = planned(tmp_path / "w", topology="series-diode", bleeder_ohm=1000.0)
-    assert plan.reverse is not None
-    for rung in plan.reverse.rungs:
+    for rung in trial_of(plan).rungs:
         # 1.5 times 0.6 V: 200 uA into 1 kohm are a fifth of a volt.
         assert rung.guarded_min_V == pytest.approx(-0.9)
     said = "\n".join(plan.lines())
-    assert reversed_harness(1000.0).sentence() in said
+    assert reversed_from(DRAWING, 1000.0).sentence() in said
     assert "put a resistor of 1000 ohm across the guarded port" in said
     assert "the current limit is what watches" not in said
     # 15 V, squared, in 1 kohm: 0.225 W, which any resistor stands.
@@ -89,8 +93,7 @@ def test_a_resistor_brings_the_trip_of_a_schottky_within_reach(tmp_path: Path) -
 
 def test_a_resistor_that_gets_hot_is_said(tmp_path: Path) -> None:
     plan = planned(tmp_path / "w", bleeder_ohm=100.0)
-    assert plan.reverse is not None
-    assert "one that stands 2.25 W" in plan.reverse.caution
+    assert "one that stands 2.25 W" in trial_of(plan).caution
     assert "one that stands 2.25 W" in "\n".join(plan.lines())
 
 
