@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 
 import numpy as np
 
@@ -24,10 +25,11 @@ from benchkit.evaluation.battery_trial_circuits import (
 from benchkit.files import BenchFile
 from benchkit.files.bench import PointName
 from benchkit.guard import Ceilings, Drive, Envelope
-from benchkit.harness import Harness
+from benchkit.harness import NAMES, Harness, Source
 from benchkit.stage import Stage
 from procedures.battery_trial_words import caution, check_ratings, expected
 from procedures.cooling import COOL_K, longest_cool_s
+from procedures.limiting import trips_at_limit
 from procedures.trial import ZEROS, Step
 
 READINGS = 4
@@ -118,13 +120,13 @@ class BatteryPlan:
 
 
 def plan_battery_trial(
-    stage: Stage, bench: BenchFile, sweep: Envelope, home: Harness
+    stage: Stage, bench: BenchFile, sweep: Envelope, home: Harness, folder: Path | None = None
 ) -> BatteryPlan | None:
     """The trial that the stage file asks for, if any.
 
-    sweep: the envelope of the forward sweep. InputError where the bench lacks what it needs, where
-    the stand-in would be driven to where it must not be, and where a step would pass a ceiling of
-    the bench or, by prediction, a rating of any part.
+    sweep: the envelope of the forward sweep. folder: the bench file's. InputError where the bench
+    lacks what it needs, where the stand-in would be driven to where it must not be, and where a
+    step would pass a ceiling of the bench or, by prediction, a rating of any part.
     """
     trial = stage.file.battery_trial
     if trial is None:
@@ -147,10 +149,31 @@ def plan_battery_trial(
             for envelope in planned.envelopes:
                 envelope.check(ceilings)
             states.append(planned)
+    _check_limiting(stage, bench, states, folder)
     return BatteryPlan(
         tuple(states), around, trial.dwell_s, step_s,
         longest_cool_s(stage.file.heat.time_constant_s), home,
     )  # fmt: skip
+
+
+def _check_limiting(
+    stage: Stage, bench: BenchFile, states: Sequence[StatePlan], folder: Path | None
+) -> None:
+    """InputError for a clamp, which has to conduct, where what limits the current would trip."""
+    if stage.conducts != "lead":
+        return
+    crossed = [state for state in states if state.harness.crossed]
+    sources: dict[Source, bool] = {
+        "battery": bool(crossed), "supply": any(state.equipment_on for state in crossed),
+    }  # fmt: skip
+    for source, limits in sources.items():
+        if limits and trips_at_limit(bench, folder, source):
+            raise InputError(
+                f"battery_trial.scenarios has {crossed[0].name}: {stage.main} conducts all that "
+                f"{NAMES[source]} gives there, whose dialect takes the current limit for its "
+                "over-current protection, so it would trip; use a supply with a level of its own, "
+                "or leave the reversed scenarios out"
+            )
 
 
 def harness_of(around: Around, name: str) -> Harness:

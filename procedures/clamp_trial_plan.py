@@ -15,9 +15,8 @@ from benchkit.guard import Ceilings, Envelope
 from benchkit.guard.envelope import PROOF_A, PROOF_V
 from benchkit.harness import Harness
 from benchkit.stage import Stage
-from instruments.dialects import load_dialect, shipped_dialects
-from instruments.dialects.tables import SupplyDialect
 from procedures.cooling import COOL_K, longest_cool_s
+from procedures.limiting import trips_at_limit
 from procedures.trial import ZEROS, Forward, Step
 
 LEAKING = Harness(("supply",), ())
@@ -233,18 +232,3 @@ def _check(stage: Stage) -> None:
                 f"reverse.current_limit_A is {reverse.current_limit_A:g}, above {rating} "
                 f"{most_A:g}: nothing is driven beyond a rating; give a lower one"
             )
-
-
-def trips_at_limit(bench: BenchFile, folder: Path | None) -> bool:
-    """Whether the bench's supply takes its current limit for its over-current protection: it goes
-    off when it reaches it, and cannot serve as a current source."""
-    dialect = supply_dialect(bench, folder)
-    return dialect is not None and dialect.over_current.level is None
-
-
-def supply_dialect(bench: BenchFile, folder: Path | None) -> SupplyDialect | None:
-    """The supply's; None for one given by its path where ``folder`` is not known."""
-    given = bench.only("supply")[1].dialect
-    if given in shipped_dialects():
-        return load_dialect(given, SupplyDialect)
-    return load_dialect(folder / given, SupplyDialect) if folder is not None else None

@@ -193,7 +193,7 @@ def _trials(
         reverse = plan_reverse(stage, bench, forward.sweep, forward.home, aperture_s(bench))
         if reverse is not None:
             yield ReverseTrial(reverse)
-    battery = plan_battery_trial(stage, bench, forward.sweep, forward.home)
+    battery = plan_battery_trial(stage, bench, forward.sweep, forward.home, folder)
     if battery is not None:
         yield BatteryTrialRun(battery)
 

@@ -20,6 +20,8 @@ SHORT_SHARE = 0.05
 """A load that draws less than it was told to by more than this does not draw its current: several
 times what loads and shunts are off (judgement)."""
 
+PORTS = ("exposed_voltage", "guarded_voltage")
+
 
 @dataclass(frozen=True)
 class SupplySweepTrial:
@@ -57,7 +59,7 @@ class SupplySweepTrial:
         guard, plan = run.guard, self.plan
         cool(run)
         guard.expect("exposed_current", plan.current_A)
-        for point in (plan.fed, *(("gate_voltage",) if plan.reads_gate else ())):
+        for point in (*PORTS, *(("gate_voltage",) if plan.reads_gate else ())):
             guard.expect(point, plan.rungs[0].envelope.over_voltage_V)
         ended = ""
         with run.screen.progress("supply sweep", plan.rungs_s):
@@ -96,7 +98,8 @@ def _measure(run: Run, plan: SupplySweepPlan, rung: Rung) -> str:
         for _ in range(READINGS):
             drop = read_drop(guard, live)
             currents.append(abs(live.read("exposed_current").value))
-            live.read(plan.fed)
+            exposed, guarded = (live.read(point).value for point in PORTS)
+            live.check_ports(exposed, guarded, drop)
             if plan.reads_gate:
                 live.read("gate_voltage")
             if not (burnt := abs(drop) * currents[-1]) <= envelope.loss_max_W:

@@ -35,6 +35,9 @@ DOUBTS = {"too-few"}
 Weight = Literal["fault", "doubt", "note"]
 
 
+NOTHING_V = 1e-6
+
+
 @dataclass(frozen=True)
 class Remark:
     """A sentence, and what it does to the verdict: a fault fails the run, a doubt keeps it from
@@ -128,7 +131,10 @@ def of_band(stage: Stage, drops: Sequence[DropAt]) -> list[Remark]:
             if way * (d.drop_V - edge) > d.budget.expanded().U
         ]
         if outside:
-            drop, edge = max(outside, key=lambda pair: way * (pair[0].drop_V / pair[1]))
+            # The furthest in proportion; a path of nothing but copper is promised to drop nothing.
+            drop, edge = max(
+                outside, key=lambda pair: way * pair[0].drop_V / max(pair[1], NOTHING_V)
+            )
             told.append(
                 Remark(
                     "doubt",

@@ -24,6 +24,7 @@ from benchkit.reading import Reading
 from benchkit.records.record import Record
 
 STEPS = "supply/"
+PORTS: tuple[PointName, PointName] = ("exposed_voltage", "guarded_voltage")
 CARRIED = 0.95
 """Of the current asked for; the load of a stage that lets less through has not its current."""
 PER_CURRENT = 2.0
@@ -53,6 +54,8 @@ class Step:
     current: Seen
     gate: Seen | None
     case_C: float
+    contradicts_V: float
+    """By how much the drop read is not the difference of the two ports' voltages."""
     carried: bool
     """Whether the load had its current; elsewhere the drop says only that the stage is not on."""
 
@@ -117,12 +120,16 @@ def _step(record: Record, name: str, amps: float) -> Step | None:
     drop, gate = _seen(record, name, "drop", flow), _seen(record, name, "gate_voltage", 1)
     if supply is None or current is None or drop is None:
         return None
+    ports = [_seen(record, name, point, flow) for point in PORTS]
+    apart = math.nan
+    if ports[0] is not None and ports[1] is not None:
+        apart = ports[0].value - ports[1].value - drop.value
     own = drop.value - record.bench.points["drop"].lead_ohm * current.value
     drop = Seen("drop", own, drop.range, drop.readings, drop.scatter)
     at_s = record.at(name, "drop")[-1].time_s
     case = float(np.interp(at_s, *temperatures(record, "case")))
     return Step(
-        float(name.removeprefix(STEPS)), supply, drop, current, gate, case,
+        float(name.removeprefix(STEPS)), supply, drop, current, gate, case, apart,
         current.value >= CARRIED * amps,
     )  # fmt: skip
 

@@ -41,13 +41,16 @@ class Onset:
 @dataclass(frozen=True)
 class SupplyBand:
     """volts, typical_V, low_V, high_V: shape (points,), drops against supply voltage, nan where the
-    current is not carried. on_level_V: see ``supply_sweep``; None, with both onsets, for a part
+    current is not carried. gate_least_V, gate_most_V: gate against source over all boards drawn,
+    with its sign. on_level_V: see ``supply_sweep``; None, with both onsets, for a part
     without a gate."""
 
     volts: Floats
     typical_V: Floats
     low_V: Floats
     high_V: Floats
+    gate_least_V: Floats
+    gate_most_V: Floats
     on_level_V: float | None
     on_from: Onset | None
     useful_from: Onset | None
@@ -99,14 +102,21 @@ def _band(text: str, junction_C: float) -> SupplyBand:
     useful = next(
         (limit.max_V for limit in file.limits.drop if abs(limit.current_A / amps - 1) < SAME), None
     )
+    gates = np.zeros((1, volts.size)) if many.gate_V is None else many.gate_V
+    gates = np.where(many.carried, gates, np.nan)
     typical_V, low_V, high_V = (
         np.where(np.isfinite(of), of, np.nan) for of in (typical[0], low, high)
     )
     return SupplyBand(
-        volts, typical_V, low_V, high_V, level,
+        volts, typical_V, low_V, high_V, _edge(gates, np.fmin), _edge(gates, np.fmax), level,
         None if level is None else _onset(volts, drops, typical, level),
         None if useful is None or level is None else _onset(volts, drops, typical, useful),
     )  # fmt: skip
+
+
+def _edge(values: Floats, of: np.ufunc) -> Floats:
+    """The least or the most over the boards, shape (points,); nan where no board has any."""
+    return np.asarray(of.reduce(values, axis=0), dtype=np.float64)
 
 
 def gate_promise(

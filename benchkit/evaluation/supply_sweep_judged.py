@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
@@ -10,7 +11,9 @@ import numpy as np
 from benchkit.evaluation.findings import Remark
 from benchkit.evaluation.part import Part
 from benchkit.evaluation.promised import Promised
+from benchkit.evaluation.sources import accuracy_of
 from benchkit.evaluation.supply_sweep import (
+    PORTS,
     Crossing,
     Step,
     SupplySweep,
@@ -31,6 +34,12 @@ from benchkit.stage import Stage
 
 UNDRIVEN = 0.5
 """A gate with less of its typical voltage than this is not driven (judgement)."""
+GATE_SHARE = 0.05
+"""The boards drawn are not all that there can be, and the gate's current is not its printed one
+(judgement)."""
+APART_V, APART_SHARE = 1e-3, 0.01
+"""What noise, and a drop that moved between two readings, may add to what the ports' accuracies
+allow (judgement)."""
 CERTAIN = 0.999
 """Coverage at which something is remarked on: every board is looked at, and chance has its
 share."""
@@ -194,6 +203,7 @@ def _remarks(record: Record, stage: Stage, detail: SupplyDetail) -> Iterator[Rem
         yield Remark("fault", _never_on(detail))
         return
     yield from _of_gate(record, detail)
+    yield from _of_ports(record, detail)
     found = detail.on_from
     U = crossing_budget(sweep, record.bench, found).expanded(CERTAIN).U
     yield from _of_tolerance(detail, found, U)
@@ -214,23 +224,46 @@ def _remarks(record: Record, stage: Stage, detail: SupplyDetail) -> Iterator[Rem
 
 
 def _of_gate(record: Record, detail: SupplyDetail) -> Iterator[Remark]:
-    """A gate that is driven further than any board within tolerance has lost what limits it."""
-    sweep, promise = detail.sweep, detail.gate
-    top = sweep.steps[-1] if sweep.steps else None
-    if top is None or top.gate is None or promise is None:
-        return
-    components = seen_components(sweep, record.bench, top.gate, 1.0)
-    U = Budget(c for c in components if c.u != 0.0).expanded(CERTAIN).U
-    half = 0.5 * (promise.high - promise.low)
-    # The band holds 95 % of boards: half as wide again holds all that are within tolerance.
-    low, high = promise.low - 0.5 * half, promise.high + 0.5 * half
-    if not low - U <= top.gate.value <= high + U:
-        yield Remark(
-            "doubt",
-            f"at {top.target_V:g} V supply the gate is at {spoken(top.gate.value, 'V')} from the "
-            f"source, where the datasheets promise {promise.low:.3g} to {promise.high:.3g} V: "
-            "suspect what limits or drives it",
+    """A gate that is driven otherwise than in any board within tolerance, at whatever voltage:
+    what drives or limits it is not as it should be, or its leads are off."""
+    sweep, band = detail.sweep, detail.band
+    for step in reversed(sweep.steps):
+        if step.gate is None or not step.carried:
+            continue
+        least, most = (
+            float(np.interp(step.supply.value, band.volts, of))
+            for of in (band.gate_least_V, band.gate_most_V)
         )
+        if math.isnan(least):
+            continue
+        components = seen_components(sweep, record.bench, step.gate, 1.0)
+        U = Budget(c for c in components if c.u != 0.0).expanded(CERTAIN).U
+        beyond = U + GATE_SHARE * max(abs(least), abs(most))
+        if not least - beyond <= step.gate.value <= most + beyond:
+            yield Remark(
+                "doubt",
+                f"at {step.target_V:g} V supply the gate is at {spoken(step.gate.value, 'V')} from "
+                f"the source, where the datasheets' tolerances allow {least:.3g} to {most:.3g} V: "
+                "suspect what limits or drives it, or the leads of gate_voltage",
+            )
+            return
+
+
+def _of_ports(record: Record, detail: SupplyDetail) -> Iterator[Remark]:
+    """The drop against the ports' voltages: three channels that see two of one thing."""
+    for step in detail.sweep.steps:
+        limits = [accuracy_of(record.bench, point, step.supply.range) for point in PORTS]
+        volts = abs(step.supply.value)
+        allowed = sum(a.gain_limit() * volts + a.offset_limit() for a in limits)
+        allowed += APART_V + APART_SHARE * abs(step.drop.value)
+        if abs(step.contradicts_V) > allowed:
+            yield Remark(
+                "doubt",
+                f"at {step.target_V:g} V supply the drop read and the difference of the ports' "
+                f"voltages are {spoken(abs(step.contradicts_V), 'V')} apart, and the meter allows "
+                f"{spoken(allowed, 'V', 2)}: a measuring lead was off",
+            )
+            return
 
 
 def _never_on(detail: SupplyDetail) -> str:

@@ -23,7 +23,9 @@ from instruments.simulated.board_faults import check_faults, parse_faults
 from procedures.commands import opened
 from procedures.screen import Screen
 from procedures.verify import run_board
-from tests.benchkit.nine_stages import PARTS, STAGES, text
+from tests.benchkit.nine_stages import STAGES, text
+from tests.clamp_shop import FUSED, FUSED_LIMITS, LIMITS, REVERSE
+from tests.clamp_shop import stage_text as clamps
 from tests.simulated_bench import inputs_of, workshop
 
 SOUND = "sound"
@@ -41,42 +43,28 @@ FLOATS = (
 UNSEEN = {("pmos-sensed", "hold-open"): FLOATS, ("nmos-sensed", "hold-open"): FLOATS}
 """(topology, fault): why it cannot be seen from the terminals."""
 
-FAST_FUSE = (
-    PARTS["fuse"]
-    .replace("rated_current_A = 5", "rated_current_A = 4")
-    .replace("melting_A2s = 40", "melting_A2s = 3")
-    .replace("drop_V = 0.11", "drop_V = 0.12")
-    .replace("cold_ohm = 0.016", "cold_ohm = 0.02")
-)
-REVERSE = "[reverse]\nsteps = 2\ndwell_s = 1.0\n"
+LADDER = "[reverse]\nsteps = 2\ndwell_s = 1.0\n"
 SUPPLY = "[supply_sweep]\nvoltages_V = [2.2, 2.6, 3.0, 3.5, 4.0, 5.0, 7.0, 9.0, 12.0, 15.0]\n"
 BATTERY = "[battery_trial]\ndwell_s = 1.0\n"
 TABLES = {
-    "clamp": REVERSE,
-    "fused-clamp": REVERSE + "[fused_trial]\ncurrent_A = 9.0\n",
-    "series-diode": REVERSE,
-    "pass": REVERSE + SUPPLY,
-    "sensed": REVERSE + SUPPLY + BATTERY,
+    "series-diode": LADDER,
+    "pass": LADDER + SUPPLY,
+    "sensed": LADDER + SUPPLY + BATTERY,
 }
-DROPS = {
-    "clamp": 0.02, "fused-clamp": 0.12, "series-diode": 0.5, "pass": 0.09, "sensed": 0.09,
-}  # fmt: skip
+DROPS = {"series-diode": 0.5, "pass": 0.09, "sensed": 0.09}
 """What a sound board drops at most at 2 A."""
-
-
-def kind_of(topology: str) -> str:
-    """Which tables a topology has."""
-    return topology if topology in TABLES else topology.split("-")[1]
+CLAMP_LIMITS = "drop = [{ current_A = 0.6, max_V = 0.08 }]\n"
 
 
 def stage_text(topology: str) -> str:
     """A stage with every trial that it can have."""
-    kind = kind_of(topology)
-    parts = {"F1": FAST_FUSE} if topology == "fused-clamp" else {}
     if topology == "clamp":
-        parts = {"W1": 'kind = "lead"\nvalue_ohm = 0.004\n'}
+        return clamps(REVERSE + LIMITS + CLAMP_LIMITS, "clamp")
+    if topology == "fused-clamp":
+        return clamps(REVERSE + FUSED + LIMITS + FUSED_LIMITS + CLAMP_LIMITS)
+    kind = topology if topology in TABLES else topology.split("-")[1]
     limits = f"[limits]\ndrop = [{{ current_A = 2.0, max_V = {DROPS[kind]} }}]\n"
-    return text(topology, tables=TABLES[kind], **parts) + limits
+    return text(topology, tables=TABLES[kind]) + limits
 
 
 def faults_of(path: Path) -> Iterator[str]:

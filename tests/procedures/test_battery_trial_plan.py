@@ -39,8 +39,9 @@ TRIAL = "[battery_trial]\n"
 AROUND = Around(14.4, (0.1,), 12.0, 0.1, 0.8 * (0.1 - 14.4 / 470), 470.0, 1000.0)
 
 
-def bench() -> BenchFile:
-    return parse(BenchFile, starter("bench.toml"), "bench.toml")
+def bench(supply: str = "supply-list") -> BenchFile:
+    text = starter("bench.toml").replace('"supply-list"', f'"{supply}"')
+    return parse(BenchFile, text, "bench.toml")
 
 
 @cache
@@ -66,7 +67,8 @@ def standin(ohms: float) -> BenchFile:
 )
 def test_every_topology_is_planned_with_a_lead_change_a_state(topology: str, guards: str) -> None:
     # A battery that is hardly flat leaves one rung, which is enough here.
-    plan = planned(made(topology, f'guards = "{guards}"', TRIAL + "[battery]\nflat_V = 5.5\n"))
+    stage = made(topology, f'guards = "{guards}"', TRIAL + "[battery]\nflat_V = 5.5\n")
+    plan = planned(stage, bench("supply-select"))
     assert [(s.name, s.harness) for s in plan.states] == [
         (OFF, Harness(("battery",), (), crossed=True, bleeder_ohm=1000.0)),
         (ON, Harness(("battery",), ("supply",), crossed=True)),
@@ -84,6 +86,25 @@ def test_every_topology_is_planned_with_a_lead_change_a_state(topology: str, gua
     clamps = topology.endswith("clamp")
     tied = "pass" in topology
     assert [s.conducts for s in plan.states][:2] == [clamps, clamps or tied]
+
+
+@pytest.mark.parametrize(
+    ("supply", "battery", "words"),
+    [("supply-list", "supply-plain", "the supply gives there, whose dialect"),
+     ("supply-select", "supply-list", "the battery's stand-in gives there, whose dialect")],
+)  # fmt: skip
+def test_a_clamp_needs_supplies_that_stay_at_their_limit(
+    supply: str, battery: str, words: str
+) -> None:
+    text = starter("bench.toml").replace('"supply-plain"', f'"{battery}"', 1)
+    if battery == "supply-list":
+        text = text.replace('identity = "Oddenfell,SP-1830"',
+                            'identity = "Oddenfell,SP-1830"\nchannel = "1"')  # fmt: skip
+        text = text.replace(
+            'dialect = "supply-list"          #', f'dialect = "{supply}"          #'
+        )
+    with pytest.raises(InputError, match=words):
+        planned(made("fused-clamp", "", TRIAL), parse(BenchFile, text, "bench.toml"))
 
 
 def test_only_what_is_asked_for_is_planned() -> None:
