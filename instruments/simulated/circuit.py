@@ -47,16 +47,22 @@ class PortCircuit:
         self._last: Hookup | None = None
         self._volts: dict[str, float] = {}
 
-    def at(self, hookup: Hookup, amps: float, junction_C: float) -> Moment:
-        """Solve at the load's current, a little more, and a little warmer, in one batch."""
+    def at(
+        self, hookup: Hookup, amps: float, junction_C: float, *, passing: bool = False
+    ) -> Moment:
+        """Solve at the load's current, a little more, and a little warmer, in one batch.
+
+        passing: nothing later begins from here, so that it does not matter how often one looked.
+        """
         step_A = max(STEP_SHARE * amps, STEP_A)
         junction = np.array([junction_C, junction_C, junction_C + STEP_K])
         elements = self._board.elements(junction)
         ports = self._board.stage.ports
         outside = around(hookup, ports, np.array([amps, amps + step_A, amps]))
         solution = self._solved(network([*elements, *outside]), hookup)
-        self._last = hookup
-        self._volts = {name: float(volts[0]) for name, volts in solution.volts.items()}
+        if not passing:
+            self._last = hookup
+            self._volts = {name: float(volts[0]) for name, volts in solution.volts.items()}
         found = {**terminals(hookup, ports, solution), **self._inside(elements, solution)}
         return Moment(
             hookup,

@@ -53,14 +53,16 @@ class Mounted:
         heat = self.board.heat
         return self.ambient_C + (heat.case_K + heat.junction_K)
 
-    def state(self, hookup: Hookup, target_A: float, amps: float) -> State:
+    def state(
+        self, hookup: Hookup, target_A: float, amps: float, *, looked_at: bool = False
+    ) -> State:
         """What holds now, at the load's current; the point is solved at the one that the load is
-        going to, for on the way there the straight line serves."""
+        going to, for on the way there the straight line serves, save where somebody looks."""
         hot, moment = self.junction_C, self._moment
         junction = min(hot, LAWS_END_C)
-        if amps > FLOWS_A and target_A < STEEP * amps:
-            self._moment = None
-            return State(self._circuit.at(hookup, amps, junction), amps, junction, hot)
+        if looked_at and amps > FLOWS_A and target_A < STEEP * amps:
+            passing = self._circuit.at(hookup, amps, junction, passing=True)
+            return State(passing, amps, junction, hot)
         if moment is None or moment.hookup != hookup or abs(junction - moment.junction_C) > NEAR_K:
             moment = self._moment = self._circuit.at(hookup, target_A, junction)
         return State(moment, amps, junction, hot)

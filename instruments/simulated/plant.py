@@ -258,10 +258,11 @@ class Plant:
         mounted = self._mounted
         if mounted is None:
             return self._empty(name)
-        return self._state(mounted).value(name)
+        return self._state(mounted, looked_at=True).value(name)
 
-    def _state(self, mounted: Mounted) -> State:
-        return mounted.state(self._hookup(), self._drives.target_A, self._drives.amps)
+    def _state(self, mounted: Mounted, *, looked_at: bool = False) -> State:
+        drives = self._drives
+        return mounted.state(self._hookup(), drives.target_A, drives.amps, looked_at=looked_at)
 
     def _empty(self, name: str) -> float:
         """A quantity of a fixture with no board in it."""

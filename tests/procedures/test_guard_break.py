@@ -4,6 +4,7 @@ on, processes with nobody to read what they say."""
 from __future__ import annotations
 
 import errno
+import gc
 import os
 import signal
 import socket
@@ -74,11 +75,13 @@ def pressing_at(line: int) -> Iterator[list[int]]:
                 press()
         return trace
 
+    gc.disable()  # a signal in a callback of the collector, which others hang there, is lost
     sys.settrace(trace)
     try:
         yield count
     finally:
         sys.settrace(None)
+        gc.enable()
 
 
 def step(guard: Guard) -> None:
