@@ -209,10 +209,12 @@ def _moved(world: World, trial: Trial) -> tuple[float, float]:
     """How often leads or relays were moved hot, and relays shorted what is between them.
 
     A relay that stays closed and says that it is open shorts the pair, with nothing on: that no
-    read-back can tell.
+    read-back can tell. Nor can anything at the terminals tell an output that lies at next to no
+    volts from one that is off.
     """
-    lies = any(fault.family == "relay-lying" for fault in trial.faults)
-    return world.truth("hot_rewirings"), 0.0 if lies else world.truth("relay_shorts")
+    families = {fault.family for fault in trial.faults}
+    hot = 0.0 if "lying-output" in families else world.truth("hot_rewirings")
+    return hot, 0.0 if "relay-lying" in families else world.truth("relay_shorts")
 
 
 def _measured(

@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
+from benchkit.files.guarding import Thresholds
 from benchkit.guard import Envelope
 from benchkit.guard.envelope import PROOF_V
 from benchkit.records.record import Record
@@ -24,6 +25,9 @@ BLINDING = ("lost-answer", "garbage", "truncated", "dropped-peer", "refused-port
 WATCHED = ("supply", "battery", "thermometer")
 """Instruments that are asked at every look, while what they stand for is on."""
 HOLDING = ("stuck-output", "lying-output")
+
+
+RESIDUAL_V, OFF_A = Thresholds().residual_V, Thresholds().off_A
 
 
 @dataclass
@@ -62,13 +66,20 @@ def false_off(seen: Seen) -> list[str]:
     """Where the record says that off was confirmed and something was on."""
     if seen.record is None:
         return []
-    at, on, told = seen.rows["at_s"], seen.on, []
+    at, on, told = seen.rows["at_s"], seen.on & _alive(seen.rows), []
     for event in seen.record.events:
         if event["kind"] == "off" and event.get("time_s") is not None:
             row = int(np.searchsorted(at, seen.start_s + float(str(event["time_s"])) + 1e-6)) - 1
             if row >= 0 and on[row]:
                 told.append(f"at {event['time_s']} s, {event['text']}")
     return told
+
+
+def _alive(rows: Rows) -> NDArray[np.bool_]:
+    """Where what is on can be told from what is off, by anything that measures at the terminals."""
+    volts = np.maximum(np.abs(rows["exposed_voltage"]), np.abs(rows["guarded_voltage"]))
+    found: NDArray[np.bool_] = (volts > RESIDUAL_V) | (np.abs(rows["exposed_current"]) > OFF_A)
+    return found
 
 
 def react(seen: Seen) -> None:
