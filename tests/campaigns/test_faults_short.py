@@ -24,13 +24,13 @@ from tests.campaigns.faults_trial import Outcome, run_trials
 from tests.campaigns.faults_truth import Seen, react
 from tests.campaigns.faults_world import COLUMNS
 
-TRIALS = 48
+TRIALS = 18
 QUICK = "series-diode-quick"
 TAKES_S = {QUICK: 5.0}
 
 
 def test_a_few_random_faults_leave_nothing_on_and_pass_nothing_wrong(tmp_path: Path) -> None:
-    outcomes = campaign(TRIALS, 5, 2, tmp_path, [QUICK], say=lambda _: None)
+    outcomes = campaign(TRIALS, 5, 1, tmp_path, [QUICK], say=lambda _: None)
     found = summed(outcomes)
     wrong = [f"{o.sentence()}: {o.wrong}" for o in outcomes if o.wrong]
     assert not wrong, "\n".join(wrong)
@@ -38,10 +38,10 @@ def test_a_few_random_faults_leave_nothing_on_and_pass_nothing_wrong(tmp_path: P
     assert found["trials"] == TRIALS
     # Not everything simply fails, nor passes, nor stops before anything is on.
     verdicts = Counter(outcome.verdict for outcome in outcomes)
-    assert min(verdicts["pass"], verdicts["fail"], verdicts["undecided"]) >= 3, verdicts
-    assert sum(outcome.energised for outcome in outcomes) > 0.75 * TRIALS
+    assert min(verdicts["pass"], verdicts["fail"], verdicts["undecided"]) >= 1, verdicts
+    assert sum(outcome.energised for outcome in outcomes) > 0.6 * TRIALS
     assert found["sound"] == found["sound_passed"]
-    assert len({family for outcome in outcomes for family in outcome.families}) > 20
+    assert len({family for outcome in outcomes for family in outcome.families}) > 8
 
 
 def tried(folder: Path, *faults: Fault | None) -> list[Outcome]:

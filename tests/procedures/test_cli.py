@@ -101,17 +101,13 @@ def test_verify_json_prints_one_document_and_keeps_retests(folder: Path) -> None
     assert code == 0
     assert f"{GOOD}  " in out
     assert (folder / "o" / f"{GOOD}.retest-1" / "report.html").is_file()
-    code, out, _ = run("audit", "o/TG-0101", f"o/{GOOD}.retest-1", cwd=folder)
-    assert code == 0
-    assert out.count("whole") == 2
     (folder / "o" / GOOD / "inputs" / "stage.toml").write_bytes(
         (folder / "stage.toml").read_bytes() + b"\n"
     )
-    code, out, _ = run("audit", "o/TG-0101", cwd=folder)
+    code, out, _ = run("audit", "o/TG-0101", f"o/{GOOD}.retest-1", cwd=folder)
     assert code == 1
     assert "inputs/stage.toml was changed after the run" in out
-    code, _, _ = run("report", "o/TG-0101", cwd=folder)
-    assert code == 0
+    assert out.count("whole") == 1
 
 
 BAD = {

@@ -3,34 +3,49 @@
 from __future__ import annotations
 
 import json
-import os
-import subprocess
-import sys
+import re
 from pathlib import Path
 
-ROOT = Path(__file__).parents[2]
+import pytest
+
+import procedures.demo as demo_module
+from procedures.demo import run_demo
+from procedures.starters import place_starters, starter
+
+BOARDS = ["TG-0101", "TG-0106", "TG-0111"]
 
 
-def test_demo(tmp_path: Path) -> None:
-    done = subprocess.run(
-        [sys.executable, "-m", "procedures", "demo", "--out", "d"],
-        cwd=tmp_path,
-        env={**os.environ, "PYTHONPATH": str(ROOT), "COLUMNS": "100"},
-        stdin=subprocess.DEVNULL,
-        capture_output=True,
-        text=True,
-        check=False,
-    )
-    assert done.returncode == 0, done.stderr
+def test_demo(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Of its lot of twelve three boards: the whole of it is what the README's first line runs."""
+
+    def few(folder: Path, seed: int | None = None) -> None:
+        place_starters(folder, seed)
+        lot = (folder / "lot.toml").read_text("utf-8")
+        lot, count = re.subn(r"(?s)serials = \[.*?\]", f"serials = {json.dumps(BOARDS)}", lot)
+        assert count == 1
+        (folder / "lot.toml").write_text(lot, "utf-8")
+
+    monkeypatch.setattr(demo_module, "place_starters", few)
+    monkeypatch.setenv("COLUMNS", "100")
+    assert run_demo(tmp_path / "d", None) == 0
+    said = capsys.readouterr().out
     document = json.loads((tmp_path / "d" / "lot" / "lot.json").read_text("utf-8"))
     boards = {board["serial"]: board for board in document["boards"]}
-    assert len(boards) >= 12
-    found = {serial: b["verdict"] for serial, b in boards.items() if b["verdict"] != "pass"}
-    assert found == {"TG-0106": "fail", "TG-0111": "undecided"}
+    found = {serial: b["verdict"] for serial, b in boards.items()}
+    assert found == {"TG-0101": "pass", "TG-0106": "fail", "TG-0111": "undecided"}
     assert "gate is not driven" in " ".join(boards["TG-0106"]["why"])
-    for line in done.stdout.splitlines():
-        name = line.strip()
-        if name.startswith("d/") and name.endswith(".html"):
-            assert (tmp_path / name).is_file()
-    assert "d/lot/lot.html" in done.stdout
-    assert "gate is not" in done.stdout
+    told = [line.strip() for line in said.splitlines() if line.strip().endswith(".html")]
+    pages = [line for line in told if "/SERIAL/" not in line]
+    assert len(pages) >= 5
+    for page in pages:
+        assert Path(page.split("  ")[-1].strip()).is_file(), page
+    assert "lot/lot.html" in said
+    assert "gate is not" in said
+
+
+def test_the_demo_has_a_lot_worth_the_name() -> None:
+    serials = re.search(r"(?s)serials = \[(.*?)\]", starter("lot.toml"))
+    assert serials is not None
+    assert len(re.findall(r"TG-\d+", serials[1])) >= 12
