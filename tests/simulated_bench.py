@@ -9,7 +9,7 @@ from pathlib import Path
 
 from benchkit.errors import BenchkitError
 from benchkit.files import BenchFile, load
-from benchkit.files.stage import MEASURED_IN
+from benchkit.files.trial_checks import MEASURED_IN
 from instruments.bench import Bench
 from procedures.commands import opened
 from procedures.inputs import BoardInputs, read_board

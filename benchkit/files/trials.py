@@ -74,6 +74,7 @@ class BatteryTrial(FileModel):
         default_factory=lambda: list(BATTERY_SCENARIOS)
     )
     current_limit_A: Annotated[float, Field(gt=0, le=1)] = 0.1
-    """Of the stand-in, and of the supply that stands for the equipment."""
+    """Of the stand-in; the supply that stands for the equipment gets a little less, so that the
+    stand-in is never driven the wrong way."""
     dwell_s: Annotated[float, Field(ge=0, le=600)] = 2.0
     """How long each state stays."""
