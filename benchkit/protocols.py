@@ -51,9 +51,12 @@ class Supply(Protocol):
     def send_off(self) -> None:
         """Send output-off and wait for nothing: for several outputs that go off at once."""
 
-    def disable(self) -> None:
-        """Switch the output off: sent blind first, even to a session that is out of step, then
-        confirmed by read-back; raises LinkError when it cannot be confirmed."""
+    def disable(self, *, patiently: bool = True) -> None:
+        """Switch the output off, confirmed by read-back; raises LinkError when it cannot be.
+
+        patiently: sent blind first, even to a session that is out of step, and tried again, however
+        long that takes; otherwise one exchange.
+        """
 
     def state(self) -> SupplyState:
         """Read the output state, one round trip."""

@@ -132,8 +132,8 @@ def open_bench(
         if file.is_simulated:
             ports = stack.enter_context(start_child(path)).ports
         else:
-            for _, table in supplies_of(file).values():
-                stack.enter_context(bench_lock(table.resource))
+            for resource in {table.resource for _, table in supplies_of(file).values()}:
+                stack.enter_context(bench_lock(resource))
         sessions = open_all(stack, file, dialects, ports, traffic)
         control: Session | None = None
         clock: Clock = WallClock()

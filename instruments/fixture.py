@@ -118,16 +118,20 @@ class RelayFixture:
     def place(self, serial: str, stage_path: Path, harness: Harness) -> None:
         """Relays at rest, then the board."""
         self._switch(harness)
-        self._wired = self.by_hand(harness)
-        self._hands.place(serial, stage_path, self._wired)
+        self._wired = None
+        wanted = self.by_hand(harness)
+        self._hands.place(serial, stage_path, wanted)
+        self._wired = wanted
 
     def arrange(self, harness: Harness) -> None:
-        """What has to be done by hand, if anything, and then the relays."""
+        """The relays, and what has to be done by hand, if anything."""
+        # Relays first: it was seen that nothing is live, and hands may take their time.
+        self._switch(harness)
         wanted = self.by_hand(harness)
         if wanted != self._wired:
+            self._wired = None  # if it is declined, nobody knows how far it went
             self._hands.arrange(wanted)
             self._wired = wanted
-        self._switch(harness)
 
     def refit_fuse(self, name: str) -> None:
         """No relay does that."""

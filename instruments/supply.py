@@ -106,9 +106,13 @@ class ScpiSupply:
         """Send output-off and wait for nothing."""
         self._session.blind(self._select + self._output(self.dialect.output, on=False).command)
 
-    def disable(self) -> None:
-        """Switch the output off: blind first, then confirmed, even when out of step."""
+    def disable(self, *, patiently: bool = True) -> None:
+        """Switch the output off: blind first, then confirmed, even when out of step; or in one
+        exchange."""
         off = self._output(self.dialect.output, on=False)
+        if not patiently:
+            self._confirm(off)
+            return
         switch_off(self._session, replace(off, command=self._select + off.command))
 
     def state(self) -> SupplyState:

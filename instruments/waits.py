@@ -25,7 +25,8 @@ def longest_waits_s(file: BenchFile, dialects: Mapping[str, Dialect]) -> float:
         link = dialects[name].link
         return sum(link.timeout(kind) + link.gap_s for kind in kinds)
 
-    operations = [allowed(file.only("load")[0], "set")]
+    supplies = [name for name, _ in supplies_of(file).values()]
+    operations = [allowed(name, "set") for name in (file.only("load")[0], *supplies)]
     for point in file.points.values():
         meter = dialects[point.instrument]
         if isinstance(meter, MeterDialect):
@@ -35,7 +36,6 @@ def longest_waits_s(file: BenchFile, dialects: Mapping[str, Dialect]) -> float:
             operations.append(allowed(point.instrument, "set", "read", *ended) + aperture_s)
         else:
             operations.append(allowed(point.instrument, "read"))
-    supplies = [name for name, _ in supplies_of(file).values()]
     look = allowed(file.points["case"].instrument, "read")
     look += sum(allowed(name, "read") for name in supplies)
     if file.wiring is not None and file.wiring.loop is not None:

@@ -22,6 +22,8 @@ from procedures.clamp_trial_plan import BEYOND, CROSSED, LEAKING, ClampPlan
 from procedures.cooling import COOL_K
 from procedures.trial import Forward, Step
 
+FIRST = 4.0
+"""A case warms so many times faster at first than its board's time constant says (judgement)."""
 LEVEL_SHARE = 1.1
 """The supply's own over-current level, over its current limit."""
 LONGER, MARGIN_S = 1.5, 0.25
@@ -134,7 +136,7 @@ def plan_fused(
         "fused trial", volts, asked.current_A, 1.1 * volts + 0.5, LEVEL_SHARE * asked.current_A,
         forward.sweep.case_max_C, volts * asked.current_A, seconds + 60.0, may_limit=True,
         guarded_min_V=-below_V,
-        case_rise_max_K_per_s=ceilings.thresholds.case_rise_max_K_per_s,
+        case_rise_max_K_per_s=_rise_max(stage, below_V * asked.current_A, ceilings),
         energy_max_J=volts * asked.current_A * seconds,
         burst=Burst(
             (("exposed_current", ROOM_A * asked.current_A), ("guarded_voltage", below_V)), seconds
@@ -151,6 +153,13 @@ def plan_fused(
         clears=lasting(coordination.clears_in_s),
     )  # fmt: skip
     return FusedPlan(blow, coordination, reference, kind, caution, clamp)
+
+
+def _rise_max(stage: Stage, watts: float, ceilings: Ceilings) -> float:
+    """How fast the case may warm, in K/s, while the clamp burns so much until the fuse opens."""
+    heat = stage.file.heat
+    expected = watts * heat.case_to_ambient_max_K_per_W / heat.time_constant_s
+    return max(ceilings.thresholds.case_rise_max_K_per_s, FIRST * expected)
 
 
 def _coordinated(stage: Stage, name: str, model: FuseModel, volts: float) -> Coordination:

@@ -109,8 +109,7 @@ def _secured(guard: Guard, stopped: BaseException) -> BenchkitError:
 
 def _measure(bench: Bench, job: Job, serial: str, folder: RunFolder, screen: Screen) -> None:
     guard, forward = bench.guard, job.plan.forward
-    if guard.begun:
-        guard.clear_for_hands()
+    guard.clear_for_hands()
     guard.begin(folder)
     if guard.harness.crossed or guard.maybe_crossed:
         guard.arrange(forward.home)  # left so by the run before

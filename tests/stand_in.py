@@ -111,7 +111,8 @@ class StandInSupply:
         if not self.world.stuck:
             self.world.on = False
 
-    def disable(self) -> None:
+    def disable(self, *, patiently: bool = True) -> None:
+        del patiently
         self.world.said.append("off")
         if not self.world.stuck:
             self.world.on = False

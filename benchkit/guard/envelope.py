@@ -163,6 +163,8 @@ class Envelope:
         for source, drive in self.drives().items():
             name = self.name if source == "supply" else f"{self.name}, the battery's stand-in"
             limit = max(drive.current_limit_A, drive.over_current_A)
+            if min(drive.voltage_V, drive.current_limit_A) < 0:
+                raise InputError(f"{name}: its voltage and current limit must not be negative")
             _within(
                 name,
                 "voltage with its over-voltage level",

@@ -77,6 +77,7 @@ class Guard:
         self._begun = False
         self._off = False
         self._found_on = ""
+        self._unsafe = self._placed = False
         self._unwritten: Exception | None = None
 
     # what anyone may do
@@ -193,6 +194,7 @@ class Guard:
         """A board was put in, connected so; unproved until ``prove_polarity``."""
         self._require_rest("no board is put in")
         self._leads.placed(harness)
+        self._placed = True
 
     def arrange(self, harness: Harness) -> None:
         """Have the leads connected otherwise: never hot, and unproved until ``prove_polarity``.
@@ -207,6 +209,7 @@ class Guard:
     def refit_fuse(self, name: str) -> None:
         """Have a new fuse put in for ``name``; never hot, and unproved until ``prove_polarity``."""
         self._clear("no fuse is touched")
+        self._accepted.clear()
         self._leads.refit_fuse(name)
 
     def _clear(self, what: str) -> None:
@@ -269,11 +272,15 @@ class Guard:
         """
         self._require_rest(f"{envelope.name} cannot begin")
         envelope.check(self.ceilings)
-        self._permit_step(envelope)
+        if self._unsafe:
+            raise Refused(f"{envelope.name} cannot begin: outputs are not confirmed off")
         if caution is not None and caution not in self._accepted:
             self._ask(caution)
+        self._permit_step(envelope)
         try:
             self._off = False
+            if found_on := self.__outputs.found_on():
+                raise Refused(f"{envelope.name} cannot begin: {found_on}")
             self.__outputs.prepare(envelope)
             self._journal.event(
                 "on",
@@ -282,19 +289,28 @@ class Guard:
                 blind_s=self.blind_s,
             )
             live = self._live = self._followed(envelope)
+            check_loop(self._interlock)
             drive = envelope.drives()[envelope.source]
             self.__outputs.enable(envelope.source, drive, self.now())
             yield live
         except BaseException as error:
-            self.make_safe(say(error), error)
+            try:
+                self.make_safe(say(error), error)
+            except BaseException as later:
+                self._once_more(later)
+                raise
             raise
         try:
             self.make_safe(f"end of {envelope.name}")
         except BaseException as error:
-            # A signal that came just before the shield: nothing was switched off yet.
-            if self._live is not None:
-                self.make_safe(say(error), error)
+            self._once_more(error)
             raise
+
+    def _once_more(self, error: BaseException) -> None:
+        """After a signal that came just before the shield: nothing was switched off yet, or not
+        all of it."""
+        if not (self._off or isinstance(error, NotConfirmedOff)):
+            self.make_safe(say(error), error)
 
     def _permit_step(self, envelope: Envelope) -> None:
         """What must hold before this step, whatever was checked before."""
@@ -358,7 +374,7 @@ class Guard:
 
     def check_loss(self, envelope: Envelope, drop_V: float, current_A: float) -> None:
         """Trip on the stage's own loss."""
-        loss = drop_V * current_A
+        loss = abs(drop_V * current_A)
         if not loss <= envelope.loss_max_W:
             self._trip_on(above("loss", loss, envelope.loss_max_W, "W"), self.now())
 
@@ -392,6 +408,7 @@ class Guard:
                 self._note("load", doubt)
             if error is not None:
                 self._note("stopped", say(error), error=type(error).__name__)
+            self._unsafe = bool(doubts)
             if doubts:
                 self._note("not-confirmed-off", "; ".join(doubts))
                 raise NotConfirmedOff(
@@ -422,9 +439,13 @@ class Guard:
 
     def _discharged(self) -> str | None:
         """The ports where a source may be, by the meter; a sentence when they do not get dead."""
-        self._points.recover("exposed_voltage")
-        at_guarded = any(port == "guarded" for _, port in self.harness.sources())
+        # Before a board was put in nobody has said where the sources are.
+        at_guarded = not self._placed or any(
+            port == "guarded" for _, port in self.harness.sources()
+        )
         ports = ["exposed_voltage", *(["guarded_voltage"] if at_guarded else [])]
+        for point in (*ports, "exposed_current"):
+            self._points.recover(point)
         return discharged(self._read_off, self._clock, ports, self.ceilings.thresholds)
 
     def _read_off(self, point: str) -> Reading:

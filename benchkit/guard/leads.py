@@ -43,7 +43,7 @@ class Leads:
 
     def placed(self, harness: Harness) -> None:
         """A board was put in, connected so."""
-        self.harness, self.proved = harness, False
+        self.harness, self.proved, self.conducts, self.fuse = harness, False, False, None
 
     def arrange(self, harness: Harness) -> None:
         """Have them connected otherwise; Refused where this bench cannot."""
@@ -51,7 +51,7 @@ class Leads:
         for source, _ in harness.sources():
             self._outputs.require(source)
         self.proved, self.maybe_crossed = False, self.maybe_crossed or harness.crossed
-        self.conducts = False
+        self.conducts, self.fuse = False, None
         self._guard.remark("harness", harness.sentence())
         wiring.arrange(harness)
         self.harness = harness
@@ -78,9 +78,11 @@ class Leads:
         wired = {source for source, _ in self.harness.sources()}
         if loose := [source for source in envelope.drives() if source not in wired]:
             raise Refused(f"{envelope.name} cannot begin: {loose[0]} is connected to nothing")
-        most_A = max(drive.current_limit_A for drive in envelope.drives().values())
-        if self.harness.crossed and most_A > HARMLESS_REVERSED_A:
-            check_fuse(self.fuse, in_place=self.conducts)
+        most = max(envelope.drives().values(), key=lambda drive: drive.current_limit_A)
+        if self.harness.crossed and most.current_limit_A > HARMLESS_REVERSED_A:
+            # With something at the guarded port the current at the proof need not be the clamp's.
+            in_place = self.conducts and not self.harness.guarded
+            check_fuse(self.fuse, most, in_place=in_place)
 
     def prove(self, caution: str | None) -> bool:
         """See ``Guard.prove_polarity``."""

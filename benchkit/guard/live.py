@@ -15,6 +15,8 @@ from benchkit.reading import Reading
 if TYPE_CHECKING:
     from benchkit.guard.guard import Guard
 
+LATE_S = 1.0
+"""A burst that is over for so long and was not fetched keeps the meter from the guard."""
 BURST_LOOK_S = 0.05
 """While a burst runs the guard looks this often: all its other eyes are shut."""
 
@@ -31,8 +33,14 @@ class Live:
         self.burst_began_s = math.nan
         """When the meter began, where the envelope asks for a burst that was not fetched yet."""
 
+    def _require_on(self) -> None:
+        """Refused once the step is over."""
+        if self._guard._live is not self:
+            raise Refused(f"{self.envelope.name} is over: nothing can be done in it any more")
+
     def draw(self, current_A: float) -> None:
         """Set the load, never above the envelope's current limit (InputError)."""
+        self._require_on()
         if not 0 <= current_A < self.envelope.current_limit_A:
             raise InputError(
                 f"{self.envelope.name}: a load of {current_A:g} A is not inside its limit of "
@@ -52,6 +60,7 @@ class Live:
     def connect(self, source: Source) -> None:
         """Switch the envelope's other source on as well, as it was programmed; Refused for one
         that the envelope does not hold."""
+        self._require_on()
         drive = self.envelope.drives().get(source)
         if drive is None:
             raise Refused(f"{self.envelope.name} holds nothing for the {source}")
@@ -61,6 +70,7 @@ class Live:
 
     def disconnect(self, source: Source) -> None:
         """Switch one source off, confirmed by its read-back, and leave the other on."""
+        self._require_on()
         self.__outputs.disable(source)
         self._guard.remark("disconnected", f"the {source}")
         self.look()
@@ -68,6 +78,10 @@ class Live:
     def look(self) -> float:
         """Look now, whatever the polling interval; returns the time of the look."""
         guard = self._guard
+        self._require_on()
+        burst = self.envelope.burst
+        if burst is not None and guard.now() > self.burst_began_s + burst.seconds + LATE_S:
+            guard._trip_on([("the burst", "was not fetched in time")], guard.now())
         self._looked_s = self._looking.look(
             guard.now, self._began_s, guard.ceilings.poll_s,
             meter=math.isnan(self.burst_began_s),
@@ -94,18 +108,20 @@ class Live:
             # A clock that was set back must not lengthen the time to the next look.
             now = (
                 self._guard._sleep(min(left, due))
-                if 0 < due <= poll_s * (1 + 1e-9)
+                if 1e-6 < due <= poll_s * (1 + 1e-9)
                 else self.look()
             )
         return now
 
     def burst(self) -> list[Reading]:
-        """Wait for the end of the envelope's burst, looking at all but the meter, and return what
-        it read; everything is recorded."""
+        """Wait for the end of the envelope's burst, looking at all but the meter; then everything
+        off, and only then return what it read, recorded: to fetch it takes long, and nobody looks.
+        """
         burst, began = self.envelope.burst, self.burst_began_s
         if burst is None or math.isnan(began):
             raise Refused(f"{self.envelope.name} has no burst to be fetched")
         self.wait(max(began + burst.seconds - self._guard.now(), 0.0))
+        self.__outputs.all_off()  # confirmed at the end of the step
         readings = self._guard.take_burst(began)
         self.burst_began_s = math.nan
         return readings

@@ -46,7 +46,10 @@ class Looking:
         meter: whether the voltmeter may be asked; it is not while a burst runs.
         """
         states = {source: self._outputs.state(source) for source in self._outputs.on}
+        other = self._outputs.found_on()
         at = now()
+        if other:
+            self._trip_on([("another source", other)], at)
         for source, state in states.items():
             self._keep(Reading(at, f"{source}_voltage", state.voltage_V, "V", 0.0, 0.0))
             self._keep(Reading(at, f"{source}_current", state.current_A, "A", 0.0, 0.0))

@@ -10,6 +10,8 @@ from benchkit.protocols import Clock
 from benchkit.reading import Reading
 
 STEP_S = 0.02
+COARSEST = 10.0
+"""Of off_A: a current that the range cannot tell from more than this is not taken for none."""
 
 
 def doubts_of(what: str, confirm: Callable[[], str | None]) -> list[str]:
@@ -49,7 +51,9 @@ def _first_alive(
         if not volts.usable or abs(volts.value) >= thresholds.residual_V:
             return volts
     amps = read("exposed_current")
-    quiet = amps.usable and abs(amps.value) <= max(thresholds.off_A, 3 * amps.u)
+    # On a coarse range the reading itself may be no better than this; too coarse tells nothing.
+    least = min(max(thresholds.off_A, 3 * amps.u), COARSEST * thresholds.off_A)
+    quiet = amps.usable and abs(amps.value) <= least
     return None if quiet else amps
 
 

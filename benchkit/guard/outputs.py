@@ -5,7 +5,7 @@ from __future__ import annotations
 import contextlib
 from collections.abc import Mapping
 
-from benchkit.errors import LinkError, Refused
+from benchkit.errors import Refused
 from benchkit.guard.envelope import Drive, Envelope
 from benchkit.guard.off import doubts_of
 from benchkit.harness import NAMES, Source
@@ -40,9 +40,11 @@ class Outputs:
             )
 
     def found_on(self) -> str:
-        """Which of them say that they are on; empty when none does."""
+        """Which of those that were not switched on say that they are on; empty when none does."""
         told = []
-        for supply in self._supplies.values():
+        for source, supply in self._supplies.items():
+            if source in self._on:
+                continue
             state = supply.state()
             if state.output_on:
                 told.append(
@@ -78,8 +80,9 @@ class Outputs:
         self._supplies[source].enable()
 
     def disable(self, source: Source) -> None:
-        """Switch one off, confirmed by read-back, while others may stay on."""
-        self._supplies[source].disable()
+        """Switch one off, confirmed by read-back, while others stay on: in one exchange, since
+        nobody looks at those meanwhile. What does not confirm at once is for ``all_off``."""
+        self._supplies[source].disable(patiently=False)
         self._on.pop(source, None)
 
     def state(self, source: Source) -> SupplyState:
@@ -93,7 +96,7 @@ class Outputs:
         if len(supplies) > 1:
             # One that does not answer must not keep the next one on.
             for supply in supplies:
-                with contextlib.suppress(LinkError):
+                with contextlib.suppress(Exception):  # whatever one raises, the next goes off
                     supply.send_off()
         doubts = []
         for supply in supplies:

@@ -10,6 +10,7 @@ from collections.abc import Callable, Mapping
 
 from benchkit.errors import Refused
 from benchkit.files.guarding import Thresholds
+from benchkit.guard.envelope import Drive
 from benchkit.prediction.coordination import Coordination
 from benchkit.protocols import Interlock
 
@@ -35,12 +36,21 @@ def check_loop(interlock: Interlock | None) -> None:
         )
 
 
-def check_fuse(declared: Coordination | None, *, in_place: bool) -> None:
-    """Full current the wrong way round needs a fuse: declared, coordinated, and proved in place."""
+def check_fuse(declared: Coordination | None, drive: Drive, *, in_place: bool) -> None:
+    """Full current the wrong way round needs a fuse: declared, coordinated at what is driven
+    through it, and proved in place."""
     if declared is None:
         raise Refused("full current the wrong way round needs a fuse, and none was declared")
     if not declared.coordinated:
         raise Refused(f"the fuse is not coordinated: {'; '.join(declared.notes)}")
+    amps, volts = drive.current_limit_A, drive.voltage_V
+    if not declared.current_A * (1 - 1e-9) <= amps <= declared.prospective_A:
+        raise Refused(
+            f"the fuse was judged from {declared.current_A:g} to {declared.prospective_A:g} A, and "
+            f"{amps:g} A are to be driven through it"
+        )
+    if not volts <= declared.voltage_V:
+        raise Refused(f"the fuse was judged at {declared.voltage_V:g} V, and {volts:g} V are asked")
     if not in_place:
         raise Refused(
             "the fuse was not found in place: at the proof of polarity no current flowed through "

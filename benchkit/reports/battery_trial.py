@@ -6,7 +6,7 @@ from collections.abc import Iterator
 
 from benchkit.evaluation.battery_trial import Figure, Standing
 from benchkit.evaluation.battery_trial_band import StateBand
-from benchkit.evaluation.battery_trial_circuits import BACK, FLAT, OFF, ON
+from benchkit.evaluation.battery_trial_circuits import BACK, FLAT, OFF, ON, PRELOAD_A
 from benchkit.evaluation.battery_trial_judged import BatteryFound, Judged
 from benchkit.evaluation.evaluate import Evaluation
 from benchkit.evaluation.spelled import LEAST, NONE, minus, paired
@@ -55,8 +55,9 @@ def _sentences(found: BatteryFound) -> Iterator[str]:
     around, names = found.around, [one.state.name for one in found.states]
     yield (
         f"A supply of up to {around.emf_V:g} V with a current limit of {around.battery_A:g} A "
-        f"stood for the battery. It cannot sink: what is driven into it flows through the "
-        f"{around.standin_ohm:g} Ω across its terminals, and its voltage rises with that."
+        f"stood for the battery. It sinks no more than its own preload (up to {1e3 * PRELOAD_A:g} "
+        f"mA): what else is driven into it flows through the {around.standin_ohm:g} Ω across its "
+        "terminals, and its voltage rises with that."
     )
     if ON in names or FLAT in names:
         yield (
@@ -64,12 +65,13 @@ def _sentences(found: BatteryFound) -> Iterator[str]:
             f"{around.supply_A:.3g} A, less than the stand-in gives, as beside a battery."
         )
     if (OFF in names or BACK in names) and around.off_ohm is not None:
-        yield f"For the equipment that is off stood {around.off_ohm:g} Ω across the guarded port."
+        yield f"{around.off_ohm:g} Ω across the guarded port stood for the equipment that is off."
     if ON in names or OFF in names:
         yield (
-            f"Reversed, the stage stands it when less than {1e3 * around.flows_A(OFF):.3g} mA flow "
-            f"({1e3 * around.flows_A(ON):.3g} mA with the equipment on, a tenth of what could), "
-            "and the guarded port keeps its own voltage, or is not pulled the wrong way."
+            "Reversed, the stage stands it when less than a tenth of what could flow does, less "
+            f"than {1e3 * around.flows_A(OFF):.3g} mA ({1e3 * around.flows_A(ON):.3g} mA with the "
+            "equipment on); and when the guarded port keeps its own voltage, or is not pulled the "
+            "wrong way."
         )
     for one in found.states:
         for text in one.state.trips:

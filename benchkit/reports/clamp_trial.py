@@ -8,6 +8,7 @@ from benchkit.evaluation.clamp_trial import ClampDetail
 from benchkit.evaluation.clamp_trial_read import ClampState
 from benchkit.evaluation.evaluate import Evaluation
 from benchkit.evaluation.spelled import paired, small, spanned
+from benchkit.prefixes import spoken
 from benchkit.records.record import Record
 from benchkit.reports.section import Section, Table
 
@@ -42,8 +43,9 @@ def _sentences(record: Record, detail: ClampDetail) -> Iterator[str]:
         *few, last = [f"{drop.target_A:g}" for drop in state.drops]
         amps = f"{', '.join(few)} and {last}" if few else last
         yield (
-            f"With the leads crossed {amps} A were driven through it: a clamp conducts when it is "
-            "reversed, and the guarded port goes below zero by what it drops."
+            f"With the leads crossed {amps} A {'were' if few else 'was'} driven through it: a "
+            "clamp conducts when it is reversed, and the guarded port goes below zero by what it "
+            "drops."
         )
     if detail.short:
         yield f"The trial is not whole: {detail.short}."
@@ -63,5 +65,6 @@ def state_rows(state: ClampState, when: str = "") -> Iterator[list[str]]:
         yield [
             f"drop at {drop.target_A:g} A{when}",
             paired(drop.drop.value, drop.drop.budget.expanded().U, "V"),
-            small(band.nominal, "V"), spanned(band.low, band.high, "V"), f"{drop.case_C:.1f} C",
+            spoken(band.nominal, "V"), f"{spoken(band.low, 'V')} to {spoken(band.high, 'V')}",
+            f"{drop.case_C:.1f} C",
         ]  # fmt: skip

@@ -9,7 +9,7 @@ from benchkit.evaluation.clamp_trial_read import Change, ClampState
 from benchkit.evaluation.evaluate import Evaluation
 from benchkit.evaluation.fused_trial import FusedDetail
 from benchkit.evaluation.reverse import Figure
-from benchkit.evaluation.spelled import NONE, paired, small, spanned
+from benchkit.evaluation.spelled import NONE, paired, small
 from benchkit.evaluation.verdict import Promise
 from benchkit.prefixes import lasting, spoken
 from benchkit.records.record import Record
@@ -18,15 +18,15 @@ from benchkit.reports.section import Section, Table
 
 KEY = (
     "Band: from the fastest to the slowest fuse of its sheet at the current measured, cold; of the "
-    "clamp, 95 % of parts."
+    "clamp, 95 % of parts. At most: your limits, and of I²t what the clamp's surge rating stands."
 )
 CHANGE_KEY = (
     "Both were read by one meter on one range: what its gain and the shunt are off by is the same "
     "in both. Drops are compared at the junction temperature of the first."
 )
 CAUTION = (
-    "A fuse that does not break what flows, or a clamp that gives way, can burst: eye protection. "
-    "What was tried is the supply's current; a battery can drive far more."
+    "A fuse that does not break what flows, or a clamp that gives way, can burst: wear eye "
+    "protection. What was tried is the supply's current; a battery can drive far more."
 )
 
 
@@ -37,7 +37,7 @@ def fused_section(record: Record, evaluation: Evaluation) -> Section | None:
         return None
     tables = []
     if rows := list(_rows(record, detail)):
-        heads = ["While the fuse opened", "Measured ± U", "Typical", "Datasheet band", "Most"]
+        heads = ["While the fuse opened", "Measured ± U", "Typical", "Datasheet band", "At most"]
         tables.append(Table("", heads, rows, KEY))
     if changed := list(_changes(detail)):
         heads = ["Of the clamp", "Before", "After", "Change ± U"]
@@ -92,10 +92,20 @@ def _rows(record: Record, detail: FusedDetail) -> Iterator[list[str]]:
             continue
         low, high = promise.low, promise.high
         yield [
-            what, _pair(figure, unit), small(promise.nominal, unit),
-            spanned(low, high, unit) if math.isfinite(high) else f"{small(low, unit)} or more",
+            what, _pair(figure, unit), _three(promise.nominal, unit), _between(low, high, unit),
             NONE if most is None else spoken(most, unit),
         ]  # fmt: skip
+
+
+def _three(value: float, unit: str) -> str:
+    return spoken(value, unit) if math.isfinite(value) else NONE
+
+
+def _between(low: float, high: float, unit: str) -> str:
+    if not math.isfinite(high):
+        return f"{small(low, unit)} or more"
+    first, last = _three(low, unit), _three(high, unit)
+    return first if first == last else f"{first} to {last}"
 
 
 def _changes(detail: FusedDetail) -> Iterator[list[str]]:

@@ -54,13 +54,13 @@ def fused_figure(detail: FusedDetail, limits: Limits) -> str:
         upper.axhline(detail.current_A, color=GREY, linewidth=0.9, linestyle=(0, (1, 2)),
                       label="current asked for")  # fmt: skip
         _draw(upper, burst.current, pulse.onset_s, factor, shown, 1.0)
-        upper.set_ylabel("A, reversed")
+        upper.set_ylabel("reversed current (A)")
         upper.set_title("Current")
         if burst.guarded is not None:
             _draw(lower, burst.guarded, pulse.onset_s, factor, shown, -1.0)
         if limits.clamp_peak_max_V is not None:
             lower.axhline(-limits.clamp_peak_max_V, color=PURPLE, linewidth=1.6)
-        lower.set_ylabel("V")
+        lower.set_ylabel("voltage (V)")
         lower.set_title("Guarded port")
         lower.set_xlabel(f"time from the onset of the current ({unit})")
         lower.set_xlim(-BEFORE * factor * shown, factor * shown)

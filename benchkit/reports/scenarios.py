@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+
 from benchkit.evaluation.evaluate import Evaluation
 from benchkit.records.record import Record
 from benchkit.reports.section import Section, Table
@@ -18,7 +20,7 @@ def scenarios_section(record: Record, evaluation: Evaluation) -> Section | None:
     del record
     rows = [
         [
-            str(one["scenario"]), str(one["what"]), str(one["predicted"]), str(one["found"]),
+            str(one["scenario"]), str(one["what"]), _set(one["predicted"]), _set(one["found"]),
             AGREES[one["agrees"] if isinstance(one["agrees"], bool) else None],
         ]
         for one in evaluation.result.scenarios
@@ -28,3 +30,8 @@ def scenarios_section(record: Record, evaluation: Evaluation) -> Section | None:
         "scenarios", "What was predicted, and what was found", [], "",
         [Table("", heads, rows, KEY, words=4)],
     )  # fmt: skip
+
+
+def _set(text: object) -> str:
+    """With minus signs instead of hyphens before numbers."""
+    return re.sub(r"(?<![\w.])-(?=\d)", "−", str(text))

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator
 
 from benchkit.evaluation.evaluate import Evaluation
+from benchkit.evaluation.spelled import minus
 from benchkit.evaluation.supply_sweep import Crossing, Step, drop_components, is_on
 from benchkit.evaluation.supply_sweep_judged import SupplyDetail
 from benchkit.evaluation.verdict import rounded
@@ -69,7 +70,7 @@ def _from(found: Crossing) -> str:
         return f"at {found.value_V:.3g} V, the lowest voltage measured, and so from there or lower"
     high, low = found.below.supply.value, found.above.supply.value
     at, _ = rounded(found.value_V, 0.5 * (high - low))
-    return f"from {at} V, somewhere between {low:.3g} V and {high:.3g} V"
+    return f"from about {at} V: not yet at {low:.3g} V, already at {high:.3g} V"
 
 
 def _table(record: Record, detail: SupplyDetail) -> Table:
@@ -95,6 +96,6 @@ def _row(record: Record, detail: SupplyDetail, step: Step) -> Iterator[str]:
         yield f"{1e3 * promise.nominal:.3g} mV"
         yield f"{1e3 * promise.low:.3g} to {1e3 * promise.high:.3g} mV"
     if any(each.gate for each in detail.sweep.steps):
-        yield NONE if step.gate is None else f"{step.gate.value:.3f} V".replace("-", "−")
+        yield NONE if step.gate is None else f"{minus(f'{step.gate.value:.3f}')} V"
     if detail.band.on_level_V is not None:
         yield "yes" if is_on(step, detail.band.on_level_V) else "no"

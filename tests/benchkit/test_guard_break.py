@@ -56,7 +56,7 @@ def test_a_full_disk_does_not_keep_the_output_on(kind: str) -> None:
     assert not world.on
     assert guard.confirmed_off
     assert world.said[-1] == "release"
-    assert world.points_read[-2:] == ["exposed_voltage", "exposed_current"]
+    assert world.points_read[-3:] == ["exposed_voltage", "guarded_voltage", "exposed_current"]
 
 
 def test_a_full_disk_is_told_though_the_step_ended_well() -> None:
@@ -198,7 +198,7 @@ def test_a_trip_of_the_supply_does_not_wait_for_the_thermometer() -> None:
         world.tripped = True
         world.points_read.clear()
         live.look()
-    assert set(world.points_read) == {"exposed_voltage", "exposed_current"}
+    assert set(world.points_read) == {"exposed_voltage", "guarded_voltage", "exposed_current"}
 
 
 # nothing out of turn

@@ -102,6 +102,7 @@ def test_a_declined_rewiring_leaves_nothing_proved() -> None:
 def test_a_guarded_side_of_the_wrong_sign_trips() -> None:
     world = World()
     guard = begun(world)
+    guard.placed(DRAWING)
     guard.arrange(REVERSED)
     guard.prove_polarity()
     with pytest.raises(Tripped, match=r"guarded_voltage is -12 V, below -0\.6 V"):  # noqa: SIM117

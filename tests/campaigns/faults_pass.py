@@ -21,6 +21,7 @@ GROSS_IN_SERIES = ("open", "fuse-blown", "fuse-missing")
 CLAMPS = ("clamp", "fused-clamp")
 USED = ("sweep/", "soak", "supply/", "reverse/", "after/", "battery/", "clamp/", "fused/")
 """Steps whose readings are figures, by how they begin."""
+LOOKED_AT = ("sweep/", "soak", "after/")
 DROP_USED = ("sweep/", "soak", "supply/", "after/")
 UNUSED = ("approach", "settling", "zero", "burst")
 OFF_BY = {
@@ -104,11 +105,13 @@ def falsified(record: Record, seen: Seen) -> Iterator[str]:
             continue
         if reading.point == "drop" and not step.startswith(DROP_USED):
             continue  # only held against the ports' voltages there
+        if reading.point == "guarded_voltage" and step.startswith(LOOKED_AT):
+            continue  # only the guard looks there, at its sign
         share, least, ohms = OFF_BY[reading.point]
         at = seen.start_s + reading.time_s
         low, high = _between(seen.rows, reading.point, at)
-        _, amps = _between(seen.rows, "exposed_current", at)
-        slack = share * max(abs(low), abs(high)) + least + ohms * abs(amps) + 4 * reading.u
+        amps = max(map(abs, _between(seen.rows, "exposed_current", at)))
+        slack = share * max(abs(low), abs(high)) + least + ohms * amps + 4 * reading.u
         if not low - slack <= reading.value <= high + slack:
             yield (
                 f"{reading.point} at {reading.time_s:.3f} s in {step} was read as "

@@ -179,8 +179,9 @@ def _one(shop: Shop, world: World, trial: Trial, takes_s: float) -> Outcome:
         (fault.name, -1.0 if trial.at_opening else fault.share * takes_s, fault.value)
         for fault in trial.faults if fault.kind != "board"
     ]  # fmt: skip
-    before = _moved(world, trial)
     world.clear()
+    world.advance(SETTLE_S)  # contacts that were held let go
+    before = _moved(world, trial)
     if trial.at_opening:
         for name, at_s, value in armed:
             world.arm(name, at_s, value)
