@@ -31,6 +31,10 @@ def tell_board(done: Done) -> None:
         console.print(f"  - {sentence}", markup=False)
     if result.measurands:
         print_table(console, figures(result))
+    for sentence in result.findings:
+        if sentence not in result.why:
+            console.print(f"note: {sentence}", markup=False)
+    console.print(f"not tested: {len(result.not_tested)} things, listed in the report")
     console.print(f"record  {done.folder}", markup=False, soft_wrap=True)
     console.print(f"report  {done.folder / 'report.html'}", markup=False, soft_wrap=True)
 

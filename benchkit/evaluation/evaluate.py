@@ -66,7 +66,8 @@ def evaluate(record: Record, serial: str) -> Evaluation:
     bands = _bands(stage, trial, record.bench.bench.bleeder_ohm)
     last = strongest(bands, trial)
     parts = tuple(part for judge in PARTS if (part := judge(record, promise)) is not None)
-    forward_drops = list(_drops(promise, drops))
+    blown = "of the fuse that was blown afterwards" if record.said("new-fuse") else ""
+    forward_drops = list(_drops(promise, drops, blown))
     measurands = [
         *forward_drops,
         *_thermal(promise, soak if usable else None, extreme),
@@ -105,7 +106,7 @@ def _bands(stage: Stage, trial: Trial | None, bleeder_ohm: float | None) -> tupl
     return tuple(reverse_bands(stage, [*trial.rungs, *last], bleeder_ohm))
 
 
-def _drops(promise: Promised, drops: list[DropAt]) -> Iterator[Measurand]:
+def _drops(promise: Promised, drops: list[DropAt], remark: str) -> Iterator[Measurand]:
     """Drop at every current that was reached, and every limit that was not."""
     stage = promise.stage
     limits = {limit.current_A: limit.max_V for limit in stage.file.limits.drop}
@@ -124,6 +125,7 @@ def _drops(promise: Promised, drops: list[DropAt]) -> Iterator[Measurand]:
                 None,
                 limits.get(drop.current_A),
                 stage.file.limits.rule,
+                remark,
             )
     reached = {d.current_A for d in drops}
     for current, most in limits.items():
@@ -252,10 +254,11 @@ def _not_tested(record: Record, stage: Stage, trial: Trial | None) -> list[str]:
         )
     if "fuse" in stage.names and file.fused_trial is None:
         told.append(f"whether {stage.names['fuse']} opens in time: it was not blown")
-    told.append(
-        "the drop when warm at currents other than the soak's: the sweep is short, and its drops "
-        "are those of a part near room temperature"
-    )
-    if file.soak is None:
+    if file.soak is not None:
+        told.append(
+            "the drop when warm at currents other than the soak's: the sweep is short, and its "
+            "drops are those of a part near room temperature"
+        )
+    else:
         told.append("heat: the stage file has no [soak]")
     return [*told, *record.said("soak-skipped")]

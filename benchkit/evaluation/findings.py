@@ -180,6 +180,8 @@ def _of_sweep(record: Record, stage: Stage, sweep: Sweep) -> list[Remark]:
     for finding in found:
         if finding.kind in ("heat", "drift") and not warmed:
             continue
+        if finding.kind == "lead-or-contact" and "fuse" in stage.names:
+            continue  # a fuse's resistance grows with its current: no straight line
         weight: Weight = "note"
         if finding.kind in FAULTS | DOUBTS:
             weight = "fault" if finding.kind in FAULTS else "doubt"

@@ -144,7 +144,7 @@ def _rows(record: Record, detail: FusedDetail, pulse: Pulse | None) -> Iterator[
             _finite(detail.band.clears), None, limits.fuse_clears_max_s, limits.rule, told,
         )  # fmt: skip
         yield judged(
-            "fuse_let_through", "A2s", f"{at}, {detail.clamp} stands the limit",
+            "fuse_let_through", "A2s", f"{at}, {detail.clamp} stands no more",
             pulse.let_through.value, pulse.let_through.budget, _finite(detail.band.let_through),
             None, detail.clamp_A2s, limits.rule, told,
         )  # fmt: skip

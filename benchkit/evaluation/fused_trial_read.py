@@ -165,8 +165,10 @@ def _peak(record: Record, trace: Trace | None) -> Figure | None:
     # From one reading to the next: a slow change is no noise.
     inside = trace.value[trace.value > HALF * value]
     noise = float(np.diff(inside).std(ddof=1)) / math.sqrt(2) if near.size > 2 else zero.noise
+    steepest = float(np.abs(np.diff(inside)).max()) if inside.size > 1 else 0.0
     components = [
         gain(bench, "guarded_voltage", trace.range_V, value),
+        rectangular("between two readings it may have been higher", steepest),
         Component("noise of one reading of guarded_voltage", noise, dof=max(near.size - 2, 1)),
     ]
     if zero.used:

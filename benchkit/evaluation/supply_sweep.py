@@ -177,7 +177,10 @@ def crossing_budget(sweep: SupplySweep, bench: BenchFile, found: Crossing) -> Bu
     if above is not None:
         apart = found.below.supply.value - above.supply.value
         components.append(
-            rectangular("anywhere between the two voltages it was measured at", 0.5 * apart)
+            rectangular(
+                "anywhere between the two voltages it was measured at",
+                apart * max(found.share, 1 - found.share),
+            )
         )
         if above.carried and found.below.drop.value > 0:
             per_log = apart / math.log(above.drop.value / found.below.drop.value)

@@ -99,7 +99,10 @@ def _flow(point: OperatingPoint, fuse: Coordination | None) -> list[str]:
     if not np.isfinite(fuse.clears_in_s):
         return [f"up to {spoken(amps, 'A')} flow, and the fuse never opens"]
     opens = lasting(fuse.clears_in_s)
-    return [f"up to {spoken(amps, 'A')} flow until the fuse opens, after {opens} at most"]
+    return [
+        f"up to {spoken(amps, 'A')} flow until the fuse opens, which takes {opens} at most, at the "
+        "smallest current of the scenario"
+    ]
 
 
 def _back_feed(point: OperatingPoint) -> str:

@@ -35,7 +35,7 @@ class FittedLaw:
 
 def fitted_law(record: Record, stage: Stage, sweep: Sweep) -> FittedLaw | str:
     """Fit the stage's law to every visit; a string says in words why none could be fitted."""
-    if stage.conducts == "lead":
+    if stage.conducts == "lead" or "fuse" in stage.names:
         return "The drop is that of leads, and of a fuse: no law is fitted to it."
     least = 3 if stage.conducts == "channel" else 4
     if len(sweep.targets) < least:

@@ -28,7 +28,7 @@ def scenarios_section(record: Record, evaluation: Evaluation) -> Section | None:
     heads = ("Scenario", "What", "Predicted", "Found here", "Agree")
     return Section(
         "scenarios", "What was predicted, and what was found", [], "",
-        [Table("", heads, rows, KEY, words=4)],
+        [Table("", heads, rows, KEY, words=3)],
     )  # fmt: skip
 
 

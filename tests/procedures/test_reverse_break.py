@@ -205,6 +205,7 @@ def test_no_board_is_changed_while_the_guarded_port_holds_its_charge() -> None:
     world = Charged()
     guard, hands = guard_of(world), Hands(world, [])
     guard.begin(Notes())
+    guard.placed(DRAWING)
     guard.make_safe("the board before")
     with pytest.raises(Stopped):
         measured(guard, hands)
