@@ -17,6 +17,9 @@ from instruments.simulated.tree import Entry
 APERTURES = (0.02, 0.2, 1.0, 2.0, 10.0, 100.0)
 DEFAULT_APERTURE = 1.0
 OVERLOAD = "9.9E37"
+RESOLUTION = 1e-8
+"""Of the range: the last digit of a converter of 26 bits; what is the same to rounding reads the
+same."""
 OVER_RANGE = 1.2
 """A value beyond this many times the range is an overload."""
 ROUTING_S = 0.0005
@@ -117,7 +120,8 @@ class Meter(Device):
         value = true * factor + offset + self._noise.gauss(0.0, deviation)
         if abs(value) > OVER_RANGE * setup.range_V:
             return OVERLOAD if value > 0 else "-" + OVERLOAD
-        return f"{value:.8E}"
+        step = RESOLUTION * setup.range_V
+        return f"{round(value / step) * step:.8E}"
 
     def _input(self, channel: int | None) -> _Input:
         found = self._inputs.get(channel)
