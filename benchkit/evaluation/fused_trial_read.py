@@ -9,10 +9,10 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from benchkit.evaluation.clamp_trial_read import zero_of
 from benchkit.evaluation.reverse import Figure
 from benchkit.evaluation.sources import accuracy_of, gain, rectangular
 from benchkit.evaluation.sweep import Zero
+from benchkit.evaluation.trial_zero import zero_of
 from benchkit.files.bench import PointName
 from benchkit.metrology import Budget, Component
 from benchkit.reading import Reading

@@ -12,7 +12,8 @@ from numpy.typing import NDArray
 
 from benchkit.evaluation.drop_change import DropChange, drop_changes, owed_currents
 from benchkit.evaluation.sources import accuracy_of, gain, rectangular
-from benchkit.evaluation.sweep import ZERO_LIMITS, Sweep, Zero, temperatures
+from benchkit.evaluation.sweep import Sweep, Zero, temperatures
+from benchkit.evaluation.trial_zero import zero_of
 from benchkit.files.bench import PointName
 from benchkit.metrology import Budget, Component
 from benchkit.reading import Reading
@@ -24,9 +25,6 @@ Floats = NDArray[np.float64]
 CLAMPS = ("clamp", "fused-clamp")
 TAIL = 4
 """A dwell is judged by its last so many readings."""
-UNKNOWN_DRIFT = 0.25
-"""Drift of a zero that was taken once only, as a share of the declared offset (common practice, no
-source)."""
 DWELT = 0.8
 """A dwell counts as kept from this share of it on, less two looks."""
 SAME = 1e-6
@@ -87,11 +85,10 @@ def read_trial(record: Record, stage: Stage, sweep: Sweep | None) -> Trial | Non
     if settings is None or record.stage.stage.topology in CLAMPS:
         return None
     full = settings.voltage_V or record.stage.stage.supply_max_V
-    shunt = bench.points["exposed_current"].shunt_ohm or 1.0
     zeros = {
-        "exposed_current": _zero(record, "exposed_current", 1 / shunt),
-        "exposed_voltage": _zero(record, "exposed_voltage", 1.0),
-        "guarded_voltage": _zero(record, "guarded_voltage", 1.0),
+        "exposed_current": zero_of(record, "zero/reverse", "exposed_current", "reverse/"),
+        "exposed_voltage": zero_of(record, "zero/reverse", "exposed_voltage", "reverse/"),
+        "guarded_voltage": zero_of(record, "zero/reverse", "guarded_voltage", "reverse/"),
     }
     ladder = [name for name in record.steps("reverse/") if name != "reverse/dwell"]
     found = [
@@ -170,35 +167,6 @@ def _rung(
         _figure(record, "guarded_voltage", guarded, zeros["guarded_voltage"]),
         peak_leakage, peak_guarded, max(len(readings) for readings in read),
     )  # fmt: skip
-
-
-def _zero(record: Record, point: PointName, scale: float) -> Zero:
-    """What the point reads with the leads crossed and nothing on.
-
-    It is taken once; how far it may have moved since is judged by the zeros of the sweep, where
-    they were taken on its range.
-    """
-    own = record.at("zero/reverse", point)
-    if not own:
-        return Zero(0.0, 0.0, math.inf, 0.0, 0.0, math.inf, used=False)
-    values = np.array([r.value for r in own])
-    range_V, dof = own[0].range, max(values.size - 1, 1)
-    noise = float(values.std(ddof=1)) if values.size > 1 else 0.0
-    limit = accuracy_of(record.bench, point, range_V).offset_limit() * scale
-    others = [
-        _mean(zeros)
-        for when in ("before", "after")
-        if (zeros := [r for r in record.at(f"zero/{when}", point) if r.range == range_V])
-    ]
-    mean = float(values.mean())
-    drift = 0.5 * float(np.ptp([mean, *others])) if others else UNKNOWN_DRIFT * limit
-    in_trial = {r.range for r in record.at("reverse/", point)}
-    used = (
-        all(r.range == range_V for r in own)
-        and in_trial <= {range_V}
-        and abs(mean) <= ZERO_LIMITS * limit
-    )
-    return Zero(mean, noise / math.sqrt(values.size), dof, drift, noise, dof, used)
 
 
 def _figure(record: Record, point: PointName, readings: list[Reading], zero: Zero) -> Figure:
